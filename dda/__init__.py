@@ -1,0 +1,1 @@
+"""Discrete-dipole predictions for plasmonic nanoparticles."""
