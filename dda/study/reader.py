@@ -1,0 +1,187 @@
+"""From a TOML file to a checked study.
+
+``read_study`` reports every mistake that the tables themselves show, each with its line and key.
+"""
+
+from __future__ import annotations
+
+import difflib
+import tomllib
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from pydantic import BaseModel, ValidationError
+
+from dda.errors import InputError
+from dda.study.lines import line_of
+from dda.study.mistakes import Mistake, dotted
+from dda.study.schema import StudyTables, WavelengthRange
+
+#: A file with more mistakes than this is better looked at as a whole.
+MOST_MESSAGES = 8
+_TAGS = ("range", "list")
+_PLAIN = {
+    "float_type": "should be a number",
+    "int_type": "should be a whole number",
+    "int_from_float": "should be a whole number",
+    "string_type": "should be a text in quotes",
+    "tuple_type": "should be a list",
+    "dict_type": "should be a table",
+    "model_type": "should be a table",
+    "finite_number": "should be finite",
+}
+
+
+@dataclass(frozen=True)
+class Study:
+    """A study file that has been read: its tables and where they came from."""
+
+    path: Path
+    text: str
+    tables: StudyTables
+
+    @property
+    def name(self) -> str:
+        """The study's own name for itself."""
+        return self.tables.name
+
+    @property
+    def folder(self) -> Path:
+        """The folder at which relative paths in the study start."""
+        return self.path.parent
+
+    def located(self, mistake: Mistake) -> InputError:
+        """Return an error that names the file and the line of a mistake as well."""
+        return _error(self.path, self.text, mistake.key, mistake.message)
+
+
+def read_study(path: str | Path) -> Study:
+    """Read and check a study file.
+
+    Parameters
+    ----------
+    path : str or Path
+        A TOML file.
+
+    Returns
+    -------
+    Study
+
+    Raises
+    ------
+    InputError
+        The file cannot be read, is no TOML, or its tables do not make a study. The message has a
+        line for every mistake found.
+    """
+    path = Path(path)
+    text = _read(path)
+    try:
+        data = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        raise InputError(f"{path}: not valid TOML: {error}") from None
+    return study_from_tables(data, path, text)
+
+
+def study_from_tables(data: dict[str, Any], path: Path, text: str = "") -> Study:
+    """Check tables that are already parsed; ``path`` tells where relative paths start."""
+    try:
+        tables = StudyTables.model_validate(data)
+    except ValidationError as error:
+        raise InputError("\n".join(_messages(path, text, error))) from None
+    return Study(path, text, tables)
+
+
+def nearest(word: str, known: Iterable[str]) -> str:
+    """Return a hint that names the known word nearest to a mistaken one, or all of them.
+
+    >>> nearest("rouding", ["edge", "rounding"])
+    'did you mean "rounding"?'
+    """
+    names = [str(k) for k in known]
+    close = difflib.get_close_matches(word.lower(), names, n=1, cutoff=0.6)
+    if close:
+        return f'did you mean "{close[0]}"?'
+    return f"known: {', '.join(names)}"
+
+
+def _read(path: Path) -> str:
+    if path.is_dir():
+        raise InputError(f"{path}: a folder, not a study file")
+    try:
+        return path.read_text(encoding="utf-8-sig")
+    except FileNotFoundError:
+        there = sorted(p.name for p in path.parent.glob("*.toml")) if path.parent.is_dir() else []
+        close = difflib.get_close_matches(path.name, there, n=1)
+        hint = f'; did you mean "{path.parent / close[0]}"?' if close else ""
+        raise InputError(f"{path}: no such file{hint}") from None
+    except UnicodeDecodeError as error:
+        raise InputError(
+            f"{path}: not a text in UTF-8 (byte {error.start}); a study is a TOML file"
+        ) from None
+    except OSError as error:
+        raise InputError(f"{path}: cannot be read: {error.strerror}") from None
+
+
+def _error(path: Path, text: str, key: Sequence[str | int], message: str) -> InputError:
+    line = line_of(text, key)
+    place = f"{path}, line {line}" if line else f"{path}"
+    return InputError(f"{place}: {dotted(key)}: {message}" if key else f"{place}: {message}")
+
+
+def _messages(path: Path, text: str, error: ValidationError) -> list[str]:
+    mistakes = error.errors(include_url=False)
+    lines = []
+    for mistake in mistakes[:MOST_MESSAGES]:
+        key = tuple(part for part in mistake["loc"] if part not in _TAGS)
+        lines.append(str(_error(path, text, key, _sentence(mistake, key))))
+    if len(mistakes) > MOST_MESSAGES:
+        lines.append(f"and {len(mistakes) - MOST_MESSAGES} more")
+    return lines
+
+
+def _sentence(mistake: Any, key: Sequence[str | int]) -> str:
+    kind, value = mistake["type"], mistake["input"]
+    if kind == "missing":
+        known = _model_at(key)
+        what = "table" if known is not None else "key"
+        return f"this {what} is missing; the study needs it"
+    if kind == "extra_forbidden":
+        model = _model_at(key[:-1])
+        return f"unknown key; {nearest(str(key[-1]), _keys(model) if model else ())}"
+    if kind == "value_error":
+        return str(mistake["ctx"]["error"])
+    if kind in _PLAIN:
+        return f"{_PLAIN[kind]}, not {_shown(value)}"
+    if kind == "greater_than" and mistake["ctx"]["gt"] == 0:
+        return f"should be above zero, not {_shown(value)}"
+    message = mistake["msg"].replace("Input should", "should")
+    return f"{message[0].lower()}{message[1:]}, not {_shown(value)}"
+
+
+def _shown(value: Any) -> str:
+    text = f'"{value}"' if isinstance(value, str) else repr(value)
+    if isinstance(value, bool):
+        text = str(value).lower()
+    return text if len(text) <= 60 else text[:57] + "..."
+
+
+def _model_at(key: Sequence[str | int]) -> type[BaseModel] | None:
+    """Return the model of the table at a key path, None where there is no table."""
+    model: type[BaseModel] = StudyTables
+    for part in key:
+        if part == "wavelengths" and "wavelengths" in model.model_fields:
+            model = WavelengthRange
+            continue
+        field = model.model_fields.get(str(part))
+        if field is None or not isinstance(field.annotation, type):
+            return None
+        if not issubclass(field.annotation, BaseModel):
+            return None
+        model = field.annotation
+    return model
+
+
+def _keys(model: type[BaseModel]) -> list[str]:
+    return [field.alias or name for name, field in model.model_fields.items()]
