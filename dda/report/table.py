@@ -1,0 +1,105 @@
+"""Spectra as tables: the CSV file, and the lines printed at the end of a run."""
+
+from __future__ import annotations
+
+import csv
+import io
+import math
+from collections.abc import Sequence
+from pathlib import Path
+
+from dda.report.files import write_aside
+from dda.study.rows import COLUMNS, Row
+from dda.study.spectrum import Peak, find_peak
+
+#: The printed table is thinned out to about this many lines; the file has all of them.
+PRINTED_LINES = 14
+
+
+def write_csv(path: Path, rows: Sequence[Row]) -> None:
+    """Write rows to a CSV file, whole or not at all.
+
+    The first line names the columns, the units in their names. Numbers have nine digits; what is
+    not known is empty.
+
+    Parameters
+    ----------
+    path : Path
+        The file; one that exists is replaced.
+    rows : sequence of Row
+    """
+    text = io.StringIO()
+    writer = csv.writer(text, lineterminator="\n")
+    writer.writerow(COLUMNS)
+    writer.writerows([_cell(getattr(row, column)) for column in COLUMNS] for row in rows)
+    write_aside(path, text.getvalue().encode())
+
+
+def spectrum_text(rows: Sequence[Row]) -> str:
+    """Return the table that is printed at the end of a run, and the peaks under it."""
+    columns = ("wavelength", "C_ext", "C_abs", "C_sca", "Q_ext", "status")
+    lines = ["".join(f"{name:>12}" for name in columns)]
+    lines.append("".join(f"{unit:>12}" for unit in ("nm", "nm^2", "nm^2", "nm^2", "", "")))
+    for row in _thinned(rows):
+        numbers = (row.wavelength_nm, row.c_ext_nm2, row.c_abs_nm2, row.c_sca_nm2, row.q_ext)
+        lines.append("".join(f"{_short(x):>12}" for x in numbers) + f"{row.status:>12}")
+    answered = [row for row in rows if row.answered]
+    if len(answered) > 2:
+        lines.append("")
+        lines.extend(_peak_lines(answered))
+    return "\n".join(lines)
+
+
+def peak_sentence(peak: Peak | None) -> str:
+    """Return where a peak is, how high and how wide, in words.
+
+    >>> peak_sentence(Peak(561.23, 12345.6, 533.0, 598.5))
+    'at 561.2 nm, 1.235e+04 nm^2, full width at half maximum 65.5 nm'
+    """
+    if peak is None:
+        return "no maximum between the ends of the spectrum"
+    place = f"at {peak.position:.1f} nm, {peak.height:.4g} nm^2"
+    if peak.width is not None:
+        return f"{place}, full width at half maximum {peak.width:.1f} nm"
+    if peak.red is not None:
+        half = peak.red - peak.position
+        return f"{place}, half width on the red side {half:.1f} nm (blue side stays above half)"
+    if peak.blue is not None:
+        half = peak.position - peak.blue
+        return f"{place}, half width on the blue side {half:.1f} nm (red side stays above half)"
+    return f"{place}, wider than the spectrum (neither side falls to half)"
+
+
+def _peak_lines(rows: Sequence[Row]) -> list[str]:
+    wavelength = [row.wavelength_nm for row in rows]
+    curves = {
+        "extinction": [row.c_ext_nm2 for row in rows],
+        "absorption": [row.c_abs_nm2 for row in rows],
+        "scattering": [row.c_sca_nm2 for row in rows],
+    }
+    return [
+        f"peak of {name:<10} {peak_sentence(find_peak(wavelength, curve))}"
+        for name, curve in curves.items()
+    ]
+
+
+def _thinned(rows: Sequence[Row]) -> list[Row]:
+    """Leave out converged rows until the table is short; the highest row always stays."""
+    step = math.ceil(len(rows) / PRINTED_LINES)
+    answered = [row for row in rows if row.answered]
+    top = max(answered, key=lambda row: row.c_ext_nm2, default=None)
+    return [
+        row
+        for i, row in enumerate(rows)
+        if i % step == 0 or row is top or not row.converged or i == len(rows) - 1
+    ]
+
+
+def _cell(value: float | int | str) -> str:
+    if isinstance(value, float):
+        return f"{value:.9g}" if math.isfinite(value) else ""
+    return str(value)
+
+
+def _short(value: float) -> str:
+    return f"{value:.4g}" if math.isfinite(value) else "-"

@@ -1,0 +1,67 @@
+"""One row of results a point; its fields are the columns of ``spectrum.csv``."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, fields
+
+
+@dataclass(frozen=True)
+class Row:
+    """The answer at one point.
+
+    Attributes
+    ----------
+    wavelength_nm : float
+        In vacuum.
+    c_ext_nm2, c_abs_nm2, c_sca_nm2 : float
+        Cross sections; NaN when the point failed.
+    q_ext, q_abs, q_sca : float
+        Efficiencies: the cross sections over pi r_eff^2, r_eff the equal-volume radius.
+    cells : int
+        Number of cells that hold material.
+    spacing_nm : float
+        Edge of a cell.
+    iterations : int
+        Steps of the solver, added up over the polarizations solved.
+    residual : float
+        |b - A x| / |b| at the end, the largest of the polarizations solved.
+    status : str
+        "converged" only if the solver says so for every polarization; else what it says
+        ("stalled", "limit"), or "failed" when there is no answer.
+    balance : float
+        (C_ext - C_abs) / C_sca - 1 with C_sca from the far field: 0 when energy is conserved.
+    seconds : float
+        Wall time of this point.
+    message : str
+        Why a point has no answer or a doubtful one; empty when all is well.
+    """
+
+    wavelength_nm: float
+    c_ext_nm2: float = math.nan
+    c_abs_nm2: float = math.nan
+    c_sca_nm2: float = math.nan
+    q_ext: float = math.nan
+    q_abs: float = math.nan
+    q_sca: float = math.nan
+    cells: int = 0
+    spacing_nm: float = math.nan
+    iterations: int = 0
+    residual: float = math.nan
+    status: str = "failed"
+    balance: float = math.nan
+    seconds: float = math.nan
+    message: str = ""
+
+    @property
+    def converged(self) -> bool:
+        """Whether the solver reached its tolerance."""
+        return self.status == "converged"
+
+    @property
+    def answered(self) -> bool:
+        """Whether there are numbers, converged or not."""
+        return math.isfinite(self.c_ext_nm2)
+
+
+COLUMNS = tuple(field.name for field in fields(Row))
