@@ -1,0 +1,14 @@
+"""The lattice of dipoles: interaction, polarizability, linear system and its solution."""
+
+from .solve import Polarization, solve, solve_dense
+from .system import System, memory_estimate, relative_system, system
+
+__all__ = [
+    "Polarization",
+    "System",
+    "memory_estimate",
+    "relative_system",
+    "solve",
+    "solve_dense",
+    "system",
+]

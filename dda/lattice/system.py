@@ -1,0 +1,271 @@
+"""The linear system of the cells at one wavelength."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from shapes import Cells
+
+from .. import materials as _materials
+from ..errors import InputError
+from .convolution import Convolution, padded_shape
+from .green import RadialTable, radial_table
+from .polarizability import CellTensor, inverse_polarizability, uniaxial
+from .workers import Workers
+
+SURFACES = ("window", "cell", "whole")
+
+# A cell belongs to the system when more than this part of its window is filled.
+_LEAST_FILL = 0.02
+
+
+@dataclass(frozen=True, eq=False)
+class System:
+    """``(alpha^-1 - G) p = E`` on the occupied cells.
+
+    Attributes
+    ----------
+    cells : shapes.Cells
+    wavelength : float
+        In vacuum, nm.
+    n_host : float
+        Refractive index of the host.
+    permittivity : ndarray of complex, shape (m,)
+        Of the cells' materials, relative to the host.
+    index : ndarray of int32, shape (n, 3)
+        Cells of the system (those of `cells` that hold material under the surface rule).
+    alpha_inverse, alpha : CellTensor
+        In nm^-3 and nm^3.
+    convolution : Convolution
+    """
+
+    cells: Cells
+    wavelength: float
+    n_host: float
+    permittivity: np.ndarray
+    index: np.ndarray
+    alpha_inverse: CellTensor
+    alpha: CellTensor
+    convolution: Convolution = field(repr=False)
+    table: RadialTable = field(repr=False)
+
+    @property
+    def k(self) -> float:
+        """Wave number in the host, 1/nm."""
+        return 2 * np.pi * self.n_host / self.wavelength
+
+    @property
+    def n(self) -> int:
+        """Number of cells in the system."""
+        return len(self.index)
+
+    @property
+    def shape(self) -> tuple[int, int]:
+        """Rows and columns of the system's matrix."""
+        return (3 * self.n, 3 * self.n)
+
+    @property
+    def dtype(self) -> np.dtype:
+        """Complex number type of the products."""
+        return self.convolution.dtype
+
+    @property
+    def positions(self) -> np.ndarray:
+        """Centres of the system's cells, shape (n, 3), nm."""
+        return self.cells.origin + self.cells.spacing * self.index
+
+    @property
+    def r_eff(self) -> float:
+        """Radius of the sphere of the particle's volume, nm."""
+        return float((3 * self.cells.volume / (4 * np.pi)) ** (1 / 3))
+
+    def matvec(self, p: np.ndarray) -> np.ndarray:
+        """``alpha^-1 p - G p`` for a vector of 3n numbers (or an (n, 3) array)."""
+        v = np.ascontiguousarray(p, self.dtype).reshape(-1, 3)
+        out = self.convolution(self.index, v, np.empty_like(v))
+        own = self.alpha_inverse.apply(v, np.empty_like(v))
+        np.subtract(own, out, out=out)
+        return out.reshape(np.shape(p))
+
+    def precondition(self, r: np.ndarray) -> np.ndarray:
+        """``alpha r``: the block-diagonal preconditioner."""
+        v = np.ascontiguousarray(r, self.dtype).reshape(-1, 3)
+        return self.alpha.apply(v, np.empty_like(v)).reshape(np.shape(r))
+
+
+def system(
+    cells: Cells,
+    wavelength: float,
+    host="water",
+    *,
+    materials: dict | None = None,
+    surface: str = "window",
+    polarizability: str = "fcd",
+    light=None,
+    precision: str = "double",
+    fft: str = "auto",
+    workers: Workers | None = None,
+) -> System:
+    """The system of a particle's cells at a wavelength.
+
+    Parameters
+    ----------
+    cells : shapes.Cells
+    wavelength : float
+        In vacuum, nm.
+    host : material
+        Anything `dda.materials.find` takes, or a `Material`.
+    materials : dict, optional
+        From a name used in `cells.materials` to a `Material` or a specification of one.
+    surface : {"window", "cell", "whole"}
+        Tensor of surface cells from the window of the design, from the cell's own fraction, or
+        no surface treatment (a cell belongs to the material at its centre).
+    polarizability : {"fcd", "ldr", "rr"}
+        "fcd" goes with the filtered Green tensor, the others with point dipoles.
+    light : PlaneWave, optional
+        Needed by "ldr" alone.
+    precision : {"double", "single"}
+    fft : {"auto", "scipy", "ducc0"}
+    workers : Workers, optional
+        Threads to use; all cores by default.
+
+    Returns
+    -------
+    System
+
+    Raises
+    ------
+    InputError
+        If the host absorbs, a material has the host's permittivity exactly, an option is unknown
+        or the spacing does not resolve the wave.
+
+    Notes
+    -----
+    A surface cell holding the fractions f_m gets ``eps_t = sum f_m eps_m`` along the surface and
+    ``1/eps_n = sum f_m/eps_m`` across it (Kottke, Farjadpour & Johnson 2008, Phys. Rev. E 77,
+    036611; Piller 1997, Opt. Lett. 22, 1674). The fractions are those of a ball 2.2 spacings
+    wide, which makes the error of the surface smooth in the spacing.
+    """
+    if surface not in SURFACES:
+        raise InputError(f"surface {surface!r} is not known; use one of {', '.join(SURFACES)}")
+    medium = _as_material(host, materials)
+    _materials.require_transparent(medium, np.array([wavelength]))
+    n_host = float(np.real(medium.index(np.array([wavelength]))[0]))
+    eps = np.array(
+        [
+            _as_material(name, materials).permittivity(np.array([wavelength]))[0]
+            for name in cells.materials
+        ],
+        complex,
+    )
+    return relative_system(
+        cells,
+        wavelength,
+        n_host,
+        eps / n_host**2,
+        surface=surface,
+        polarizability=polarizability,
+        light=light,
+        precision=precision,
+        fft=fft,
+        workers=workers,
+    )
+
+
+def relative_system(
+    cells: Cells,
+    wavelength: float,
+    n_host: float,
+    permittivity: np.ndarray,
+    *,
+    surface: str = "window",
+    polarizability: str = "fcd",
+    light=None,
+    precision: str = "double",
+    fft: str = "auto",
+    workers: Workers | None = None,
+) -> System:
+    """As `system`, from the permittivities (m,) relative to the host themselves."""
+    permittivity = np.asarray(permittivity, complex)
+    if np.any(permittivity == 1):
+        raise InputError(
+            "a material of the particle has exactly the host's permittivity, so it does nothing: "
+            "leave it out of the particle or change the host"
+        )
+    k, d = 2 * np.pi * n_host / wavelength, cells.spacing
+    if k * d >= np.pi / 2:
+        raise InputError(
+            f"spacing {d:.3g} nm is too coarse for {wavelength:.4g} nm light: at least four cells "
+            f"a wavelength in the host are needed (spacing below {wavelength / n_host / 4:.3g} nm)"
+        )
+    s_factor = light.s_factor if light is not None else None
+
+    def inverse(eps):
+        return inverse_polarizability(eps, polarizability, k, d, s_factor)
+
+    keep, scalar, where, tangential, normal_value = _mixed(cells, permittivity, surface)
+    kept = np.flatnonzero(keep)
+    full = uniaxial(inverse(tangential), inverse(normal_value), cells.normal[kept[where]])
+    alpha_inverse = CellTensor(inverse(scalar), where, full)
+    index = np.ascontiguousarray(cells.index[kept])
+    table = radial_table(
+        "fcd" if polarizability == "fcd" else "point",
+        d,
+        k,
+        int(sum((n - 1) ** 2 for n in cells.shape)),
+    )
+    convolution = Convolution(cells.shape, table, precision, fft, workers)
+    return System(
+        cells,
+        float(wavelength),
+        float(n_host),
+        permittivity,
+        index,
+        alpha_inverse.astype(convolution.dtype),
+        alpha_inverse.inverse().astype(convolution.dtype),
+        convolution,
+        table,
+    )
+
+
+def _mixed(cells: Cells, eps: np.ndarray, surface: str):
+    """Cells kept, isotropic permittivity, surface cells among them, their two permittivities."""
+    if surface == "whole":
+        keep = cells.centre_material >= 0
+        scalar = eps[cells.centre_material[keep]]
+        nothing = np.empty(0, complex)
+        return keep, scalar, np.empty(0, np.int64), nothing, nothing
+    filled = cells.window if surface == "window" else cells.fraction
+    keep = filled.sum(axis=1) > _LEAST_FILL
+    filled = filled[keep]
+    host = np.clip(1 - filled.sum(axis=1), 0, 1)
+    along = filled @ eps + host
+    across = 1 / (filled @ (1 / eps) + host)
+    mixed = (filled.max(axis=1) < 1 - 1e-9) & (cells.normal[keep] != 0).any(axis=1)
+    where = np.flatnonzero(mixed)
+    return keep, along, where, along[where], across[where]
+
+
+def _as_material(spec, overrides: dict | None):
+    if isinstance(spec, str) and overrides and spec in overrides:
+        spec = overrides[spec]
+    return spec if hasattr(spec, "permittivity") else _materials.find(spec)
+
+
+def memory_estimate(shape: tuple[int, int, int], n: int, precision: str = "double") -> int:
+    """Bytes at the peak of one solve with `n` cells on a box of `shape` cells.
+
+    Counts the kernel and its assembly, the columns along x, the Krylov vectors, the
+    polarizabilities and the description of the cells.
+    """
+    item = 16 if precision == "double" else 8
+    lx, ly, lz = padded_shape(shape)
+    half = (lx // 2 + 1) * (ly // 2 + 1) * (lz // 2 + 1)
+    kernel = 6 * half * item
+    assembly = 3 * half * 16  # one component and its transforms, always in double precision
+    columns = 3 * lx * shape[1] * shape[2] * item
+    vectors = 8 * 3 * n * item
+    cells = 180 * n
+    return int(max(kernel + assembly, kernel + columns + vectors) + cells)
