@@ -1,0 +1,94 @@
+"""Volume and area of bodies without a closed form, measured on a fine grid."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+from numpy.typing import NDArray
+
+from .body import Body, Particle, SampleGrid
+
+VOLUME_SAMPLES = 160  # along the largest extent
+SLAB = 2_000_000  # samples held at once
+
+
+def measured_volume(thing: Body | Particle, samples: int = VOLUME_SAMPLES) -> float:
+    """Volume by counting filled samples, nm^3; good to about 0.1 % for compact bodies.
+
+    Parameters
+    ----------
+    thing : Body or Particle
+        What to measure; for a particle all that is not host.
+    samples : int
+        Samples along the largest extent.
+
+    Examples
+    --------
+    >>> from shapes.primitives import Sphere
+    >>> round(measured_volume(Sphere(20.0)) / Sphere(20.0).volume(), 3)
+    1.0
+    """
+    grid = _grid(thing, samples)
+    total = sum(float(filled.sum(dtype=float)) for _, filled in _slabs(thing, grid, 0))
+    return total * grid.step**3
+
+
+def measured_area(thing: Body | Particle, samples: int = VOLUME_SAMPLES) -> float:
+    """Surface area, nm^2, good to about 1 % where edges are rounded by a few samples.
+
+    The area is the integral of the length of the gradient of the filled fraction, first smoothed over
+    three samples so that the differences see the direction of the surface.
+    """
+    grid = _grid(thing, samples)
+    total = 0.0
+    for inner, filled in _slabs(thing, grid, 3):
+        smooth = filled.astype(float)
+        for axis in range(3):
+            smooth = _blur(_blur(smooth, axis), axis)
+        gradient = np.gradient(smooth, grid.step)
+        total += float(np.sqrt(sum(g**2 for g in gradient))[inner].sum())
+    return total * grid.step**3
+
+
+def occupied(thing: Body | Particle, grid: SampleGrid) -> NDArray[np.float32]:
+    """Fraction of every sample voxel that is not host."""
+    if not isinstance(thing, Particle):
+        return thing.fill(grid)
+    total = np.zeros(grid.shape, dtype=np.float32)
+    for part in thing.parts:
+        window = grid.window(part.body.bounds)
+        if window is None:
+            continue
+        filled = part.body.fill(grid.cut(window))
+        kept = total[window] * (1 - filled)
+        total[window] = kept if part.material is None else kept + filled
+    return total
+
+
+def _grid(thing: Body | Particle, samples: int) -> SampleGrid:
+    low, high = thing.bounds
+    step = float(np.max(high - low)) / samples
+    shape = np.ceil((high - low) / step).astype(int) + 8
+    origin = (low + high) / 2 - step * (shape - 1) / 2
+    return SampleGrid(origin, step, tuple(shape))  # type: ignore[arg-type]
+
+
+def _slabs(
+    thing: Body | Particle, grid: SampleGrid, halo: int
+) -> Iterator[tuple[slice, NDArray[np.float32]]]:
+    """Slabs along x with `halo` samples on both sides, and the slice that drops the halo."""
+    nx, ny, nz = grid.shape
+    thick = max(1, SLAB // (ny * nz))
+    for start in range(0, nx, thick):
+        stop = min(nx, start + thick)
+        origin = grid.origin - np.array([halo * grid.step, 0, 0])
+        shifted = SampleGrid(origin, grid.step, (nx + 2 * halo, ny, nz))
+        window = (slice(start, stop + 2 * halo), slice(0, ny), slice(0, nz))
+        yield slice(halo, halo + stop - start), occupied(thing, shifted.cut(window))
+
+
+def _blur(values: NDArray[np.float64], axis: int) -> NDArray[np.float64]:
+    """Weights 1/4, 1/2, 1/4 along `axis`; the two outermost layers hold host only."""
+    forward, backward = np.roll(values, 1, axis), np.roll(values, -1, axis)
+    return values / 2 + (forward + backward) / 4
