@@ -78,7 +78,7 @@ def from_page(path: str) -> Material:
     remark = _text(content.get("COMMENTS", ""))
     if remark:
         notes = (remark, *notes)
-    source = f"{_text(content.get('REFERENCES', ''))} [page {page.path} of the CC0 data set]"
+    source = f"page {page.path}: {_text(content.get('REFERENCES', ''))}"
     return Material(page.path, model, source, range_nm, notes)
 
 
@@ -103,12 +103,17 @@ def nearest_pages(text: str) -> tuple[Page, ...]:
     """Up to six pages that someone who wrote `text` may have meant; empty when none is near."""
     catalogue = _catalogue()
     parts = _plain(text).split("/")
-    words = parts[-2] if len(parts) > 1 else parts[0]
-    same_book = [page for page in catalogue.values() if _plain(page.path.split("/")[1]) == words]
-    pages = same_book or list(search(words))
+    book = parts[-2] if len(parts) > 1 else parts[0]
+    same_book = [key for key in catalogue if key.split("/")[1] == book]
+    keys: list[str] = []
     if len(parts) > 1:
-        close = difflib.get_close_matches("/".join(parts), catalogue, n=_SHOWN, cutoff=0.7)
-        pages = [*(catalogue[key] for key in close), *pages]
+        tail = "/".join(parts[-2:])
+        keys += [key for key in catalogue if key.endswith(f"/{tail}")]
+        same_shelf = f"{catalogue[same_book[0]].path.split('/')[0]}/{tail}" if same_book else text
+        keys += difflib.get_close_matches(_plain(same_shelf), same_book, n=_SHOWN)
+        keys += same_book
+        keys += difflib.get_close_matches("/".join(parts), catalogue, n=_SHOWN, cutoff=0.7)
+    pages = [catalogue[key] for key in keys or same_book] or list(search(book))
     return tuple(dict.fromkeys(pages))[:_SHOWN]
 
 

@@ -165,4 +165,4 @@ class Cauchy:
 def _free_electrons(wavelength_nm: _Array, plasma_eV: float, damping_eV: float) -> _Complex:
     """The Drude term -Ep^2 / (E^2 + i g E), without eps_inf."""
     energy = photon_energy(wavelength_nm)
-    return -(plasma_eV**2) / (energy * (energy + 1j * damping_eV))
+    return np.asarray(-(plasma_eV**2) / (energy * (energy + 1j * damping_eV)), dtype=complex)

@@ -143,7 +143,7 @@ def from_short_name(name: str) -> Material | None:
 
 def unknown_name(text: str) -> InputError:
     """The error for a name that means nothing: what is near it, and how to list what there is."""
-    near = difflib.get_close_matches(text.strip().lower(), [*_LOOKUP, "vacuum"], n=3, cutoff=0.6)
+    near = difflib.get_close_matches(text.strip().lower(), [*_LOOKUP, "vacuum"], n=3, cutoff=0.7)
     proposals = []
     if near:
         proposals.append("did you mean " + " or ".join(f"'{name}'" for name in near) + "?")

@@ -7,10 +7,10 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from dda.errors import InputError
-from dda.materials.database import from_page
 from dda.materials.interpolation import TabulatedPermittivity
 from dda.materials.material import Material
 from dda.materials.names import SHORT_NAMES
+from dda.materials.resolve import find
 
 _DEFAULT_NM = (400.0, 800.0)
 _BLUE, _ORANGE = "#0072B2", "#D55E00"  # told apart without colour vision (Okabe & Ito 2008)
@@ -24,7 +24,7 @@ def listing() -> str:
     """
     lines = [f"{'name':<20}{'range (nm)':>17}  {'page':<42}also called; remark"]
     for entry in SHORT_NAMES.values():
-        low, high = from_page(entry.page).range_nm or (0.0, np.inf)
+        low, high = find(entry.name).range_nm or (0.0, np.inf)
         remark = "; ".join(filter(None, [", ".join(entry.aliases), entry.note]))
         span = f"{low:,.4g} - {high:,.0f}".replace(",", "")
         lines.append(f"{entry.name:<20}{span:>17}  {entry.page:<42}{remark}".rstrip())
@@ -89,13 +89,13 @@ def plot(material: Material, path: str | Path, wavelengths: ArrayLike | None = N
     figure = Figure(figsize=(8.0, 3.9), layout="constrained")
     panels = figure.subplots(1, 2)
     figure.suptitle(material.name, fontweight="bold")
-    _panel(panels[0], "refractive index", wavelength, index, ("n", "k"))
-    _panel(panels[1], "permittivity", wavelength, eps, ("Re ε", "Im ε"))
+    left = _panel(panels[0], "refractive index", wavelength, index, ("n", "k"))
+    right = _panel(panels[1], "permittivity", wavelength, eps, ("Re ε", "Im ε"))
     rows = _rows_between(material, wavelength[0], wavelength[-1])
     if len(rows):
-        _dots(panels[0], rows, material.index(rows))
-        _dots(panels[1], rows, material.permittivity(rows))
-    caption = textwrap.fill(f"Source: {material.source}", 120, max_lines=3, placeholder=" ...")
+        _dots(left, rows, material.index(rows))
+        _dots(right, rows, material.permittivity(rows))
+    caption = textwrap.fill(f"Source: {material.source}", 150, max_lines=3, placeholder=" ...")
     figure.supxlabel(caption, fontsize=7, color="0.35", x=0.01, ha="left")
     try:
         figure.savefig(path, dpi=150)
@@ -133,18 +133,41 @@ def _rows_between(material: Material, low: float, high: float) -> NDArray[np.flo
     return rows if len(rows) <= 80 else np.empty(0)  # a dense table needs no dots
 
 
-def _panel(axes, title, wavelength, values, names) -> None:
-    axes.plot(wavelength, values.real, color=_BLUE, label=names[0])
-    axes.plot(wavelength, values.imag, color=_ORANGE, linestyle="--", label=names[1])
-    axes.axhline(0.0, color="0.8", linewidth=0.8, zorder=0)
+def _panel(axes, title, wavelength, values, names):
+    """Draw real and imaginary part; return the axes of either.
+
+    A nearly lossless material gets a second axis for its tiny imaginary part, and no zero line:
+    on one axis both curves would be flat. A lossless one is drawn by its real part alone.
+    """
+    tiny = bool(np.all(values.imag < 0.01 * values.real))
+    lossless = not values.imag.any()
+    second = axes.twinx() if tiny and not lossless else axes
+    curves = axes.plot(wavelength, values.real, color=_BLUE)
+    if lossless:
+        title = f"{title} ({names[1]} = 0)"
+    else:
+        curves += second.plot(wavelength, values.imag, color=_ORANGE, linestyle="--")
     axes.set(xlabel="wavelength in vacuum (nm)", title=title, xlim=(wavelength[0], wavelength[-1]))
-    axes.legend(frameon=False)
-    axes.spines[["top", "right"]].set_visible(False)
+    axes.spines["top"].set_visible(False)
+    if tiny or lossless:
+        axes.set_ylabel(names[0], color=_BLUE)
+    if lossless:
+        axes.spines["right"].set_visible(False)
+    elif tiny:
+        second.spines["top"].set_visible(False)
+        second.set_ylabel(names[1], color=_ORANGE)
+        if np.all(values.imag > 0):
+            second.set_yscale("log")
+    else:
+        axes.axhline(0.0, color="0.8", linewidth=0.8, zorder=0)
+        axes.spines["right"].set_visible(False)
+        axes.legend(curves, names, frameon=False)
+    return axes, second
 
 
-def _dots(axes, wavelength, values) -> None:
-    axes.plot(wavelength, values.real, "o", color=_BLUE, markersize=3.5)
-    axes.plot(wavelength, values.imag, "o", color=_ORANGE, markersize=3.5)
+def _dots(pair, wavelength, values) -> None:
+    pair[0].plot(wavelength, values.real, "o", color=_BLUE, markersize=3.5)
+    pair[1].plot(wavelength, values.imag, "o", color=_ORANGE, markersize=3.5)
 
 
 def _small(value: float) -> str:

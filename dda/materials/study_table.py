@@ -310,6 +310,10 @@ def _explained(error: ValidationError, form: type[_Form], table: Mapping[str, An
         return f"{where.strip()}: key '{path}' {_nearest(str(place[-1]), known)}"
     if problem["type"] == "missing":
         return f"{where.strip()}: key '{path}' is missing"
+    field = form.model_fields.get(path)
+    if field is not None and field.description:
+        value = table[path]
+        return f"{where.strip()}: {path} = {value!r}; it must be {field.description}, as numbers"
     return f"{where.strip()}: {path} = {problem['input']!r}: {problem['msg']}"
 
 
