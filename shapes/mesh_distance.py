@@ -95,11 +95,10 @@ def _build(triangles, nodes):
         if 2 * node + 2 >= nodes:
             continue
         # halve at the median of the centroids along the longest side of the box
-        axis = np.argmax(high[node] - low[node])
+        longest = np.argmax(high[node] - low[node])
         centre = np.empty(stop - start)
         for n in range(start, stop):
-            corners = triangles[order[n]]
-            centre[n - start] = corners[0, axis] + corners[1, axis] + corners[2, axis]
+            centre[n - start] = triangles[order[n], :, longest].sum()
         order[start:stop] = order[start:stop][np.argsort(centre)]
         middle = (start + stop) // 2
         first[2 * node + 1], last[2 * node + 1] = start, middle

@@ -20,7 +20,7 @@ HALF_BAND = 0.5  # the filled fraction changes within half a sample of the surfa
 _SQUARED_BAND = HALF_BAND * HALF_BAND
 
 
-def fill_mesh(triangles: NDArray, shape: tuple[int, int, int]) -> NDArray:
+def fill_mesh(triangles: NDArray, shape: tuple[int, ...]) -> NDArray:
     """Filled fraction of every sample.
 
     Parameters
@@ -52,7 +52,7 @@ def fill_mesh(triangles: NDArray, shape: tuple[int, int, int]) -> NDArray:
     return out
 
 
-def winding_numbers(triangles: NDArray, shape: tuple[int, int, int]) -> NDArray:
+def winding_numbers(triangles: NDArray, shape: tuple[int, ...]) -> NDArray:
     """Winding number of the mesh about every sample, int16 (shape); see `fill_mesh`."""
     out = np.empty(shape, np.int16)
     start, items = _triangles_by_plane(triangles, shape[0])
