@@ -62,7 +62,8 @@ class TabulatedCurve:
     @cached_property
     def _interpolant(self) -> PchipInterpolator:
         energy = photon_energy(self.wavelength_nm)[::-1]
-        return PchipInterpolator(energy, np.asarray(self.values, dtype=float)[::-1])
+        with np.errstate(over="ignore"):  # values near 1e-300 overflow a mean of inverse slopes
+            return PchipInterpolator(energy, np.asarray(self.values, dtype=float)[::-1])
 
 
 @dataclass(frozen=True)

@@ -285,7 +285,7 @@ def from_study_table(
 def _form(table: Mapping[str, Any]) -> type[_Form]:
     if "model" in table:
         name = table["model"]
-        if name in _BY_MODEL:
+        if isinstance(name, str) and name in _BY_MODEL:
             return _BY_MODEL[name]
         raise InputError(f"material: model = {name!r} {_nearest(str(name), MODELS)}")
     keys = [key for key in _BY_KEY if key in table]
