@@ -1,7 +1,8 @@
 """What a particle is made of: bodies that can be sampled, parts with a material, particles.
 
-Lengths are in nm. A body is anything that says how much of a small sample voxel it fills; solids, meshes and voxel
-images are bodies. A particle is a sequence of parts, later parts overwriting earlier ones where they overlap.
+Lengths are in nm. A body is anything that says how much of a small sample voxel it fills; solids,
+meshes and voxel images are bodies. A particle is a sequence of parts, later parts overwriting
+earlier ones where they overlap.
 """
 
 from __future__ import annotations
@@ -19,7 +20,7 @@ Mirrors = tuple[bool, bool, bool]
 
 
 class ShapeError(ValueError):
-    """A shape that cannot be built or sampled; the message says what is wrong and what would be right."""
+    """A shape that cannot be built or sampled; the message says what would be right."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -44,7 +45,7 @@ class SampleGrid:
 
     origin: FloatArray
     step: float
-    shape: tuple[int, int, int]
+    shape: tuple[int, ...]
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "origin", np.asarray(self.origin, dtype=float).reshape(3))
@@ -90,7 +91,7 @@ class SampleGrid:
         """The part of the grid that `window` (slices with explicit ends) selects."""
         starts = np.array([s.start for s in window])
         shape = tuple(s.stop - s.start for s in window)
-        return SampleGrid(self.origin + self.step * starts, self.step, shape)  # type: ignore[arg-type]
+        return SampleGrid(self.origin + self.step * starts, self.step, shape)
 
 
 @runtime_checkable
@@ -139,7 +140,8 @@ class Particle:
     name : str
         What it is, for figures and tables.
     outline : Body or None
-        Body whose surface is the particle's outer surface, where one is known: it gives volume and area exactly.
+        Body whose surface is the particle's outer surface, where one is known: it gives volume and
+        area exactly.
     thin : float or None
         Thickness of the thinnest part, nm, where the parts themselves do not tell.
     gap : float or None
@@ -234,13 +236,13 @@ class Particle:
         return min(values) if values else None
 
     def mirrors(self) -> Mirrors:
-        """Whether the planes x, y, z = centre of the bounds are mirror planes, materials included."""
+        """Whether the centre planes of the bounds are mirror planes, materials included."""
         from .symmetry import particle_mirrors
 
         return particle_mirrors(self)
 
     def rotations(self) -> tuple[float, float, float]:
-        """Order of the rotation axis along x, y, z through the particle's pivot, inf for any angle."""
+        """Order of the rotation axis along x, y, z; 1 for none, inf for any angle."""
         from .symmetry import particle_rotations
 
         return particle_rotations(self)

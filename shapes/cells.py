@@ -34,7 +34,8 @@ class Cells:
     window : (n, m) array
         The same in the ball of diameter window_width * spacing around the cell's centre.
     normal : (n, 3) array
-        Unit normal of the dominant interface in the window, out of the particle; zero where there is no interface.
+        Unit normal of the dominant interface in the window, out of the particle; zero where there
+        is no interface.
     centre_material : (n,) int16 array
         Material at the cell's centre, -1 for the host.
     window_width : float

@@ -1,7 +1,7 @@
-"""Combinations of solids: union, difference, intersection, smooth blend, moved, turned, scaled, grown, hollow.
+"""Combinations of solids: joined, cut, blended, moved, turned, scaled, grown, hollow.
 
-Sharp combinations combine the fills of their members instead of evaluating one distance everywhere, so that each
-member is sampled only where it is.
+Sharp combinations combine the fills of their members instead of evaluating one distance everywhere,
+so that each member is sampled only where it is.
 """
 
 from __future__ import annotations
@@ -23,9 +23,9 @@ def rotation_matrix(angle: float, axis: ArrayLike) -> FloatArray:
     >>> rotation_matrix(90, (0, 0, 1)) @ (1, 0, 0)
     array([0., 1., 0.])
     """
-    vector = np.asarray(axis, dtype=float).reshape(3)
+    vector: FloatArray = np.asarray(axis, dtype=float).reshape(3)
     length = np.linalg.norm(vector)
-    require(bool(np.isfinite(length) and length > 0), f"rotation axis {axis} must not be zero")
+    require(bool(np.isfinite(length) and length > 0), f"rotation axis {axis!r} must not be zero")
     x, y, z = vector / length
     cosine, sine = np.cos(np.radians(angle)), np.sin(np.radians(angle))
     if angle % 90 == 0:
@@ -94,7 +94,7 @@ class Union(Solid):
 
 @dataclass(frozen=True, eq=False)
 class Intersection(Solid):
-    """What several solids share. The bounds are those of the boxes' intersection, not always tight."""
+    """What several solids share. The bounds, of the boxes' intersection, may not be tight."""
 
     members: tuple[Solid, ...]
 
@@ -152,8 +152,8 @@ class Difference(Solid):
 class Blend(Solid):
     """Solids joined by smooth fillets: the polynomial smooth maximum of their distances.
 
-    Where two distances differ by less than `radius` their maximum a is raised by (radius - difference)^2/(4 radius).
-    Members are joined one after the other, each to all before it.
+    Where two distances differ by less than `radius` their maximum a is raised by (radius -
+    difference)^2/(4 radius). Members are joined one after the other, each to all before it.
     """
 
     members: tuple[Solid, ...]
@@ -370,7 +370,8 @@ class Grown(Solid):
         low, high = self.bounds
         require(
             bool(np.all(high > low)),
-            f"taking {-self.distance:g} nm off leaves nothing of a solid {np.min(high - low) - 2 * self.distance:g} nm thin",
+            f"taking {-self.distance:g} nm off all sides leaves nothing of a solid that is "
+            f"{np.min(high - low) - 2 * self.distance:g} nm thin",
         )
 
     @property

@@ -37,8 +37,8 @@ def measured_volume(thing: Body | Particle, samples: int = VOLUME_SAMPLES) -> fl
 def measured_area(thing: Body | Particle, samples: int = VOLUME_SAMPLES) -> float:
     """Surface area, nm^2, good to about 1 % where edges are rounded by a few samples.
 
-    The area is the integral of the length of the gradient of the filled fraction, first smoothed over
-    three samples so that the differences see the direction of the surface.
+    The area is the integral of the length of the gradient of the filled fraction, first smoothed
+    over three samples so that the differences see the direction of the surface.
     """
     grid = _grid(thing, samples)
     total = 0.0
@@ -71,7 +71,7 @@ def _grid(thing: Body | Particle, samples: int) -> SampleGrid:
     step = float(np.max(high - low)) / samples
     shape = np.ceil((high - low) / step).astype(int) + 8
     origin = (low + high) / 2 - step * (shape - 1) / 2
-    return SampleGrid(origin, step, tuple(shape))  # type: ignore[arg-type]
+    return SampleGrid(origin, step, tuple(shape))
 
 
 def _slabs(

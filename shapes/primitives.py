@@ -129,7 +129,7 @@ class Capsule(Solid):
 
 @dataclass(frozen=True, eq=False)
 class Ellipsoid(Solid):
-    """Ellipsoid of full `axes` (x, y, z). The distance is the exact one, found by Newton's method."""
+    """Ellipsoid of full `axes` (x, y, z); the distance is exact, by Newton's method."""
 
     axes: tuple[float, float, float]
 
@@ -186,14 +186,15 @@ def ellipsoid_mean_curvature(half: FloatArray) -> float:
 
 @numba.njit(cache=True, nogil=True, parallel=True)
 def _ellipsoid_distance(points, half):  # type: ignore[no-untyped-def]
-    """Signed distance from an ellipsoid; the closest point solves sum (a_i y_i/(t + a_i^2))^2 = 1."""
+    """Signed distance; the closest point solves sum (a_i y_i/(t + a_i^2))^2 = 1."""
     out = np.empty(points.shape[0])
     smallest = half.min()
     for n in numba.prange(points.shape[0]):
         y0, y1, y2 = abs(points[n, 0]), abs(points[n, 1]), abs(points[n, 2])
         a0, a1, a2 = half[0] ** 2, half[1] ** 2, half[2] ** 2
         level = y0 * y0 / a0 + y1 * y1 / a1 + y2 * y2 / a2
-        # f(t) falls and is convex right of -smallest^2: start left of the root and Newton climbs to it
+        # f(t) falls and is convex right of -smallest^2: start left of the root and Newton climbs to
+        # it
         t = -(smallest**2)
         for k in range(3):
             y = y0 if k == 0 else (y1 if k == 1 else y2)
@@ -223,7 +224,7 @@ def _ellipsoid_distance(points, half):  # type: ignore[no-untyped-def]
 
 @dataclass(frozen=True, eq=False)
 class Torus(Solid):
-    """Ring about z: `diameter` across the middle line of the tube, `thickness` the tube's diameter."""
+    """Ring about z: `diameter` of the tube's middle line, `thickness` of the tube."""
 
     diameter: float
     thickness: float
@@ -234,8 +235,8 @@ class Torus(Solid):
         positive(diameter=self.diameter, thickness=self.thickness)
         require(
             self.thickness < self.diameter,
-            f"thickness = {self.thickness:g} must be less than the diameter of the tube's middle line, "
-            f"{self.diameter:g} nm",
+            f"thickness = {self.thickness:g} must be less than the diameter of the tube's middle "
+            f"line, {self.diameter:g} nm",
         )
 
     def signed_distance(self, points: FloatArray) -> FloatArray:

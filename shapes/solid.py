@@ -1,7 +1,8 @@
 """Solids: bodies given by a signed distance, which combine.
 
-The distance is positive inside, in nm, and never changes by more than the step one takes (1-Lipschitz), so its value
-is a safe lower bound on the way to the surface: whole blocks of samples are settled by one evaluation.
+The distance is positive inside, in nm, and never changes by more than the step one takes
+(1-Lipschitz), so its value is a safe lower bound on the way to the surface: whole blocks of samples
+are settled by one evaluation.
 """
 
 from __future__ import annotations
@@ -12,6 +13,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from .body import Bounds, FloatArray, Mirrors, SampleGrid, ShapeError
+from .plane import blocks_filled
 
 if TYPE_CHECKING:
     from . import combine
@@ -23,8 +25,8 @@ CHUNK = 256  # blocks evaluated together, which bounds the memory
 class Solid:
     """A body with a signed distance.
 
-    A subclass defines `signed_distance` and `support`, and where there is a closed form `steiner`, or `volume` and
-    `area` with `exact`.
+    A subclass defines `signed_distance` and `support`, and where there is a closed form `steiner`,
+    or `volume` and `area` with `exact`.
     """
 
     exact: frozenset[str] = frozenset({"bounds"})
@@ -88,7 +90,7 @@ class Solid:
         return solid_mirrors(self)
 
     def rotations(self) -> tuple[float, float, float]:
-        """Order of the rotation axis along x, y, z through `pivot`; 1 for none, inf for any angle."""
+        """Order of the rotation axis along x, y, z through `pivot`; inf for any angle."""
         from .symmetry import solid_rotations
 
         return solid_rotations(self)
@@ -101,7 +103,7 @@ class Solid:
         return rng.uniform(low - margin, high + margin, (number, 3))
 
     def fill(self, grid: SampleGrid) -> NDArray[np.float32]:
-        """Filled fraction of every sample voxel of `grid`: the clipped ramp 1/2 + distance/step."""
+        """Filled fraction of every sample voxel of `grid`, exact where the surface is flat."""
         window = grid.window(self.bounds)
         out = np.zeros(grid.shape, dtype=np.float32)
         if window is not None:
@@ -113,9 +115,9 @@ class Solid:
         padded = np.zeros(tuple(b * BLOCK for b in blocks), dtype=np.float32)
         by_block = padded.reshape(blocks[0], BLOCK, blocks[1], BLOCK, blocks[2], BLOCK)
         middle = grid.origin + grid.step * (BLOCK - 1) / 2
-        coarse = SampleGrid(middle, grid.step * BLOCK, blocks)  # type: ignore[arg-type]
+        coarse = SampleGrid(middle, grid.step * BLOCK, blocks)
         distance = self.signed_distance(coarse.points())
-        reach = grid.step * ((BLOCK - 1) / 2 * np.sqrt(3) + 0.5)
+        reach = grid.step * BLOCK / 2 * np.sqrt(3)
         inner = np.nonzero((distance >= reach).reshape(blocks))
         by_block[inner[0], :, inner[1], :, inner[2], :] = 1.0
         near = np.stack(np.nonzero((np.abs(distance) < reach).reshape(blocks)), axis=1)
@@ -124,9 +126,9 @@ class Solid:
             some = near[start : start + CHUNK]
             corners = grid.origin + grid.step * BLOCK * some
             points = (corners[:, None, :] + offsets[None]).reshape(-1, 3)
-            ramp = np.clip(0.5 + self.surface_distance(points) / grid.step, 0.0, 1.0)
-            ramp = ramp.reshape(len(some), BLOCK, BLOCK, BLOCK)
-            by_block[some[:, 0], :, some[:, 1], :, some[:, 2], :] = ramp
+            distance = self.surface_distance(points).reshape(len(some), BLOCK, BLOCK, BLOCK)
+            filled = blocks_filled(distance, grid.step)
+            by_block[some[:, 0], :, some[:, 1], :, some[:, 2], :] = filled
         nx, ny, nz = grid.shape
         return padded[:nx, :ny, :nz]
 

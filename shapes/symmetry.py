@@ -1,14 +1,15 @@
 """Mirror planes and rotation axes of solids and particles, found by comparing distances.
 
-A plane or axis counts when the signed distances at points all over the body, and at their images, agree. Every
-primitive of a combination contributes its own points, so a small asymmetric detail is not overlooked.
+A plane or axis counts when the signed distances at points all over the body, and at their images,
+agree. Every primitive of a combination contributes its own points, so a small asymmetric detail is
+not overlooked.
 """
 
 from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -57,12 +58,13 @@ def particle_mirrors(particle: Particle) -> Mirrors:
 
 
 def particle_rotations(particle: Particle) -> tuple[float, float, float]:
-    """Order of the rotation axis along x, y, z; through the pivot of a single part, else the origin."""
+    """Order of the axes along x, y, z, through a single part's pivot or else the origin."""
     from .solid import Solid
 
     if not all(isinstance(p.body, Solid) for p in particle.parts):
         return 1, 1, 1
-    pivot = particle.parts[0].body.pivot if len(particle.parts) == 1 else np.zeros(3)  # type: ignore[attr-defined]
+    body = particle.parts[0].body
+    pivot = body.pivot if len(particle.parts) == 1 and isinstance(body, Solid) else np.zeros(3)
     return _rotations(_layers(particle), _probes(particle), pivot, float(np.max(particle.extent)))
 
 
@@ -84,7 +86,8 @@ def _layers(particle: Particle) -> Field:
 
 
 def _probes(particle: Particle) -> Callable[[int], FloatArray]:
-    return lambda number: np.concatenate([p.body.probes(number) for p in particle.parts])  # type: ignore[attr-defined]
+    bodies: list[Any] = [part.body for part in particle.parts]
+    return lambda number: np.concatenate([body.probes(number) for body in bodies])
 
 
 def _mirrors(

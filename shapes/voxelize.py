@@ -1,7 +1,7 @@
 """Particles to cells of a cubic lattice.
 
-The particle is sampled finer than a cell, slab by slab along x; each cell gathers what fills it and what fills the
-ball window around it, with the gradients that give the normal of the surface.
+The particle is sampled finer than a cell, slab by slab along x; each cell gathers what fills it and
+what fills the ball window around it, with the gradients that give the normal of the surface.
 """
 
 from __future__ import annotations
@@ -20,6 +20,7 @@ OCCUPIED = 0.02  # a cell belongs to the particle when its window holds more tha
 KEPT = 0.018  # what is carried until mirror images have been averaged
 SLAB_SAMPLES = 12_000_000  # samples of one material held at once
 BEND = 0.2  # cells: weight of second derivatives, which matter where a thin layer has no gradient
+FAINT = 0.02  # 1/cell: gradients below this are noise of the sampling, not an interface
 COLUMNS = 10  # fraction, 3 gradients, 6 second derivatives
 
 
@@ -32,8 +33,8 @@ def voxelize(
 ) -> Cells:
     """Cells of a particle.
 
-    The lattice is centred on the centre of the particle's bounds, so mirror planes of the particle are mirror planes
-    of the cells, exactly.
+    The lattice is centred on the centre of the particle's bounds, so mirror planes of the particle
+    are mirror planes of the cells, exactly.
 
     Parameters
     ----------
@@ -125,7 +126,8 @@ class _Lattice:
             window.halo + 1
         )  # keeps the parity, reaches past all that the window sees
         origin = (low + high) / 2 - spacing * (shape - 1) / 2
-        return cls(origin, spacing, tuple(int(n) for n in shape), samples, window)  # type: ignore[arg-type]
+        nx, ny, nz = (int(n) for n in shape)
+        return cls(origin, spacing, (nx, ny, nz), samples, window)
 
     def slab(self, start: int, stop: int) -> SampleGrid:
         """Samples of the cells start..stop along x, with the halo on all six sides."""
@@ -133,7 +135,7 @@ class _Lattice:
         step = self.spacing / s
         first = self.origin + self.spacing * (np.array([start, 0, 0]) - halo) - step * (s - 1) / 2
         nx, ny, nz = stop - start, self.shape[1], self.shape[2]
-        return SampleGrid(first, step, tuple((n + 2 * halo) * s for n in (nx, ny, nz)))  # type: ignore[arg-type]
+        return SampleGrid(first, step, tuple((n + 2 * halo) * s for n in (nx, ny, nz)))
 
 
 @dataclass(frozen=True, eq=False)
@@ -174,7 +176,7 @@ def _gather_all(particle: Particle, lattice: _Lattice) -> _Gathered:
 
 
 def _composed(particle: Particle, grid: SampleGrid) -> NDArray[np.float32]:
-    """Fraction of each material in every sample, (m, *grid.shape): later parts cover earlier ones."""
+    """Fraction of each material, (m, *grid.shape): later parts cover earlier ones."""
     materials = particle.materials
     filled = np.zeros((len(materials), *grid.shape), dtype=np.float32)
     for part in particle.parts:
@@ -245,7 +247,7 @@ def _cell_statistics(filled, s):  # type: ignore[no-untyped-def]
 
 
 def _neighbourhood(low: FloatArray, high: FloatArray, halo: int) -> tuple[FloatArray, FloatArray]:
-    """Least and greatest sample within `halo` cells, for the cells that have that many neighbours."""
+    """Least and greatest sample within `halo` cells, for all but the outer cells."""
     for axis in (1, 2, 3):
         count = low.shape[axis] - 2 * halo
         cuts = [
@@ -288,8 +290,9 @@ def _centre_material(centre: FloatArray) -> NDArray[np.int16]:
 def _normals(gathered: _Gathered) -> FloatArray:
     """Unit normal of the dominant interface: the main axis of sum g g^T over all phases.
 
-    Second derivatives join with a small weight: they point along the normal too, and in the middle of a thin layer,
-    where the gradients cancel, they alone do. The sign is that of the way out of the particle.
+    Second derivatives join with a small weight: they point along the normal too, and in the middle
+    of a thin layer, where the gradients cancel, they alone do. The sign is that of the way out of
+    the particle.
     """
     first, second = gathered.derivatives[:, :, :3], gathered.derivatives[:, :, 3:]
     normal = np.zeros((len(gathered.index), 3))
@@ -306,11 +309,12 @@ def _normals(gathered: _Gathered) -> FloatArray:
     tensor += BEND**2 * np.einsum("nkil,nklj->nij", bend, bend)
     values, vectors = np.linalg.eigh(tensor)
     axis = vectors[:, :, 2]
-    # out of the particle: up the host's gradient, else from the materials named first to the later ones
+    # out of the particle: up the host's gradient, else from the materials named first to the later
+    # ones
     rank = np.arange(g.shape[1]) / g.shape[1]
     out = g[:, -1] + 1e-3 * np.einsum("k,nki->ni", rank, g)
     axis = axis * np.where(np.einsum("ni,ni->n", axis, out) < 0, -1.0, 1.0)[:, None]
-    normal[mixed] = np.where(values[:, 2:] > 1e-10, axis, 0.0)
+    normal[mixed] = np.where(values[:, 2:] > FAINT**2, axis, 0.0)
     return normal
 
 

@@ -1,4 +1,4 @@
-"""Weights that turn fine samples into the fraction, gradient and curvature of a phase in a ball window."""
+"""Weights that turn fine samples into what the ball window around a cell holds."""
 
 from __future__ import annotations
 
@@ -9,6 +9,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from .body import FloatArray, ShapeError
+from .plane import plane_in_cube
+
+MARGIN = 0.9  # samples beyond the ball's surface that may carry weight
+DIRECTIONS = 100  # of the planes that the weights are fitted to
+OFFSETS_PER_SAMPLE = 3
+ALIGNED = 9  # weight of planes along the lattice: facets often are, and they are the hardest
+RIDGE = 1e-7
+MIXED = ((0, 0), (1, 1), (2, 2), (0, 1), (0, 2), (1, 2))
 
 
 @dataclass(frozen=True, eq=False)
@@ -35,8 +43,10 @@ class Window:
 def ball_window(width: float = 2.2, samples: int = 4) -> Window:
     """Weights for a ball of diameter `width` cells, `samples` samples a cell edge.
 
-    Samples are averages over a voxel and so are the weights, which widens the ball by the variance of two voxels: the
-    ball is made smaller by as much, so that a plane gets the fraction it has in the ball itself.
+    The weights are the least-squares solution of: every plane, in all directions and at all
+    distances, sampled as exact fractions of the sample voxels, gives its closed-form fraction of
+    the ball, and the derivatives of that. A ball's own weights would be wider than the ball, since
+    samples are averages; fitted weights undo that.
 
     Raises
     ------
@@ -44,45 +54,31 @@ def ball_window(width: float = 2.2, samples: int = 4) -> Window:
         If the window is narrower than a cell or has too few samples.
     """
     if not 1.0 <= width <= 8.0:
-        raise ShapeError(
-            f"window = {width:g} must lie between 1 and 8 cells; 2.2 suits most particles"
-        )
+        raise ShapeError(f"window = {width:g} must lie between 1 and 8 cells; 2.2 suits most")
     if not 2 <= samples <= 16:
-        raise ShapeError(
-            f"samples = {samples} must lie between 2 and 16 per cell edge; 4 suits most"
-        )
-    wanted = (width * samples) ** 2 / 20 - 1 / 12  # variance left for the weights, in samples^2
+        raise ShapeError(f"samples = {samples} must lie between 2 and 16 a cell edge; 4 suits most")
     radius = width * samples / 2
-    for _ in range(30):
-        coordinates, ball = _ball(radius, samples)
-        variance = float((ball.sum(axis=(1, 2)) * coordinates**2).sum())
-        radius *= (wanted / variance) ** 0.5
-    coordinates, ball = _ball(radius, samples)
-    half = [
-        (_shifted(radius, samples, k, 0.5) - _shifted(radius, samples, k, -0.5)) for k in range(3)
-    ]
-    x, y, z = np.meshgrid(coordinates, coordinates, coordinates, indexing="ij")
-    rows = [ball]
-    for k, position in enumerate((x, y, z)):
-        slope = half[k]
-        rows.append(slope / (slope * position).sum() * samples)
-    for k, position in enumerate((x, y, z)):
-        bend = _shifted(radius, samples, k, 1.0) - 2 * ball + _shifted(radius, samples, k, -1.0)
-        bend = bend - ball * bend.sum()
-        rows.append(bend / (bend * position**2).sum() * 2 * samples**2)
-    for (i, first), (j, second) in (((0, x), (1, y)), ((0, x), (2, z)), ((1, y), (2, z))):
-        cross = sum(
-            si * sj * _shifted_two(radius, samples, i, si * 0.5, j, sj * 0.5)
-            for si in (1, -1)
-            for sj in (1, -1)
-        )
-        rows.append(cross / (cross * first * second).sum() * samples**2)
-    stack = np.array(rows)
-    used = np.any(np.abs(stack) > 1e-12, axis=0)
-    first = int(np.round(coordinates[0] + (samples - 1) / 2))
-    offsets = np.stack(np.nonzero(used), axis=1) + first
-    halo = int(max(-offsets.min(), offsets.max() - samples + 1) + samples - 1) // samples
-    return Window(offsets.astype(np.int64), np.ascontiguousarray(stack[:, used]), halo)
+    places = _places(radius, samples)
+    normals = _normals()
+    reach = radius + 1
+    distances = np.linspace(-reach, reach, int(2 * reach * OFFSETS_PER_SAMPLE) + 1)
+    along = normals @ places.T
+    rows = np.array([plane_in_cube(t + along, normals) for t in distances])  # (t, direction, q)
+    t = np.clip(distances / radius, -1.0, 1.0)[:, None]
+    value = plane_fraction(distances, 2 * radius)[:, None] + 0 * normals[None, :, 0]
+    slope = 0.75 / radius * (1 - t**2)
+    bend = -1.5 / radius**2 * t * (np.abs(t) < 1)
+    fraction = _fit(rows, value, places, ())
+    fraction /= fraction.sum()
+    weights = [fraction]
+    for k in range(3):
+        weights.append(_fit(rows, slope * normals[:, k], places, (k,)) * samples)
+    for i, j in MIXED:
+        second = _fit(rows, bend * normals[:, i] * normals[:, j], places, (i, j)) * samples**2
+        weights.append(second - fraction * second.sum())
+    offsets = np.round(places + (samples - 1) / 2).astype(np.int64)
+    beyond = max(int(-offsets.min()), int(offsets.max()) - samples + 1)
+    return Window(offsets, np.array(weights), -(-beyond // samples))
 
 
 def plane_fraction(distance: FloatArray, width: float) -> FloatArray:
@@ -95,42 +91,44 @@ def plane_fraction(distance: FloatArray, width: float) -> FloatArray:
     return 0.5 + 0.75 * t - 0.25 * t**3
 
 
-def _ball(radius: float, samples: int) -> tuple[FloatArray, FloatArray]:
-    """Coordinates of the samples along an axis and the share of the ball in every sample voxel."""
-    coordinates = _coordinates(radius, samples)
-    share = _share(radius, coordinates, np.zeros(3))
-    return coordinates, share / share.sum()
-
-
-def _shifted(radius: float, samples: int, axis: int, shift: float) -> FloatArray:
-    """The ball's weights if its centre is moved by `shift` samples along `axis`."""
-    centre = np.zeros(3)
-    centre[axis] = shift
-    share = _share(radius, _coordinates(radius, samples), centre)
-    return share / share.sum()
-
-
-def _shifted_two(
-    radius: float, samples: int, i: int, shift_i: float, j: int, shift_j: float
-) -> FloatArray:
-    centre = np.zeros(3)
-    centre[i], centre[j] = shift_i, shift_j
-    share = _share(radius, _coordinates(radius, samples), centre)
-    return share / share.sum()
-
-
-def _coordinates(radius: float, samples: int) -> FloatArray:
-    """Sample centres about a cell's centre that a ball of `radius` (samples), moved by one, reaches."""
+def _places(radius: float, samples: int) -> FloatArray:
+    """Sample centres that may carry weight, relative to a cell's centre, (q, 3) samples."""
     odd = samples % 2
-    count = int(np.ceil(radius + 1.5))
-    return np.arange(-count, count + odd) + (0.0 if odd else 0.5)
+    count = int(np.ceil(radius + MARGIN))
+    line = np.arange(-count, count + odd, dtype=float) + (0.0 if odd else 0.5)
+    grid = np.stack(np.meshgrid(line, line, line, indexing="ij"), axis=-1).reshape(-1, 3)
+    return grid[np.linalg.norm(grid, axis=1) < radius + MARGIN]
 
 
-def _share(radius: float, coordinates: FloatArray, centre: FloatArray, fine: int = 8) -> FloatArray:
-    """Volume of the ball in every sample voxel, by a sum over fine^3 points with a smooth edge."""
-    sub = (np.arange(fine) + 0.5) / fine - 0.5
-    squares = [((coordinates - c)[:, None] + sub).ravel() ** 2 for c in centre]
-    r = np.sqrt(squares[0][:, None, None] + squares[1][None, :, None] + squares[2][None, None, :])
-    inside = np.clip(0.5 + (radius - r) * fine, 0.0, 1.0)
-    n = len(coordinates)
-    return inside.reshape(n, fine, n, fine, n, fine).mean(axis=(1, 3, 5))
+def _normals() -> FloatArray:
+    """Directions over an octant (the weights have the cube's symmetry), (n, 3)."""
+    k = np.arange(DIRECTIONS) + 0.5
+    z = 1 - k / DIRECTIONS
+    turn = k * np.pi * (3 - np.sqrt(5))
+    across = np.sqrt(1 - z**2)
+    spread = np.abs(np.stack([across * np.cos(turn), across * np.sin(turn), z], axis=1))
+    diagonal = (np.ones((3, 3)) - np.eye(3)) / np.sqrt(2)
+    return np.concatenate([spread, *([np.eye(3)] * ALIGNED), *([diagonal] * 3)])
+
+
+def _fit(
+    rows: FloatArray, target: FloatArray, places: FloatArray, odd: tuple[int, ...]
+) -> FloatArray:
+    """Least-squares weights, odd in the axes that `odd` lists once, equal in equivalent places."""
+    signed = [k for k in odd if odd.count(k) == 1]
+    alone = sorted(set(odd)) if len(set(odd)) == 1 else []
+    paired = sorted(set(odd)) if len(set(odd)) == 2 else []
+    rest = [k for k in range(3) if k not in odd]
+    size = np.abs(places)
+    key = np.concatenate(
+        [np.sort(size[:, group], axis=1) for group in (alone, paired, rest)], axis=1
+    )
+    _, orbit = np.unique(key, axis=0, return_inverse=True)
+    sign = np.prod(np.sign(places[:, signed]), axis=1)
+    basis = np.zeros((len(places), int(orbit.max()) + 1))
+    basis[np.arange(len(places)), orbit.ravel()] = sign
+    length = np.linalg.norm(basis, axis=0)
+    basis = basis[:, length > 0] / length[length > 0]
+    matrix = rows.reshape(-1, len(places)) @ basis
+    normal = matrix.T @ matrix + RIDGE * len(matrix) * np.eye(matrix.shape[1])
+    return basis @ np.linalg.solve(normal, matrix.T @ target.ravel())

@@ -1,0 +1,119 @@
+"""The part of a small cube that lies on one side of a plane, and what it makes of distances."""
+
+from __future__ import annotations
+
+import numba
+import numpy as np
+from numpy.typing import NDArray
+
+from .body import FloatArray
+
+FLAT = 1e-6  # share of a normal's component below which the plane counts as along that axis
+KINK = 0.3  # of a distance's slope: less means a ridge, where no one plane stands for the surface
+
+
+@numba.njit(cache=True, nogil=True)
+def _cut(distance, n0, n1, n2):  # type: ignore[no-untyped-def]
+    """Filled part of a unit cube whose centre is `distance` inside a plane of unit normal n."""
+    n0, n1, n2 = abs(n0), abs(n1), abs(n2)
+    if n0 > n1:
+        n0, n1 = n1, n0
+    if n1 > n2:
+        n1, n2 = n2, n1
+    if n0 > n1:
+        n0, n1 = n1, n0
+    total = n0 + n1 + n2
+    level = 0.5 + distance / total
+    if level <= 0.0:
+        return 0.0
+    if level >= 1.0:
+        return 1.0
+    a = level if level <= 0.5 else 1.0 - level
+    m1, m2 = max(n0 / total, FLAT), max(n1 / total, FLAT)
+    m3 = 1.0 - m1 - m2
+    if a < m1:
+        part = a**3 / (6 * m1 * m2 * m3)
+    elif a < m2:
+        part = a * (a - m1) / (2 * m2 * m3) + m1 * m1 / (6 * m2 * m3)
+    elif a < min(m1 + m2, m3):
+        part = a * a * (3 * (m1 + m2) - a) + m1 * m1 * (m1 - 3 * a) + m2 * m2 * (m2 - 3 * a)
+        part /= 6 * m1 * m2 * m3
+    elif m3 < m1 + m2:
+        part = a * a * (3 - 2 * a) + m1 * m1 * (m1 - 3 * a) + m2 * m2 * (m2 - 3 * a)
+        part = (part + m3 * m3 * (m3 - 3 * a)) / (6 * m1 * m2 * m3)
+    else:
+        part = (2 * a - m1 - m2) / (2 * m3)
+    return part if level <= 0.5 else 1.0 - part
+
+
+@numba.njit(cache=True, nogil=True, parallel=True)
+def plane_in_cube(distance: FloatArray, normal: FloatArray) -> FloatArray:
+    """Filled part of unit cubes cut by planes (Scardovelli & Zaleski 2000).
+
+    Parameters
+    ----------
+    distance : (n, q) array
+        How far the centres of q cubes lie inside plane n, in cube edges.
+    normal : (n, 3) array
+        Unit normals of the planes.
+
+    Returns
+    -------
+    (n, q) array
+
+    Examples
+    --------
+    >>> plane_in_cube(np.array([[0.0, 0.25, 0.5]]), np.array([[0.0, 0.0, 1.0]]))[0].round(3)
+    array([0.5 , 0.75, 1.  ])
+    """
+    out = np.empty(distance.shape)
+    for i in numba.prange(distance.shape[0]):
+        for q in range(distance.shape[1]):
+            out[i, q] = _cut(distance[i, q], normal[i, 0], normal[i, 1], normal[i, 2])
+    return out
+
+
+@numba.njit(cache=True, nogil=True, parallel=True)
+def blocks_filled(distance: FloatArray, step: float) -> NDArray[np.float32]:
+    """Filled part of the voxels of small blocks, from the signed distances of their centres.
+
+    The surface within a voxel is taken as the plane at that distance whose normal is the
+    gradient of the distances in the block.
+
+    Parameters
+    ----------
+    distance : (blocks, b, b, b) array
+        Signed distance at the centres, inside positive, nm.
+    step : float
+        Edge of a voxel, nm.
+
+    Returns
+    -------
+    (blocks, b, b, b) float32 array
+    """
+    count, b = distance.shape[0], distance.shape[1]
+    out = np.empty(distance.shape, dtype=np.float32)
+    for n in numba.prange(count):
+        d = distance[n]
+        for i in range(b):
+            i0, i1 = max(i - 1, 0), min(i + 1, b - 1)
+            for j in range(b):
+                j0, j1 = max(j - 1, 0), min(j + 1, b - 1)
+                for k in range(b):
+                    here = d[i, j, k] / step
+                    if here >= 0.87:  # half the diagonal of a voxel
+                        out[n, i, j, k] = 1.0
+                        continue
+                    if here <= -0.87:
+                        out[n, i, j, k] = 0.0
+                        continue
+                    k0, k1 = max(k - 1, 0), min(k + 1, b - 1)
+                    gx = (d[i1, j, k] - d[i0, j, k]) / ((i1 - i0) * step)
+                    gy = (d[i, j1, k] - d[i, j0, k]) / ((j1 - j0) * step)
+                    gz = (d[i, j, k1] - d[i, j, k0]) / ((k1 - k0) * step)
+                    slope = np.sqrt(gx * gx + gy * gy + gz * gz)
+                    if slope > KINK:
+                        out[n, i, j, k] = _cut(here, gx / slope, gy / slope, gz / slope)
+                    else:
+                        out[n, i, j, k] = min(max(0.5 + here, 0.0), 1.0)
+    return out
