@@ -3,6 +3,8 @@
 from .body import Body, Part, Particle, SampleGrid, ShapeError
 from .builders import cube, cuboid, ellipsoid, sphere
 from .cells import Cells
+from .image import from_image
+from .mesh import from_mesh
 from .solid import Solid
 from .voxelize import voxelize
 
@@ -17,6 +19,8 @@ __all__ = [
     "cube",
     "cuboid",
     "ellipsoid",
+    "from_image",
+    "from_mesh",
     "sphere",
     "voxelize",
 ]
