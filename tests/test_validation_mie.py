@@ -35,6 +35,8 @@ def test_riccati_bessel_against_library_functions(z):
         assert np.allclose(r.psi, j, rtol=1e-12, atol=0)
         assert np.allclose(r.psi * r.d_psi, r.psi_prime, rtol=1e-12, atol=0)
         assert np.allclose(r.xi * r.d_xi, r.xi_prime, rtol=1e-12, atol=0)
+        assert np.allclose(r.small_psi_prime, r.small_psi * r.d_psi, rtol=1e-11, atol=0)
+        assert np.allclose(r.small_xi_prime, r.small_xi * r.d_xi, rtol=1e-11, atol=0)
 
 
 def test_published_value():

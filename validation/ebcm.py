@@ -204,10 +204,12 @@ def _radial(functions: Riccati, middle: float, regular: bool) -> tuple[np.ndarra
     rho = functions.z
     size = np.log(rho / middle)
     if regular:
-        scale = np.exp((n + 1) * size) * functions.small_psi
-        return scale / rho, scale * functions.d_psi / rho, scale / rho**2
-    scale = np.exp(-n * size) * functions.small_xi
-    return scale / rho, scale * functions.d_xi / rho, scale / rho**2
+        scale = np.exp((n + 1) * size) / rho
+        value, slope = scale * functions.small_psi, scale * functions.small_psi_prime
+    else:
+        scale = np.exp(-n * size) / rho
+        value, slope = scale * functions.small_xi, scale * functions.small_xi_prime
+    return value, slope, value / rho
 
 
 def _descaling(order: int, x: float) -> np.ndarray:

@@ -56,17 +56,35 @@ class Riccati:
         """Derivative xi_n'(z), (N+1, ...)."""
         return self._derivative(self.xi, np.exp(1j * self.z))
 
+    @property
+    def small_psi_prime(self) -> np.ndarray:
+        """psi_n'(z) divided by the same form as small_psi, (N+1, ...)."""
+        n = self._orders()
+        below = np.concatenate([(np.cos(self.z) / self.z)[None], self.small_psi[:-1]])
+        below[1:] *= (2 * n[1:] + 1) / self.z
+        return below - n * self.small_psi / self.z
+
+    @property
+    def small_xi_prime(self) -> np.ndarray:
+        """xi_n'(z) divided by the same form as small_xi, (N+1, ...)."""
+        n = self._orders()
+        below = np.concatenate([1j * self.small_xi[:1], self.small_xi[:-1]])
+        below[1:] *= self.z / (2 * n[1:] - 1)
+        return below - n * self.small_xi / self.z
+
+    def _orders(self) -> np.ndarray:
+        return np.arange(len(self.d_psi)).reshape((-1,) + (1,) * self.z.ndim)
+
     def _derivative(self, f: np.ndarray, below: np.ndarray) -> np.ndarray:
         """f_n' = f_{n-1} - n f_n / z: unlike f_n times d_f, right at the zeros of f_n too."""
-        n = np.arange(len(f)).reshape((-1,) + (1,) * self.z.ndim)
+        n = self._orders()
         return np.concatenate([below[None], f[:-1]]) - n * f / self.z
 
     def _log_odd(self) -> np.ndarray:
-        n = np.arange(len(self.d_psi))
-        return np.log(2.0 * n + 1).reshape((-1,) + (1,) * self.z.ndim)
+        return np.log(2.0 * self._orders() + 1)
 
     def _log_psi_form(self) -> np.ndarray:
-        n = np.arange(len(self.d_psi)).reshape((-1,) + (1,) * self.z.ndim)
+        n = self._orders()
         return (n + 1) * np.log(self.z) - np.cumsum(self._log_odd(), axis=0)
 
 
