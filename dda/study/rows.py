@@ -30,7 +30,7 @@ class Row:
         "converged" only if the solver says so for every polarization; else what it says
         ("stalled", "limit"), or "failed" when there is no answer.
     balance : float
-        (C_ext - C_abs) / C_sca - 1 with C_sca from the far field: 0 when energy is conserved.
+        (C_abs + C_sca - C_ext) / C_ext, each computed on its own: 0 when energy is conserved.
     seconds : float
         Wall time of this point.
     message : str
