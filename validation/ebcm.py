@@ -9,6 +9,7 @@ stand still, and the change left is kept as `error`.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -112,7 +113,7 @@ class Spheroid:
         }
 
     def cross_sections(
-        self, direction: np.ndarray, polarization: np.ndarray
+        self, direction: Sequence[float], polarization: Sequence[complex]
     ) -> tuple[float, float, float]:
         """C_ext, C_abs, C_sca in nm^2 for a plane wave in the body's frame (axis z).
 
@@ -123,13 +124,13 @@ class Spheroid:
         polarization : (3,) complex array_like
             Perpendicular to the direction; need not be normalised.
         """
-        direction = np.asarray(direction, dtype=float) / np.linalg.norm(direction)
-        polarization = np.asarray(polarization, dtype=complex) / np.linalg.norm(polarization)
-        if abs(direction @ polarization) > 1e-10:
+        along = np.asarray(direction, dtype=float) / np.linalg.norm(direction)
+        across = np.asarray(polarization, dtype=complex) / np.linalg.norm(polarization)
+        if abs(along @ across) > 1e-10:
             raise ValueError("the polarization must be perpendicular to the direction")
         extinction = scattering = 0.0
-        for m, f in self.scattered(direction, polarization).items():
-            incident = self._incident(m, direction, polarization)
+        for m, f in self.scattered(along, across).items():
+            incident = self._incident(m, along, across)
             extinction -= float(np.sum(f * incident.conj()).real)
             scattering += float(np.sum(np.abs(f) ** 2))
         extinction, scattering = extinction / self.k**2, scattering / self.k**2

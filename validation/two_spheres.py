@@ -85,9 +85,9 @@ def spheres_on_line(
     order : int, optional
         Number of multipoles of each sphere; without it, raised until nothing changes.
     """
-    direction = np.asarray(direction, dtype=float) / np.linalg.norm(direction)
-    polarization = np.asarray(polarization, dtype=complex) / np.linalg.norm(polarization)
-    if abs(direction @ polarization) > 1e-10:
+    along = np.asarray(direction, dtype=float) / np.linalg.norm(direction)
+    across = np.asarray(polarization, dtype=complex) / np.linalg.norm(polarization)
+    if abs(along @ across) > 1e-10:
         raise ValueError("the polarization must be perpendicular to the direction")
     reach = np.abs(np.subtract.outer(places, places))
     touch = np.add.outer(diameters, diameters) / 2
@@ -100,8 +100,8 @@ def spheres_on_line(
         places=np.asarray(places, dtype=float),
         radii=np.asarray(diameters, dtype=float) / 2,
         indices=np.array([relative_index(e, n_host) for e in eps]),
-        direction=_TO_AXIS @ direction,
-        polarization=_TO_AXIS @ polarization,
+        direction=_TO_AXIS @ along,
+        polarization=_TO_AXIS @ across,
         exciting={},
         error=float("nan"),
     )

@@ -44,15 +44,16 @@ def legendre(
         up = np.sqrt((4 * n * n - 1) / (n * n - m * m))
         down = np.sqrt(((n - 1) ** 2 - m * m) / (4 * (n - 1) ** 2 - 1)) if n > m + 1 else 0.0
         q[n] = up * (cosine * q[n - 1] - (down * q[n - 2] if n > m + 1 else 0))
-    n = np.arange(order + 1)[:, None]
+    orders = np.arange(order + 1)[:, None]
     if m == 0:
         p, pi = q[:-1], np.zeros_like(q[:-1])
-        tau = np.sqrt(n * (n + 1)) * legendre(order, 1, cosine)[0]
+        tau = np.sqrt(orders * (orders + 1)) * legendre(order, 1, cosine)[0]
         return p, pi, tau
     # sin dP/dtheta = n e_(n+1) P_(n+1) - (n+1) e_n P_(n-1), e_n = sqrt((n^2-m^2)/(4n^2-1))
     k = np.arange(order + 2)[:, None]
     e = np.sqrt(np.maximum(k**2 - m * m, 0) / np.maximum(4.0 * k**2 - 1, 1))
-    tau = n * e[1:] * q[1:] - (n + 1) * e[:-1] * np.concatenate([np.zeros_like(q[:1]), q[:-2]])
+    below = np.concatenate([np.zeros_like(q[:1]), q[:-2]])
+    tau = orders * e[1:] * q[1:] - (orders + 1) * e[:-1] * below
     tau[:m] = 0
     p, pi = q[:-1] * sine, m * q[:-1]
     if degree < 0:
