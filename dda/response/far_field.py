@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-from ..lattice.solve import Polarization
+from ..lattice.solution import Polarization
 
 
 def scattering_amplitude(polarization: Polarization, directions: np.ndarray) -> np.ndarray:

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from ..lattice.solve import Polarization
+from ..lattice.solution import Polarization
 from .far_field import quadrature_order, scattering_amplitude, sphere_quadrature
 
 

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from .krylov import cocg
-from .system import System
+from .linear_system import System
 
 
 @dataclass(frozen=True, eq=False)
