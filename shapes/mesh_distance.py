@@ -11,7 +11,7 @@ import numpy as np
 from numba import njit, prange
 from numpy.typing import NDArray
 
-from shapes.mesh_fill import cut_by_plane, squared_distance
+from shapes.mesh_fill import cut_by_plane, nearest_offset
 
 LEAF_SIZE = 8
 
@@ -122,10 +122,10 @@ def _nearest(tree, points):
             left = 2 * node + 1
             if left >= tree.first.size:
                 for n in range(tree.first[node], tree.last[node]):
-                    distance = squared_distance(
+                    dx, dy, dz = nearest_offset(
                         tree.triangles[n], points[p, 0], points[p, 1], points[p, 2]
                     )
-                    best = min(best, distance)
+                    best = min(best, dx * dx + dy * dy + dz * dz)
                 continue
             # the nearer child last, so that it is looked at first
             nearer_left = _squared_to_box(tree, left, points[p]) < _squared_to_box(

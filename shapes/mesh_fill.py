@@ -5,7 +5,8 @@ crossing to the first sample above it, and a running sum over the column is the 
 Columns through an edge or a vertex need no special case: a triangle is first cut by the plane of
 constant x, then the cut by the line of constant y, and both cuts use a half-open rule on numbers
 that the neighbouring triangles share bit for bit. So the crossings of a closed mesh always add up
-to zero. Near the surface the exact distance to the triangles replaces the step from 0 to 1.
+to zero. Near the surface the exact distance to the triangles, and its direction, give the part of
+the sample that is filled.
 
 All coordinates in this file are in samples: sample (i, j, k) sits at x = i, y = j, z = k.
 """
@@ -16,8 +17,9 @@ import numpy as np
 from numba import njit, prange
 from numpy.typing import NDArray
 
-HALF_BAND = 0.5  # the filled fraction changes within half a sample of the surface
-_SQUARED_BAND = HALF_BAND * HALF_BAND
+from .plane import _cut
+
+BAND = 0.87  # half the diagonal of a sample: further from the surface it is full or empty
 
 
 def fill_mesh(triangles: NDArray, shape: tuple[int, ...]) -> NDArray:
@@ -26,15 +28,15 @@ def fill_mesh(triangles: NDArray, shape: tuple[int, ...]) -> NDArray:
     Parameters
     ----------
     triangles : (n, 3, 3) float64
-        Corners of an outward-oriented closed mesh, in samples. Triangles that touch none of the
-        planes x = 0 .. shape[0] - 1 within half a sample may be left out.
+        Corners of an outward-oriented closed mesh, in samples. Triangles that come nowhere within
+        a sample of the planes x = 0 .. shape[0] - 1 may be left out.
     shape : (nx, ny, nz)
         Number of samples.
 
     Returns
     -------
     (nx, ny, nz) float32
-        clip(1/2 + signed distance, 0, 1), the distance in samples and positive inside.
+        The part of the sample inside the plane that touches the surface at its nearest point.
 
     Examples
     --------
@@ -63,8 +65,8 @@ def winding_numbers(triangles: NDArray, shape: tuple[int, ...]) -> NDArray:
 def _triangles_by_plane(triangles: NDArray, planes: int) -> tuple[NDArray, NDArray]:
     """Which triangles come within the band of each plane x = i, as (start, items) lists."""
     x = triangles[:, :, 0]
-    low = np.clip(np.ceil(x.min(axis=1) - HALF_BAND), 0, planes).astype(np.int64)
-    high = np.clip(np.floor(x.max(axis=1) + HALF_BAND), -1, planes - 1).astype(np.int64)
+    low = np.clip(np.ceil(x.min(axis=1) - BAND), 0, planes).astype(np.int64)
+    high = np.clip(np.floor(x.max(axis=1) + BAND), -1, planes - 1).astype(np.int64)
     return _bucket(low, high, planes)
 
 
@@ -90,23 +92,26 @@ def _fill_planes(triangles, start, items, out):
     planes, ny, nz = out.shape
     for i in prange(planes):
         steps = np.zeros((ny, nz + 1), np.int16)
-        squared = np.full((ny, nz), np.float32(_SQUARED_BAND))
+        squared = np.full((ny, nz), np.float32(BAND * BAND))
+        normal = np.zeros((ny, nz, 3), np.float32)
         polygon = np.empty((9, 3))
         row = np.empty((9, 3))
         spare = np.empty((9, 3))
         for n in range(start[i], start[i + 1]):
             triangle = triangles[items[n]]
             _add_crossings(triangle, i, steps)
-            _lower_distances(triangle, i, squared, polygon, row, spare)
+            _lower_distances(triangle, i, squared, normal, polygon, row, spare)
         for j in range(ny):
             winding = 0
             for k in range(nz):
                 winding += steps[j, k]
+                if squared[j, k] >= np.float32(BAND * BAND):
+                    out[i, j, k] = 1.0 if winding > 0 else 0.0
+                    continue
                 distance = np.sqrt(squared[j, k])
-                if winding > 0:
-                    out[i, j, k] = np.float32(0.5) + distance
-                else:
-                    out[i, j, k] = np.float32(0.5) - distance
+                if winding <= 0:
+                    distance = -distance
+                out[i, j, k] = _cut(distance, normal[j, k, 0], normal[j, k, 1], normal[j, k, 2])
 
 
 @njit(parallel=True, cache=True, nogil=True)
@@ -176,13 +181,13 @@ def _add_crossings(triangle, x, steps):
 
 
 @njit(cache=True, nogil=True)
-def _lower_distances(triangle, i, squared, polygon, row, spare):
-    """Lower the squared distances of the samples of plane i that lie within the band."""
+def _lower_distances(triangle, i, squared, normal, polygon, row, spare):
+    """Lower the squared distances of the samples of plane i within the band, and set normals."""
     ny, nz = squared.shape
     for corner in range(3):
         for axis in range(3):
             polygon[corner, axis] = triangle[corner, axis]
-    size = _clip(polygon, 3, spare, 0, i - HALF_BAND, i + HALF_BAND)
+    size = _clip(polygon, 3, spare, 0, i - BAND, i + BAND)
     if size == 0:
         return
     y_low, y_high = _range(polygon, size, 1)
@@ -198,22 +203,29 @@ def _lower_distances(triangle, i, squared, polygon, row, spare):
             for corner in range(size):
                 for axis in range(3):
                     row[corner, axis] = polygon[corner, axis]
-            left = _clip(row, size, spare, 1, j - HALF_BAND, j + HALF_BAND)
+            left = _clip(row, size, spare, 1, j - BAND, j + BAND)
             if left == 0:
                 continue
             z_low, z_high = _range(row, left, 2)
             k_first, k_last = _samples(z_low, z_high, nz)
         for k in range(k_first, k_last + 1):
-            distance = squared_distance(triangle, i, j, k)
+            dx, dy, dz = nearest_offset(triangle, i, j, k)
+            distance = dx * dx + dy * dy + dz * dz
             if distance < squared[j, k]:
                 squared[j, k] = distance
+                if distance < 1e-12:
+                    dx, dy, dz = _face_normal(triangle)
+                length = np.sqrt(dx * dx + dy * dy + dz * dz)
+                if length > 0.0:
+                    normal[j, k, 0], normal[j, k, 1] = dx / length, dy / length
+                    normal[j, k, 2] = dz / length
 
 
 @njit(cache=True, nogil=True)
 def _samples(low, high, number):
     """First and last sample within the band of the interval."""
-    first = max(0, int(np.ceil(max(low - HALF_BAND, -1.0))))
-    last = min(number - 1, int(np.floor(min(high + HALF_BAND, float(number)))))
+    first = max(0, int(np.ceil(max(low - BAND, -1.0))))
+    last = min(number - 1, int(np.floor(min(high + BAND, float(number)))))
     return first, last
 
 
@@ -258,32 +270,49 @@ def _clip(polygon, size, spare, axis, low, high):
 
 
 @njit(cache=True, nogil=True)
-def squared_distance(triangle, x, y, z):
-    """Squared distance of a point from a triangle, by the region of the plane it projects into."""
+def nearest_offset(triangle, x, y, z):
+    """Vector from the nearest point of a triangle to the point (x, y, z)."""
     ax, ay, az = triangle[0, 0], triangle[0, 1], triangle[0, 2]
     abx, aby, abz = triangle[1, 0] - ax, triangle[1, 1] - ay, triangle[1, 2] - az
     acx, acy, acz = triangle[2, 0] - ax, triangle[2, 1] - ay, triangle[2, 2] - az
     px, py, pz = x - ax, y - ay, z - az
-    nx, ny, nz = aby * acz - abz * acy, abz * acx - abx * acz, abx * acy - aby * acx
+    nx, ny, nz = _face_normal(triangle)
     norm = nx * nx + ny * ny + nz * nz
     if norm > 0.0:
         # barycentric weights of the foot of the perpendicular
         wc = (aby * pz - abz * py) * nx + (abz * px - abx * pz) * ny + (abx * py - aby * px) * nz
         wb = (py * acz - pz * acy) * nx + (pz * acx - px * acz) * ny + (px * acy - py * acx) * nz
         if wc >= 0.0 and wb >= 0.0 and wb + wc <= norm:
-            height = px * nx + py * ny + pz * nz
-            return height * height / norm
-    first = _squared_to_edge(px, py, pz, abx, aby, abz)
-    second = _squared_to_edge(px, py, pz, acx, acy, acz)
-    third = _squared_to_edge(px - abx, py - aby, pz - abz, acx - abx, acy - aby, acz - abz)
-    return min(first, second, third)
+            height = (px * nx + py * ny + pz * nz) / norm
+            return height * nx, height * ny, height * nz
+    best = _offset_from_edge(px, py, pz, abx, aby, abz)
+    other = _offset_from_edge(px, py, pz, acx, acy, acz)
+    if _square(other) < _square(best):
+        best = other
+    other = _offset_from_edge(px - abx, py - aby, pz - abz, acx - abx, acy - aby, acz - abz)
+    if _square(other) < _square(best):
+        best = other
+    return best
 
 
 @njit(cache=True, nogil=True)
-def _squared_to_edge(px, py, pz, ex, ey, ez):
+def _face_normal(triangle):
+    """Normal of a triangle, twice its area long."""
+    ax, ay, az = triangle[0, 0], triangle[0, 1], triangle[0, 2]
+    abx, aby, abz = triangle[1, 0] - ax, triangle[1, 1] - ay, triangle[1, 2] - az
+    acx, acy, acz = triangle[2, 0] - ax, triangle[2, 1] - ay, triangle[2, 2] - az
+    return aby * acz - abz * acy, abz * acx - abx * acz, abx * acy - aby * acx
+
+
+@njit(cache=True, nogil=True)
+def _offset_from_edge(px, py, pz, ex, ey, ez):
     length = ex * ex + ey * ey + ez * ez
     part = 0.0
     if length > 0.0:
         part = min(1.0, max(0.0, (px * ex + py * ey + pz * ez) / length))
-    dx, dy, dz = px - part * ex, py - part * ey, pz - part * ez
-    return dx * dx + dy * dy + dz * dz
+    return px - part * ex, py - part * ey, pz - part * ez
+
+
+@njit(cache=True, nogil=True)
+def _square(vector):
+    return vector[0] * vector[0] + vector[1] * vector[1] + vector[2] * vector[2]

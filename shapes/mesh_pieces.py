@@ -15,6 +15,7 @@ from .mesh_repair import Surface, compact, count, pieces
 
 SAMPLES = 96  # across the largest extent, to look for overlaps
 FOLDED = 1e-3  # of the volume: more than this enclosed twice or inside out is refused
+SHEET = 0.01  # nm: a piece thinner than this, far below an atom, has no volume
 NEAR = 0.005  # of the largest extent: bodies this close are sampled one by one
 MOST_PIECES = 4000
 
@@ -79,13 +80,13 @@ def _with_volume(
             "its triangles do not share corners; export it as a closed solid"
         )
     volume = signed_volumes(centred, faces, label)
-    box = np.prod(np.ptp(centred, axis=0))
-    size = np.ptp(centred, axis=0).max() ** 3
-    flat = np.abs(volume) <= 1e-9 * max(box, 1e-6 * size)
+    a, b, c = (centred[faces[:, m]] for m in range(3))
+    area = np.bincount(label, np.linalg.norm(np.cross(b - a, c - a), axis=1) / 2)
+    flat = np.abs(volume) <= SHEET / 2 * area
     if flat.all():
         raise ShapeError(
-            f"{name} has zero volume ({np.abs(volume).sum():.2g} nm^3 in a box of {box:.3g} nm^3): "
-            "it is a sheet, or as much of it is turned inside out as not"
+            f"{name} has zero volume ({np.abs(volume).sum():.2g} nm^3 inside a surface of "
+            f"{area.sum():.3g} nm^2): it is a sheet, or as much of it is turned inside out as not"
         )
     if flat.any():
         notes.append(f"left out {count(int(flat.sum()), 'piece')} without a volume")
