@@ -43,6 +43,8 @@ def particle_mirrors(particle: Particle) -> Mirrors:
     """Whether the centre planes of the particle's bounds are mirror planes, materials included."""
     from .solid import Solid
 
+    if len(particle.parts) == 1 and particle.outline is None:
+        return particle.parts[0].body.mirrors()  # a mesh has a tolerance of its own
     low, high = particle.bounds
     if all(isinstance(p.body, Solid) for p in particle.parts):
         return _mirrors(_layers(particle), _probes(particle), low, high)
