@@ -19,6 +19,8 @@ from dda.report.colours import BACKGROUND, INK, material_colours, rgb
 
 #: Samples across the largest extent from which the surface is drawn.
 SURFACE_SAMPLES = 140
+#: Rounds of smoothing of the drawn surface.
+SMOOTHING = 12
 #: Edges of cells are drawn up to this many cells across.
 MOST_EDGES = 48
 #: Where the eye is, seen from the particle.
@@ -69,7 +71,7 @@ def draw_particle(
 
     cut = len(particle.materials) > 1 if cut is None else cut
     colours = material_colours(particle.materials)
-    view = view_of(particle)
+    view = view_of(cells)
     with drawing() as pyvista:
         surface = _render(pyvista, view, lambda p: _add_surface(p, particle, colours, cut))
         blocks = _render(pyvista, view, lambda p: _add_cells(p, cells, colours, cut))
@@ -93,16 +95,16 @@ def show_particle(particle: shapes.Particle, cells: shapes.Cells, title: str) ->
         plotter.show()
 
 
-def view_of(particle: shapes.Particle) -> View:
-    """Return a view from the standard side that holds the whole particle."""
-    low, high = particle.bounds
+def view_of(cells: shapes.Cells) -> View:
+    """Return a view from the standard side that holds all cells and fills the picture."""
     right = np.cross(UP, EYE)
     right /= np.linalg.norm(right)
     up = np.cross(EYE, right)
-    corners = np.array(np.meshgrid(*zip(low, high, strict=True))).reshape(3, -1).T
-    centre = (np.asarray(low) + np.asarray(high)) / 2
-    reach = max(np.abs((corners - centre) @ axis).max() for axis in (right, up))
-    return View(centre, 1.12 * float(reach), right, up)
+    places = cells.positions @ np.stack([right, up], axis=1)
+    low, high = places.min(axis=0) - cells.spacing, places.max(axis=0) + cells.spacing
+    depth = EYE * float((cells.positions @ EYE).mean())
+    centre = depth + np.stack([right, up], axis=1) @ ((low + high) / 2)
+    return View(centre, 0.5 * 1.18 * float((high - low).max()), right, up)
 
 
 @contextlib.contextmanager
@@ -151,8 +153,11 @@ def surface_meshes(
     meshes = {}
     for name, field in filled.items():
         image.point_data["filled"] = field.ravel(order="F")
-        meshes[name] = image.contour([0.5], scalars="filled")
-    return {name: mesh for name, mesh in meshes.items() if mesh.n_points}
+        mesh = image.contour([0.5], scalars="filled")
+        if mesh.n_points:
+            # Takes out the ripple of the samples, hardly more.
+            meshes[name] = mesh.smooth_taubin(n_iter=SMOOTHING, pass_band=0.2)
+    return meshes
 
 
 def _quarter(origin: NDArray, step: float, shape: tuple[int, ...], centre: NDArray) -> NDArray:
@@ -200,7 +205,7 @@ def cell_mesh(cells: shapes.Cells, colours: dict[str, str], cut: bool = False) -
     index = np.asarray(cells.index)
     share = np.asarray(cells.fraction)
     hues = np.array([rgb(colours[name]) for name in cells.materials])[share.argmax(axis=1)]
-    tone = (0.3 + 0.7 * np.clip(share.sum(axis=1), 0, 1))[:, None]
+    tone = (0.5 + 0.5 * np.clip(share.sum(axis=1), 0, 1))[:, None]
     tint = np.zeros((*cells.shape, 3))
     tint[tuple(index.T)] = tone * hues + (1 - tone)
     occupied = np.zeros(cells.shape, np.uint8)

@@ -45,6 +45,16 @@ class Table(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True)
 
 
+def _voxel(value: Any) -> Any:
+    edges = value if isinstance(value, list | tuple) else [value]
+    numbers = [e for e in edges if isinstance(e, int | float) and not isinstance(e, bool)]
+    if value is not None and (len(numbers) not in (1, 3) or len(numbers) != len(edges)):
+        raise ValueError("should be the edge of a voxel in nm, or its three edges [x, y, z]")
+    if any(not 0 < edge < math.inf for edge in numbers):
+        raise ValueError("the edge of a voxel should be above zero")
+    return value
+
+
 class ParticleTable(Table):
     """``[particle]``: a shape of the catalogue, a mesh file or a voxel image.
 
@@ -61,7 +71,7 @@ class ParticleTable(Table):
     materials: dict[str, str] | None = None
     unit: str | None = None
     scale: Positive | None = None
-    voxel: Positive | None = None
+    voxel: Annotated[Any, AfterValidator(_voxel)] = None
 
     @property
     def parameters(self) -> dict[str, Any]:

@@ -1,0 +1,237 @@
+"""The command ``dda``.
+
+Exit codes: 0 all is well; 1 a computation did not succeed (or not at every wavelength); 2 the
+input is wrong; 130 interrupted from the keyboard.
+"""
+
+from __future__ import annotations
+
+import argparse
+import os
+import sys
+from collections.abc import Callable, Sequence
+from importlib.metadata import version
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from dda.errors import ComputationError, InputError
+
+if TYPE_CHECKING:
+    from dda.report.folder import RunFolder
+    from dda.study.plan import Prepared
+
+OK, FAILED, WRONG_INPUT, INTERRUPTED = 0, 1, 2, 130
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command line and return its exit code.
+
+    Parameters
+    ----------
+    arguments : sequence of str, optional
+        Without the name of the program; ``sys.argv[1:]`` by default.
+    """
+    parser = _parser()
+    options = parser.parse_args(arguments)
+    if options.command is None:
+        parser.print_help()
+        return WRONG_INPUT
+    try:
+        return options.command(options)
+    except KeyboardInterrupt:
+        return _complain("interrupted", INTERRUPTED)
+    except BrokenPipeError:
+        # The reader of a pipe has gone; keep Python from complaining about it once more at exit.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return FAILED
+    except Exception as error:
+        if options.debug:
+            raise
+        return _report(error)
+
+
+def run(options: argparse.Namespace) -> int:
+    """``dda run``: check, solve wavelength by wavelength, write as it goes."""
+    from dda.report.folder import RunFolder
+    from dda.report.plan_text import study_lines
+    from dda.report.progress import working
+    from dda.report.table import spectrum_text
+    from dda.study.plan import prepare
+    from dda.study.reader import read_study
+
+    study = read_study(options.study)
+    folder = RunFolder(options.out or Path(options.study.stem), study)
+    folder.check()
+    with working("checking the study and making the cells"):
+        prepared = prepare(study)
+    print("\n".join(study_lines(prepared)), flush=True)
+    for figure in _cautions(prepared):
+        print(figure, file=sys.stderr)
+    interrupted = _solve(prepared, folder)
+    if folder.rows:
+        print()
+        print(spectrum_text(folder.rows))
+        print(f"\nwritten to {folder.path}: {', '.join(folder.files)}")
+    if interrupted:
+        kept = f"{len(folder.rows)} of {len(prepared.points)} wavelengths are kept"
+        return _complain(f"interrupted; {kept}", INTERRUPTED)
+    doubtful = [row for row in folder.rows if not row.converged]
+    for row in doubtful:
+        print(f"dda: {row.wavelength_nm:g} nm {row.status}: {row.message}", file=sys.stderr)
+    return FAILED if doubtful else OK
+
+
+def plan(options: argparse.Namespace) -> int:
+    """``dda plan``: say what would run."""
+    from dda.report.plan_text import plan_text
+    from dda.report.progress import working
+    from dda.study.plan import make_plan
+    from dda.study.reader import read_study
+
+    with working("checking the study and measuring"):
+        made = make_plan(read_study(options.study))
+    print(plan_text(made))
+    return OK
+
+
+def look(options: argparse.Namespace) -> int:
+    """``dda look``: draw the particle and its cells."""
+    from dda.report.progress import working
+    from dda.report.scene import draw_particle, show_particle
+    from dda.study.plan import prepare_shape
+    from dda.study.reader import read_study
+
+    study = read_study(options.study)
+    with working("making the cells"):
+        geometry = prepare_shape(study)
+        cells = geometry.cells
+    if options.window:
+        show_particle(geometry.particle, cells, study.name)
+        return OK
+    path = options.out or Path(f"{options.study.stem}.png")
+    with working("drawing"):
+        draw_particle(path, geometry.particle, cells, study.name)
+    print(f"written to {path}")
+    return OK
+
+
+def material(options: argparse.Namespace) -> int:
+    """``dda material``: list the names, or print and plot one material."""
+    from dda.materials import find, show
+
+    if options.name is None:
+        print(show.listing())
+        return OK
+    found = find(options.name)
+    print(show.describe(found, options.wavelengths))
+    path = options.out or Path(f"{Path(options.name).stem}.png")
+    show.plot(found, path, options.wavelengths)
+    print(f"\nwritten to {path}")
+    return OK
+
+
+def list_shapes(options: argparse.Namespace) -> int:
+    """``dda shapes``: list the catalogue, or draw one of its shapes."""
+    from dda.report.catalogue import catalogue_text, draw_shape, shape_text
+
+    if options.name is None:
+        print(catalogue_text())
+        return OK
+    print(shape_text(options.name))
+    path = options.out or Path(f"{options.name}.png")
+    draw_shape(options.name, path)
+    print(f"\nwritten to {path}")
+    return OK
+
+
+def _solve(prepared: Prepared, folder: RunFolder) -> bool:
+    """Solve all points; return whether the user interrupted. What is finished is on disk."""
+    from dda.report.progress import ProgressBar
+    from dda.study.runner import run_points
+
+    try:
+        with ProgressBar(len(prepared.points)) as bar:
+            for row in run_points(prepared.points, bar.watch, prepared.geometries):
+                folder.add(row)
+                bar.advance()
+    except KeyboardInterrupt:
+        return True
+    finally:
+        folder.close()
+    return False
+
+
+def _cautions(prepared: Prepared) -> list[str]:
+    from dda.study.plan import validity
+
+    return [
+        f"dda: caution: {figure.name} {figure.value}: {figure.remark}"
+        for figure in validity(prepared)
+        if not figure.good
+    ]
+
+
+def _report(error: Exception) -> int:
+    from shapes import ShapeError
+
+    if isinstance(error, InputError | ShapeError):
+        return _complain(str(error), WRONG_INPUT)
+    if isinstance(error, ComputationError):
+        return _complain(str(error), FAILED)
+    if isinstance(error, MemoryError):
+        return _complain("out of memory; use larger cells", FAILED)
+    return _complain(
+        f"a mistake in the program, not in your study: {type(error).__name__}: {error}\n"
+        "run it again with `dda --debug ...` to see where, and please report it",
+        FAILED,
+    )
+
+
+def _complain(message: str, code: int) -> int:
+    print(f"dda: {message}", file=sys.stderr)
+    return code
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="dda",
+        description="Predict how nanoparticles absorb and scatter light.",
+        epilog="A study is a TOML file; the README shows one.",
+    )
+    parser.add_argument("--version", action="version", version=f"motelight {version('motelight')}")
+    parser.add_argument("--debug", action="store_true", help="show where the program failed")
+    parser.set_defaults(command=None)
+    commands = parser.add_subparsers(title="commands", metavar="COMMAND")
+
+    def add(name: str, command: Callable[[argparse.Namespace], int], text: str):
+        sub = commands.add_parser(name, help=text, description=text)
+        sub.set_defaults(command=command)
+        return sub
+
+    sub = add("run", run, "compute the spectrum of a study")
+    sub.add_argument("study", type=Path, metavar="STUDY.toml")
+    sub.add_argument("--out", type=Path, metavar="DIR", help="default: named after the study")
+
+    sub = add("plan", plan, "say what a study would run, and how long; solve nothing")
+    sub.add_argument("study", type=Path, metavar="STUDY.toml")
+
+    sub = add("look", look, "draw a study's particle and its cells")
+    sub.add_argument("study", type=Path, metavar="STUDY.toml")
+    sub.add_argument("--out", type=Path, metavar="PNG", help="default: named after the study")
+    sub.add_argument("--window", action="store_true", help="open a window instead")
+
+    sub = add("material", material, "print and plot a material; without a name, list the names")
+    sub.add_argument("name", nargs="?", metavar="NAME", help="a name, a page or a CSV file")
+    sub.add_argument("--out", type=Path, metavar="PNG", help="default: named after the material")
+    sub.add_argument(
+        "--wavelengths", type=float, nargs="+", metavar="NM", help="where, in nm (vacuum)"
+    )
+
+    sub = add("shapes", list_shapes, "list the shapes; with a name, describe and draw one")
+    sub.add_argument("name", nargs="?", metavar="NAME")
+    sub.add_argument("--out", type=Path, metavar="PNG", help="default: named after the shape")
+    return parser
+
+
+if __name__ == "__main__":
+    sys.exit(main())

@@ -1,0 +1,99 @@
+"""A plan in words."""
+
+from __future__ import annotations
+
+import textwrap
+
+from dda.report.progress import duration_text
+from dda.study.geometry import Geometry
+from dda.study.memory import bytes_text
+from dda.study.plan import Plan, Prepared
+
+#: Characters in a printed line.
+LINE = 100
+
+
+def plan_text(plan: Plan) -> str:
+    """Return what ``dda plan`` prints."""
+    prepared = plan.prepared
+    low, high = plan.cost.seconds_between
+    lines = [*study_lines(prepared), ""]
+    lines += _aligned(
+        [
+            (
+                "memory",
+                f"{bytes_text(plan.memory)} at the peak, {bytes_text(plan.available)} available",
+            ),
+            (
+                "time",
+                f"about {duration_text(plan.cost.seconds)}, between {duration_text(low)} and "
+                f"{duration_text(high)}",
+            ),
+            (
+                "",
+                f"(a product takes {1e3 * plan.cost.product_seconds:.3g} ms here, measured now; "
+                f"{sum(plan.cost.products):.0f} expected, known to a factor of two)",
+            ),
+        ]
+    )
+    lines += ["", "validity"]
+    lines += _aligned(
+        [
+            (f"  {f.name}", f"{f.value}: {'' if f.good else 'CAUTION, '}{f.remark}")
+            for f in plan.figures
+        ]
+    )
+    return "\n".join(lines)
+
+
+def study_lines(prepared: Prepared) -> list[str]:
+    """Return the study, its particle and its cells in a few lines."""
+    points, cells = prepared.points, prepared.cells
+    first, last = points[0].wavelength, points[-1].wavelength
+    span = f"{first:g} nm" if len(points) == 1 else f"{first:g} to {last:g} nm"
+    sources = [(name, material.source) for name, material in prepared.media.particle.items()] + [
+        (f"host {prepared.media.host.name}", prepared.media.host.source)
+    ]
+    nx, ny, nz = cells.shape
+    return [
+        prepared.study.name,
+        *_aligned(
+            [
+                ("particle", extent_text(prepared.geometry)),
+                *sources,
+                ("wavelengths", f"{len(points)}, {span}"),
+                ("polarization", _polarization(prepared)),
+                ("cells", f"{cells.n} of {cells.spacing:.4g} nm in a box of {nx} x {ny} x {nz}"),
+            ]
+        ),
+    ]
+
+
+def extent_text(geometry: Geometry) -> str:
+    """Return a particle's name and its extent along x, y and z."""
+    x, y, z = geometry.extent
+    return f"{geometry.particle.name}, {x:.4g} x {y:.4g} x {z:.4g} nm"
+
+
+def _polarization(prepared: Prepared) -> str:
+    point = prepared.points[0]
+    if isinstance(point.polarization, str):
+        kind = point.polarization
+    else:
+        kind = "[" + ", ".join(_number(c) for c in point.polarization) + "]"
+    direction = ", ".join(f"{c:g}" for c in point.direction)
+    return f"{kind}, light along [{direction}]"
+
+
+def _number(value: complex) -> str:
+    return f"{value.real:g}" if value.imag == 0 else f"[{value.real:g}, {value.imag:g}]"
+
+
+def _aligned(pairs: list[tuple[str, str]]) -> list[str]:
+    """Return lines with the names in a column of their own and long values wrapped beside it."""
+    width = max(len(name) for name, _ in pairs) + 2
+    lines = []
+    for name, value in pairs:
+        first, *others = textwrap.wrap(value, LINE - width) or [""]
+        lines += [f"{name:<{width}}{first}", *(" " * width + other for other in others)]
+    return lines

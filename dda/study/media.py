@@ -1,0 +1,101 @@
+"""The materials of a point: what its names stand for, checked where they are used."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+
+import dda.materials
+from dda.errors import InputError
+from dda.materials import Material
+from dda.study.mistakes import Mistake
+from dda.study.points import Point
+
+#: Keys of a material's table whose value may be the name of another material.
+_REFERRING = ("host", "inclusion", "metal", "material")
+
+
+@dataclass(frozen=True)
+class Media:
+    """The host and the particle's materials."""
+
+    host: Material
+    particle: Mapping[str, Material]
+
+    def relative_index(self, wavelength: float) -> dict[str, complex]:
+        """Return m = n_material / n_host of every material at a vacuum wavelength, nm."""
+        at = np.array([wavelength])
+        host = float(np.real(self.host.index(at)[0]))
+        return {name: complex(m.index(at)[0]) / host for name, m in self.particle.items()}
+
+
+def media_of(point: Point, names: Iterable[str]) -> Media:
+    """Return the materials that a point uses.
+
+    Parameters
+    ----------
+    point : Point
+    names : iterable of str
+        The particle's materials.
+
+    Raises
+    ------
+    Mistake
+        A material is not known or its data are unusable.
+    """
+    particle = {name: _find(point, name, ("particle", "material")) for name in names}
+    if point.host.index is not None:
+        return Media(dda.materials.find(point.host.index), particle)
+    assert point.host.material is not None
+    return Media(_find(point, point.host.material, ("host", "material")), particle)
+
+
+def check_media(media: Media, wavelengths: Sequence[float]) -> None:
+    """Refuse wavelengths at which a material is not known, and hosts that absorb.
+
+    Raises
+    ------
+    Mistake
+        With the key of the material at fault.
+    """
+    at = np.asarray(wavelengths, float)
+    try:
+        dda.materials.require_transparent(media.host, at)
+    except InputError as error:
+        raise Mistake(("host",), str(error)) from None
+    for material in media.particle.values():
+        try:
+            material.index(at)
+        except InputError as error:
+            raise Mistake(("light", "wavelengths"), str(error)) from None
+
+
+def _find(point: Point, name: str, key: tuple[str, ...]) -> Material:
+    own = point.materials.get(name)
+    if own is not None:
+        key = ("materials", name)
+    try:
+        found = dda.materials.find(_spelled_out(name, point.materials), point.folder)
+    except InputError as error:
+        raise Mistake(key, str(error)) from None
+    return found if own is None or "name" in own else replace(found, name=name)
+
+
+def _spelled_out(
+    specification: Any, own: Mapping[str, Mapping[str, Any]], within: tuple[str, ...] = ()
+) -> Any:
+    """Put the user's own materials in the place of their names, also inside mixtures."""
+    if isinstance(specification, Mapping):
+        return {
+            key: _spelled_out(value, own, within) if key in _REFERRING else value
+            for key, value in specification.items()
+        }
+    if not isinstance(specification, str) or specification not in own:
+        return specification
+    if specification in within:
+        # [materials.gold] material = "gold" means the gold that is known without the study
+        return specification
+    return _spelled_out(own[specification], own, (*within, specification))

@@ -1,0 +1,108 @@
+"""From the study's ``[particle]`` to a particle."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any
+
+import shapes
+from dda.study.mistakes import Mistake
+from dda.study.schema import ParticleTable
+from shapes import catalogue
+
+
+def build_particle(table: ParticleTable, folder: Path) -> shapes.Particle:
+    """Return the particle that a table describes.
+
+    Parameters
+    ----------
+    table : ParticleTable
+    folder : Path
+        Where relative paths start.
+
+    Raises
+    ------
+    Mistake
+        With the key at fault under ``particle``.
+
+    Examples
+    --------
+    >>> table = ParticleTable(shape="sphere", diameter=20, material="gold")
+    >>> build_particle(table, Path()).materials
+    ('gold',)
+    """
+    build = {"shape": _from_catalogue, "mesh": _from_mesh, "voxels": _from_voxels}[table.source]
+    try:
+        return build(table, folder)
+    except shapes.ShapeError as error:
+        key = error.where or (table.source,)
+        raise Mistake(("particle", *key), str(error)) from None
+
+
+def notes_of(particle: shapes.Particle) -> tuple[str, ...]:
+    """Return what the user should know of how a particle came about, such as a mended mesh."""
+    notes = [note for part in particle.parts for note in getattr(part.body, "notes", ())]
+    return tuple(dict.fromkeys(notes))
+
+
+def _from_catalogue(table: ParticleTable, folder: Path) -> shapes.Particle:
+    assert table.shape is not None
+    entry = catalogue.find(table.shape)
+    material = table.material or _inner_material(entry, table.parameters)
+    if material is None:
+        raise Mistake(("particle", "material"), 'this key is missing, for example "gold"')
+    return catalogue.build(table.shape, table.parameters, material)
+
+
+def _inner_material(entry: catalogue.Entry, parameters: Mapping[str, Any]) -> str | None:
+    """Return the material named deeper in the table, where the particle itself names none."""
+    for name, parameter in entry.parameters.items():
+        value = parameters.get(name)
+        if parameter.kind == "particle" and isinstance(value, Mapping):
+            inner = value.get("material")
+            if isinstance(inner, str):
+                return inner
+        if parameter.kind == "names" and isinstance(value, list) and value:
+            return str(value[0])
+    return None
+
+
+def _from_mesh(table: ParticleTable, folder: Path) -> shapes.Particle:
+    assert table.mesh is not None
+    return shapes.from_mesh(
+        _file(folder, table.mesh, "mesh"),
+        unit=table.unit or "nm",
+        scale=table.scale or 1.0,
+        material=_required(table.material, "material", 'the name of a material, such as "gold"'),
+    )
+
+
+def _from_voxels(table: ParticleTable, folder: Path) -> shapes.Particle:
+    assert table.voxels is not None
+    materials = table.materials
+    if materials is None and table.material is not None:
+        materials = {"1": table.material}
+    return shapes.from_image(
+        _file(folder, table.voxels, "voxels"),
+        voxel=_required(table.voxel, "voxel", "the edge of a voxel in nm"),
+        materials=_required(
+            materials, "materials", 'the material of each label, such as {1 = "gold"}'
+        ),
+    )
+
+
+def _required(value: Any, key: str, what: str) -> Any:
+    if value is None:
+        raise Mistake(("particle", key), f"this key is missing: {what}")
+    return value
+
+
+def _file(folder: Path, name: str, key: str) -> Path:
+    path = folder / name
+    if not path.is_file():
+        raise Mistake(
+            ("particle", key),
+            f"there is no file {path}; relative paths start at the study's folder",
+        )
+    return path
