@@ -1,1 +1,31 @@
-"""Discrete-dipole predictions for plasmonic nanoparticles."""
+"""Discrete-dipole predictions for plasmonic nanoparticles.
+
+The main job reads like the method, a line each:
+
+>>> import dda, shapes
+>>> particle = shapes.sphere(diameter=40, material="gold")
+>>> cells = shapes.voxelize(particle, cells=12)
+>>> system = dda.system(cells, wavelength=530, host="water")
+>>> polarization = dda.solve(system, dda.plane_wave())
+>>> response = dda.cross_sections(polarization)
+>>> 2900 < response.c_ext < 3200  # nm^2
+True
+"""
+
+from .errors import ComputationError, InputError
+from .lattice import Polarization, System, solve, system
+from .light import PlaneWave, plane_wave
+from .response import CrossSections, cross_sections
+
+__all__ = [
+    "ComputationError",
+    "CrossSections",
+    "InputError",
+    "PlaneWave",
+    "Polarization",
+    "System",
+    "cross_sections",
+    "plane_wave",
+    "solve",
+    "system",
+]

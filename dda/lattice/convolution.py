@@ -61,9 +61,7 @@ class Convolution:
         bytes_per_plane = 3 * ly * lz * self.dtype.itemsize
         self._group = max(1, min(8, _PLANE_BYTES // bytes_per_plane))
         self._crew = min(self.workers.threads, max(1, lx // (2 * self._group)))
-        self._planes = [
-            np.empty((self._group, 3, ly, lz), self.dtype) for _ in range(self._crew)
-        ]
+        self._planes = [np.empty((self._group, 3, ly, lz), self.dtype) for _ in range(self._crew)]
 
     def __call__(self, index: np.ndarray, p: np.ndarray, out: np.ndarray) -> np.ndarray:
         """Fields at the cells `index` of the dipoles `p` there.

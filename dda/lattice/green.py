@@ -169,6 +169,4 @@ def tensor(table: RadialTable, displacements: np.ndarray) -> np.ndarray:
     m = (v**2).sum(-1)
     unit = v / np.sqrt(np.maximum(m, 1))[..., None]
     dyad = unit[..., :, None] * unit[..., None, :]
-    return (
-        table.isotropic[m][..., None, None] * np.eye(3) + table.dyadic[m][..., None, None] * dyad
-    )
+    return table.isotropic[m][..., None, None] * np.eye(3) + table.dyadic[m][..., None, None] * dyad

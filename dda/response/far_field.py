@@ -33,9 +33,7 @@ def scattering_amplitude(polarization: Polarization, directions: np.ndarray) -> 
     system = polarization.system
     n = np.ascontiguousarray(directions, float)
     step = system.k * system.cells.spacing
-    total = _radiated(
-        system.index, np.ascontiguousarray(polarization.p, np.complex128), n, step
-    )
+    total = _radiated(system.index, np.ascontiguousarray(polarization.p, np.complex128), n, step)
     total *= np.exp(-1j * system.k * (n @ system.cells.origin))[:, None]
     return system.k**2 * (total - n * (n * total).sum(axis=1, keepdims=True))
 
