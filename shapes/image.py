@@ -3,28 +3,20 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
-from functools import cached_property
+from dataclasses import replace
 from os import PathLike
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from .body import Bounds, FloatArray, Mirrors, Part, Particle, SampleGrid, ShapeError
-from .image_field import (
-    distance_field,
-    matched_volume,
-    overlap_fraction,
-    sample_distance,
-    sample_fraction,
-    surface_points,
-)
+from .body import FloatArray, Part, Particle, ShapeError
+from .image_body import LabelledBody, VoxelBody
+from .image_field import distance_field, matched_volume
 
 SMOOTH = 1.0  # voxels
 LEAST_SMOOTH = 0.7  # voxels: a narrower Gaussian is not resolved by the voxels
 SMALLEST, LARGEST = 0.5, 1e5  # nm
-MIRROR_TOLERANCE = 1e-3  # voxels
 
 
 def from_image(
@@ -85,148 +77,6 @@ def from_image(
     return _from_labels(image, edges, wanted, SMOOTH if smooth is None else smooth, notes, name)
 
 
-@dataclass(frozen=True, eq=False)
-class VoxelBody:
-    """A body given by values on voxels; make one with `from_image`.
-
-    Attributes
-    ----------
-    field : (nx, ny, nz) float32 array
-        Signed distance (nm, positive inside) or filled fraction at the voxel centres.
-    voxel : (3,) array
-        Edges of a voxel, nm.
-    offset : (3,) array
-        Centre of voxel (0, 0, 0), nm.
-    counted : float
-        Volume of the voxels, nm^3.
-    is_distance : bool
-        What `field` holds.
-    covered_by : tuple of VoxelBody
-        Bodies of the same image that are laid over this one. Where they meet it is given as its
-        share of what they leave, so that the shares come out right once they are laid over it.
-    turn : (3, 3) array
-        Rotation or reflection of the image.
-    notes : tuple of str
-        What was found, for the user.
-    """
-
-    field: NDArray[np.float32]
-    voxel: FloatArray
-    offset: FloatArray
-    counted: float
-    is_distance: bool = True
-    covered_by: tuple[VoxelBody, ...] = ()
-    turn: FloatArray = None  # type: ignore[assignment]
-    notes: tuple[str, ...] = ()
-
-    exact = frozenset[str]()
-
-    def __post_init__(self) -> None:
-        if self.turn is None:
-            object.__setattr__(self, "turn", np.eye(3))
-
-    @cached_property
-    def bounds(self) -> Bounds:
-        """Lower and upper corner of the bounding box, nm."""
-        if self.is_distance:
-            points = surface_points(self.field, 0.0)
-        else:  # the boxes of all voxels that hold anything
-            index = np.argwhere(self.field > 0)
-            low, high = index.min(axis=0) - 0.5, index.max(axis=0) + 0.5
-            points = np.stack(np.meshgrid(*zip(low, high, strict=True)), axis=-1).reshape(-1, 3)
-        places = self.offset + (points * self.voxel) @ self.turn.T
-        return places.min(axis=0), places.max(axis=0)
-
-    def volume(self) -> float:
-        """Volume of the voxels, nm^3."""
-        return self.counted
-
-    def area(self) -> float:
-        """Surface area, nm^2, measured on a fine grid."""
-        from .measure import measured_area
-
-        return measured_area(self)
-
-    def mirrors(self) -> Mirrors:
-        """Whether the centre planes of the bounds are mirror planes."""
-        order = np.abs(self.turn).argmax(axis=1)
-        if not np.allclose(np.abs(self.turn)[np.arange(3), order], 1.0, atol=1e-9):
-            return False, False, False
-        field = self._tight
-        limit = MIRROR_TOLERANCE * (float(self.voxel.min()) if self.is_distance else 1.0)
-        own = [bool(np.abs(field - np.flip(field, m)).max() <= limit) for m in range(3)]
-        return own[order[0]], own[order[1]], own[order[2]]
-
-    def fill(self, grid: SampleGrid) -> NDArray[np.float32]:
-        """Filled fraction of every sample voxel, (grid.shape) float32."""
-        out = np.zeros(grid.shape, np.float32)
-        window = grid.window(self.bounds)
-        if window is None:
-            return out
-        part = grid.cut(window)
-        filled = self._own_fill(part)
-        if self.covered_by:
-            left = 1.0 - sum(body._own_fill(part) for body in self.covered_by)
-            share = np.divide(filled, left, out=np.zeros_like(filled), where=left > 1e-6)
-            filled = np.minimum(share, 1.0)
-        out[window] = filled
-        return out
-
-    def moved(self, offset: ArrayLike) -> VoxelBody:
-        """The body moved by `offset`, (3,) nm."""
-        shift = np.asarray(offset, dtype=float).reshape(3)
-        covered = tuple(body.moved(shift) for body in self.covered_by)
-        return replace(self, offset=self.offset + shift, covered_by=covered)
-
-    def rotated(self, angle: float, axis: ArrayLike = (0, 0, 1)) -> VoxelBody:
-        """The body turned by `angle` degrees about `axis` through the origin."""
-        from .combine import rotation_matrix
-
-        return self._turned(rotation_matrix(angle, axis))
-
-    def mirrored(self, axis: int) -> VoxelBody:
-        """The mirror image in the plane through the origin across x (0), y (1) or z (2)."""
-        signs = np.ones(3)
-        signs[axis] = -1.0
-        return self._turned(np.diag(signs))
-
-    def scaled(self, factor: float) -> VoxelBody:
-        """The body made `factor` times larger about the origin."""
-        if not (np.isfinite(factor) and factor > 0):
-            raise ShapeError(f"scale factor {factor!r} must be a number greater than 0")
-        return replace(
-            self,
-            field=self.field * np.float32(factor) if self.is_distance else self.field,
-            voxel=self.voxel * factor,
-            offset=self.offset * factor,
-            counted=self.counted * factor**3,
-            covered_by=tuple(body.scaled(factor) for body in self.covered_by),
-        )
-
-    def _turned(self, matrix: FloatArray) -> VoxelBody:
-        covered = tuple(body._turned(matrix) for body in self.covered_by)
-        turn, offset = matrix @ self.turn, matrix @ self.offset
-        return replace(self, turn=turn, offset=offset, covered_by=covered)
-
-    def _own_fill(self, grid: SampleGrid) -> NDArray[np.float32]:
-        to_voxels = self.turn.T / self.voxel[:, None]
-        start = to_voxels @ (grid.origin - self.offset)
-        stride = to_voxels * grid.step
-        parts = max(1, int(np.ceil(grid.step / self.voxel.min() - 1e-6)))
-        if self.is_distance:
-            return sample_distance(self.field, start, stride, grid.shape, grid.step, parts)
-        if np.array_equal(self.turn, np.eye(3)):
-            return overlap_fraction(self.field, start, np.diag(stride), grid.shape)
-        return sample_fraction(self.field, start, stride, grid.shape, parts + 1)
-
-    @cached_property
-    def _tight(self) -> NDArray[np.float32]:
-        """The field without the planes at its ends that hold nothing."""
-        index = np.argwhere(self.field > 0)
-        low, high = index.min(axis=0), index.max(axis=0) + 1
-        return self.field[tuple(slice(a, b) for a, b in zip(low, high, strict=True))]
-
-
 def _from_labels(
     image: NDArray,
     voxel: FloatArray,
@@ -235,52 +85,63 @@ def _from_labels(
     notes: list[str],
     name: str,
 ) -> Particle:
-    anything = np.isin(image, list(materials))
-    centre = voxel * (np.array(image.shape) - 1) / 2
-    whole, thin, shift = _label_body(anything, voxel, centre, smooth, None)
-    bodies = [whole]
-    if len(materials) > 1:
-        bodies = []
-        for label in materials:
-            body, lost, _ = _label_body(image == label, voxel, centre, smooth, shift)
-            bodies.append(body)
-            thin += lost
+    image = np.where(np.isin(image, list(materials)), image, 0)
+    image, offset = _cropped(image, voxel, margin=int(np.ceil(5 * smooth)) + 2)
+    labels = list(materials)
+    whole, fields, thin = _fields(image, labels, voxel, smooth)
     if thin:
         notes.append(
             f"{thin} voxels lie in features too thin for a smoothing of {smooth:g} voxels: "
             "kept, but their thickness is uncertain"
         )
-    size = " x ".join(f"{edge:.4g}" for edge in whole.bounds[1] - whole.bounds[0])
-    told = (f"size {size} nm", *notes)
+    volumes = [float((image == label).sum() * voxel.prod()) for label in labels]
+    is_distance = smooth > 0
+    all_of_it = VoxelBody(whole, voxel, offset, sum(volumes), is_distance)
+    low, high = all_of_it.bounds
+    size = " x ".join(f"{edge:.4g}" for edge in high - low)
+    all_of_it = replace(all_of_it, notes=(f"size {size} nm", *notes))
+    names = list(materials.values())
+    if len(labels) == 1:
+        return Particle((Part(all_of_it, names[0]),), name=name)
+    members = tuple(
+        VoxelBody(values, voxel, offset, volume, is_distance)
+        for values, volume in zip(fields, volumes, strict=True)
+    )
     parts = [
-        Part(replace(body, covered_by=tuple(bodies[n + 1 :]), notes=told), material)
-        for n, (body, material) in enumerate(zip(bodies, materials.values(), strict=True))
+        Part(LabelledBody(all_of_it, members, rank), material)
+        for rank, material in enumerate(names)
     ]
-    outline = replace(whole, notes=told) if len(parts) > 1 else None
-    return Particle(tuple(parts), name=name, outline=outline)
+    return Particle(tuple(parts), name=name, outline=all_of_it)
 
 
-def _label_body(
-    inside: NDArray[np.bool_],
-    voxel: FloatArray,
-    centre: FloatArray,
-    smooth: float,
-    shift: float | None,
-) -> tuple[VoxelBody, int, float]:
-    """Body of a set of voxels, its voxels in thin features, and the shift that kept its volume."""
-    index = np.argwhere(inside)
+def _cropped(image: NDArray, voxel: FloatArray, margin: int) -> tuple[NDArray, FloatArray]:
+    """The box of voxels that are not host with an empty margin, and where its first voxel is."""
+    index = np.argwhere(image != 0)
     low, high = index.min(axis=0), index.max(axis=0) + 1
-    margin = int(np.ceil(5 * smooth)) + 2
-    crop = inside[tuple(slice(a, b) for a, b in zip(low, high, strict=True))]
-    padded = np.pad(crop, margin)
-    offset = voxel * (low - margin) - centre
-    volume = float(len(index) * voxel.prod())
+    crop = image[tuple(slice(a, b) for a, b in zip(low, high, strict=True))]
+    offset = voxel * (low - margin - (np.array(image.shape) - 1) / 2)
+    return np.pad(crop, margin), offset
+
+
+def _fields(
+    image: NDArray, labels: list[int], voxel: FloatArray, smooth: float
+) -> tuple[NDArray, list[NDArray], int]:
+    """Values for all labels together and for each, and the number of voxels in thin features."""
     if smooth == 0:
-        return VoxelBody(padded.astype(np.float32), voxel, offset, volume, False), 0, 0.0
-    distance, lost = distance_field(padded, voxel, smooth)
-    if shift is None:
-        shift = matched_volume(distance, voxel, volume)
-    return VoxelBody(distance + np.float32(shift), voxel, offset, volume), lost, shift
+        fractions = [(image == label).astype(np.float32) for label in labels]
+        return (image != 0).astype(np.float32), fractions, 0
+    whole, thin = distance_field(image != 0, voxel, smooth)
+    volume = float((image != 0).sum() * voxel.prod())
+    whole += np.float32(matched_volume(whole, voxel, volume))
+    if len(labels) == 1:
+        return whole, [whole], thin
+    found = [distance_field(image == label, voxel, smooth) for label in labels]
+    fields = []
+    for n, (own, _) in enumerate(found):
+        # halfway to the strongest rival, and no further out than the whole
+        rival = np.max([other for m, (other, _) in enumerate(found) if m != n], axis=0)
+        fields.append(np.minimum(whole, (own - rival) / 2))
+    return whole, fields, thin + sum(lost for _, lost in found)
 
 
 def _from_fractions(

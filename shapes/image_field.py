@@ -57,11 +57,12 @@ def distance_field(inside: NDArray[np.bool_], voxel: NDArray, smooth: float) -> 
     reduced = 2.0 * once - np.sqrt(2.0) * twice  # in standard deviations
     reduced = np.clip(reduced, -SATURATION, SATURATION)
     distance = reduced * smooth * _voxel_along_normal(once, voxel)
-    kept = CONFLICT * float(voxel.min())
-    lost = inside & (distance < -kept)
-    filled_in = ~inside & (distance > kept)
-    distance[lost] = kept
-    distance[filled_in] = -kept
+    limit = CONFLICT * float(voxel.min())
+    lost = inside & (distance < -limit)
+    filled_in = ~inside & (distance > limit)
+    # half a voxel: as in the middle of a sheet or gap of one voxel
+    distance[lost] = voxel.min() / 2
+    distance[filled_in] = -voxel.min() / 2
     return distance.astype(np.float32), int(lost.sum() + filled_in.sum())
 
 
