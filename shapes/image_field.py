@@ -50,10 +50,8 @@ def distance_field(inside: NDArray[np.bool_], voxel: NDArray, smooth: float) -> 
     ([-1.100000023841858, 1.100000023841858], 0)
     """
     indicator = inside.astype(np.float32)
-    low, high = ndtr(-REACH), ndtr(REACH)
-    once = ndtri(np.clip(gaussian_filter(indicator, smooth, truncate=5.0), low, high))
-    spread = np.sqrt(2.0) * smooth
-    twice = ndtri(np.clip(gaussian_filter(indicator, spread, truncate=5.0), low, high))
+    once = _standard_distance(indicator, smooth)
+    twice = _standard_distance(indicator, np.sqrt(2.0) * smooth)
     reduced = 2.0 * once - np.sqrt(2.0) * twice  # in standard deviations
     reduced = np.clip(reduced, -SATURATION, SATURATION)
     distance = reduced * smooth * _voxel_along_normal(once, voxel)
@@ -64,6 +62,15 @@ def distance_field(inside: NDArray[np.bool_], voxel: NDArray, smooth: float) -> 
     distance[lost] = voxel.min() / 2
     distance[filled_in] = -voxel.min() / 2
     return distance.astype(np.float32), int(lost.sum() + filled_in.sum())
+
+
+def _standard_distance(indicator: NDArray, spread: float) -> NDArray:
+    """Distance from the surface of the smoothed indicator in standard deviations, limited."""
+    smoothed = gaussian_filter(indicator, spread, truncate=4.0)
+    distance = np.where(smoothed > 0.5, np.float32(REACH), np.float32(-REACH))
+    near = (smoothed > ndtr(-REACH)) & (smoothed < ndtr(REACH))
+    distance[near] = ndtri(smoothed[near])
+    return distance
 
 
 def _voxel_along_normal(values: NDArray, voxel: NDArray) -> NDArray | float:
