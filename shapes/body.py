@@ -20,7 +20,14 @@ Mirrors = tuple[bool, bool, bool]
 
 
 class ShapeError(ValueError):
-    """A shape that cannot be built or sampled; the message says what would be right."""
+    """A shape that cannot be built or sampled; the message says what would be right.
+
+    `where` names the parameter at fault, outermost first, such as ("of", "diameter").
+    """
+
+    def __init__(self, message: str, where: tuple[str, ...] = ()) -> None:
+        super().__init__(message)
+        self.where = where
 
 
 @dataclass(frozen=True, eq=False)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 
 import numpy as np
@@ -61,7 +61,7 @@ class Cells:
     centre_material: NDArray[np.int16]
     window_width: float
     volume: float
-    gradient: FloatArray
+    gradient: FloatArray = field(default_factory=lambda: np.zeros((0, 0, 3)))
     thinnest: float | None = None
     gap: float | None = None
 

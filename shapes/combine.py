@@ -87,8 +87,13 @@ class Union(Solid):
         out = np.zeros(grid.shape, dtype=np.float32)
         for member in self.members:
             window = grid.window(member.bounds)
-            if window is not None:
-                np.maximum(out[window], member.fill(grid.cut(window)), out=out[window])
+            if window is None:
+                continue
+            filled = member.fill(grid.cut(window))
+            if self.disjoint:  # two that touch share a voxel without overlapping in it
+                np.minimum(out[window] + filled, 1.0, out=out[window])
+            else:
+                np.maximum(out[window], filled, out=out[window])
         return out
 
 
@@ -291,7 +296,8 @@ class Turned(Solid):
 
     def fill(self, grid: SampleGrid) -> NDArray[np.float32]:
         if isinstance(self.base, Union):  # turn the members, so that each is sampled where it is
-            return Union(tuple(Turned(m, self.matrix) for m in self.base.members)).fill(grid)
+            turned = tuple(Turned(m, self.matrix) for m in self.base.members)
+            return Union(turned, self.base.disjoint).fill(grid)
         if isinstance(self.base, Moved):
             return Moved(Turned(self.base.base, self.matrix), self.matrix @ self.base.offset).fill(
                 grid

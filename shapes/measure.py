@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
+from weakref import WeakKeyDictionary
 
 import numpy as np
 from numpy.typing import NDArray
@@ -11,6 +12,9 @@ from .body import Body, Particle, SampleGrid
 
 VOLUME_SAMPLES = 160  # along the largest extent
 SLAB = 2_000_000  # samples held at once
+
+# bodies never change, so what has been measured once stays true as long as they live
+_known: WeakKeyDictionary[Body | Particle, dict[tuple[str, int], float]] = WeakKeyDictionary()
 
 
 def measured_volume(thing: Body | Particle, samples: int = VOLUME_SAMPLES) -> float:
@@ -29,6 +33,10 @@ def measured_volume(thing: Body | Particle, samples: int = VOLUME_SAMPLES) -> fl
     >>> round(measured_volume(Sphere(20.0)) / Sphere(20.0).volume(), 3)
     1.0
     """
+    return _remembered(thing, "volume", samples, _volume)
+
+
+def _volume(thing: Body | Particle, samples: int) -> float:
     grid = _grid(thing, samples)
     total = sum(float(filled.sum(dtype=float)) for _, filled in _slabs(thing, grid, 0))
     return total * grid.step**3
@@ -40,6 +48,10 @@ def measured_area(thing: Body | Particle, samples: int = VOLUME_SAMPLES) -> floa
     The area is the integral of the length of the gradient of the filled fraction, first smoothed
     over three samples so that the differences see the direction of the surface.
     """
+    return _remembered(thing, "area", samples, _area)
+
+
+def _area(thing: Body | Particle, samples: int) -> float:
     grid = _grid(thing, samples)
     total = 0.0
     for inner, filled in _slabs(thing, grid, 3):
@@ -49,6 +61,18 @@ def measured_area(thing: Body | Particle, samples: int = VOLUME_SAMPLES) -> floa
         gradient = np.gradient(smooth, grid.step)
         total += float(np.sqrt(sum(g**2 for g in gradient))[inner].sum())
     return total * grid.step**3
+
+
+def _remembered(
+    thing: Body | Particle,
+    what: str,
+    samples: int,
+    measure: Callable[[Body | Particle, int], float],
+) -> float:
+    known = _known.setdefault(thing, {})
+    if (what, samples) not in known:
+        known[what, samples] = measure(thing, samples)
+    return known[what, samples]
 
 
 def occupied(thing: Body | Particle, grid: SampleGrid) -> NDArray[np.float32]:

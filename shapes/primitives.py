@@ -224,7 +224,7 @@ def _ellipsoid_distance(points, half):  # type: ignore[no-untyped-def]
 
 @dataclass(frozen=True, eq=False)
 class Torus(Solid):
-    """Ring about z: `diameter` of the tube's middle line, `thickness` of the tube."""
+    """Ring about z: `diameter` over all, `thickness` of the tube."""
 
     diameter: float
     thickness: float
@@ -234,24 +234,29 @@ class Torus(Solid):
     def __post_init__(self) -> None:
         positive(diameter=self.diameter, thickness=self.thickness)
         require(
-            self.thickness < self.diameter,
-            f"thickness = {self.thickness:g} must be less than the diameter of the tube's middle "
-            f"line, {self.diameter:g} nm",
+            self.thickness < self.diameter / 2,
+            f"thickness = {self.thickness:g} must be less than half the diameter over all, "
+            f"{self.diameter / 2:g} nm, or the hole closes",
         )
 
+    @property
+    def _middle(self) -> float:
+        """Radius of the tube's middle line."""
+        return (self.diameter - self.thickness) / 2
+
     def signed_distance(self, points: FloatArray) -> FloatArray:
-        radial = np.hypot(points[:, 0], points[:, 1]) - self.diameter / 2
+        radial = np.hypot(points[:, 0], points[:, 1]) - self._middle
         return self.thickness / 2 - np.hypot(radial, points[:, 2])
 
     def support(self, directions: FloatArray) -> FloatArray:
         across = np.hypot(directions[:, 0], directions[:, 1])
-        return across * self.diameter / 2 + self.thickness / 2
+        return across * self._middle + self.thickness / 2
 
     def volume(self) -> float:
-        return 2 * np.pi**2 * (self.diameter / 2) * (self.thickness / 2) ** 2
+        return 2 * np.pi**2 * self._middle * (self.thickness / 2) ** 2
 
     def area(self) -> float:
-        return 4 * np.pi**2 * (self.diameter / 2) * (self.thickness / 2)
+        return 4 * np.pi**2 * self._middle * (self.thickness / 2)
 
     @property
     def thinnest(self) -> float:

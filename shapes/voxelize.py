@@ -179,15 +179,18 @@ def _composed(particle: Particle, grid: SampleGrid) -> NDArray[np.float32]:
     """Fraction of each material, (m, *grid.shape): later parts cover earlier ones."""
     materials = particle.materials
     filled = np.zeros((len(materials), *grid.shape), dtype=np.float32)
+    laid: set[int] = set()  # materials that earlier parts have put down
     for part in particle.parts:
         cut = grid.window(part.body.bounds)
         if cut is None:
             continue
         new = part.body.fill(grid.cut(cut))
-        for layer in filled:
-            layer[cut] *= 1 - new
+        for k in laid:
+            filled[k][cut] *= 1 - new
         if part.material is not None:
-            filled[materials.index(part.material)][cut] += new
+            k = materials.index(part.material)
+            laid.add(k)
+            filled[k][cut] += new
     return filled
 
 
