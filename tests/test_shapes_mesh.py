@@ -423,5 +423,6 @@ def test_a_cube_gives_the_cells_of_the_solid():
     particle = shapes.Particle((shapes.Part(body_from_triangles(box.vertices, box.faces), "gold"),))
     mine, theirs = (shapes.voxelize(p, spacing=1.7) for p in (particle, solid))
     assert mine.n == theirs.n
-    # distances are the same; the normals at the edges, from differences there, are not
-    np.testing.assert_allclose(mine.window, theirs.window, atol=1e-3)
+    # faces agree; samples cut by a sharp edge are taken as cut by one plane, up to 0.4 % of a cell
+    np.testing.assert_allclose(mine.window, theirs.window, atol=5e-3)
+    assert np.abs(mine.window - theirs.window).mean() < 1e-3
