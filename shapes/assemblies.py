@@ -9,9 +9,10 @@ import numpy as np
 from .body import Body, Part, Particle, ShapeError
 from .builders import AXIS, particle_of
 from .catalogue import Parameter, length, shape
-from .combine import Shell, Union
+from .combine import Union
 from .primitives_flat import Plate, regular_polygon
 from .solid import Solid, require
+from .transform import Shell
 
 
 def nested(doc: str, **of: object) -> Parameter:

@@ -13,7 +13,6 @@ import numpy as np
 
 from .body import FloatArray, Part, Particle
 from .catalogue import Parameter, length, shape
-from .combine import Turned
 from .frame import Frame
 from .primitives import Capsule, Cuboid, Ellipsoid, Sphere, Torus
 from .primitives_flat import Plate, Polyhedron, regular_polygon
@@ -21,6 +20,7 @@ from .primitives_revolved import Frustum
 from .primitives_swept import Helix
 from .rough import RoughSphere
 from .solid import Solid, require
+from .transform import Turned
 
 AXIS = Parameter("axis of the shape", kind="choice", choices=("x", "y", "z"))
 SEED = Parameter("seed of the random numbers", check=">= 0", kind="count")

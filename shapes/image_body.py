@@ -93,7 +93,7 @@ class VoxelBody:
 
     def rotated(self, angle: float, axis: ArrayLike = (0, 0, 1)) -> VoxelBody:
         """The body turned by `angle` degrees about `axis` through the origin."""
-        from .combine import rotation_matrix
+        from .transform import rotation_matrix
 
         return self._turned(rotation_matrix(angle, axis))
 

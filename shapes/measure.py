@@ -1,4 +1,4 @@
-"""Volume and area of bodies without a closed form, measured on a fine grid."""
+"""Volume, area and bounding box of bodies without a closed form, measured."""
 
 from __future__ import annotations
 
@@ -8,12 +8,15 @@ from weakref import WeakKeyDictionary
 import numpy as np
 from numpy.typing import NDArray
 
-from .body import Body, Particle, SampleGrid
+from .body import Body, Bounds, Particle, SampleGrid, ShapeError
+from .solid import Solid
 
 VOLUME_SAMPLES = 160  # along the largest extent
 SLAB = 2_000_000  # samples held at once
+BOX_TOLERANCE = 1e-3  # of the largest extent
 
 # bodies never change, so what has been measured once stays true as long as they live
+_boxes: WeakKeyDictionary[Solid, Bounds] = WeakKeyDictionary()
 _known: WeakKeyDictionary[Body | Particle, dict[tuple[str, int], float]] = WeakKeyDictionary()
 
 
@@ -73,6 +76,52 @@ def _remembered(
     if (what, samples) not in known:
         known[what, samples] = measure(thing, samples)
     return known[what, samples]
+
+
+def measured_bounds(solid: Solid, loose: Bounds) -> Bounds:
+    """Bounding box within the box `loose`, to BOX_TOLERANCE of its size.
+
+    Boxes that may hold a point of the solid beyond the farthest one known are split, until they
+    are small; that the distance is 1-Lipschitz says which may.
+
+    Raises
+    ------
+    ShapeError
+        If the solid is empty.
+    """
+    if solid not in _boxes:
+        middle = (loose[0] + loose[1]) / 2
+        reach = np.empty((2, 3))
+        for axis in range(3):
+            for side, sign in enumerate((-1.0, 1.0)):
+                reach[side, axis] = _farthest(solid, loose, axis, sign) - sign * middle[axis]
+        scale = float(np.max(loose[1] - loose[0]))
+        alike = np.abs(reach[0] - reach[1]) < 2 * BOX_TOLERANCE * scale
+        reach = np.where(alike, reach.max(axis=0), reach)  # keeps the centre of a symmetric solid
+        _boxes[solid] = middle - reach[0], middle + reach[1]
+    low, high = _boxes[solid]
+    return low.copy(), high.copy()
+
+
+def _farthest(solid: Solid, loose: Bounds, axis: int, sign: float) -> float:
+    """Greatest coordinate along sign * axis of a point of the solid."""
+    tolerance = BOX_TOLERANCE * float(np.max(loose[1] - loose[0]))
+    half = float(np.max(loose[1] - loose[0])) / 2
+    centres = ((loose[0] + loose[1]) / 2)[None]
+    corners = np.stack(np.meshgrid([-1, 1], [-1, 1], [-1, 1], indexing="ij"), axis=-1).reshape(8, 3)
+    best = -np.inf
+    while len(centres) and half > tolerance / 2:
+        half /= 2
+        centres = (centres[:, None] + half * corners).reshape(-1, 3)
+        distance = solid.signed_distance(centres)
+        along = sign * centres[:, axis]
+        if np.any(distance >= 0):  # a ball of that radius about the centre is inside
+            best = max(best, float((along + distance)[distance >= 0].max()))
+        able = (distance > -half * np.sqrt(3)) & (along + half > best + tolerance)
+        centres = centres[able]
+    if best == -np.inf:
+        raise ShapeError("this combination of solids is empty: nothing is left, or none overlap")
+    return best
 
 
 def occupied(thing: Body | Particle, grid: SampleGrid) -> NDArray[np.float32]:

@@ -248,7 +248,7 @@ class MeshBody(Solid):
 
     def rotated(self, angle: float, axis: ArrayLike = (0, 0, 1)) -> MeshBody:  # type: ignore[override]
         """The solid turned by `angle` degrees about `axis` through the origin."""
-        from .combine import rotation_matrix
+        from .transform import rotation_matrix
 
         return replace(self, vertices=self.vertices @ rotation_matrix(angle, axis).T)
 

@@ -12,8 +12,7 @@ import numpy as np
 from scipy.special import ellipeinc, ellipkinc
 
 from .body import FloatArray
-from .combine import EXACT
-from .solid import Solid, positive, require
+from .solid import EXACT, Solid, positive, require
 
 
 @dataclass(frozen=True, eq=False)

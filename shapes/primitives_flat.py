@@ -10,8 +10,7 @@ import numpy as np
 from scipy.spatial import ConvexHull, HalfspaceIntersection, QhullError
 
 from .body import FloatArray
-from .combine import EXACT
-from .solid import Solid, positive, require
+from .solid import EXACT, Solid, positive, require
 
 
 @dataclass(frozen=True, eq=False)

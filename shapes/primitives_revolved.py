@@ -11,8 +11,7 @@ from functools import cached_property
 import numpy as np
 
 from .body import FloatArray
-from .combine import EXACT
-from .solid import Solid, positive, require
+from .solid import EXACT, Solid, positive, require
 
 
 @dataclass(frozen=True, eq=False)

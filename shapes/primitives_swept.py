@@ -8,8 +8,7 @@ import numba
 import numpy as np
 
 from .body import FloatArray
-from .combine import EXACT
-from .solid import Solid, positive, require
+from .solid import EXACT, Solid, positive, require
 
 SCAN = 24  # points a turn at which the search for the nearest point of a helix starts
 NEWTON = 6

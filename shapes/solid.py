@@ -16,8 +16,9 @@ from .body import Bounds, FloatArray, Mirrors, SampleGrid, ShapeError
 from .plane import blocks_filled
 
 if TYPE_CHECKING:
-    from . import combine
+    from . import combine, transform
 
+EXACT = frozenset({"volume", "area", "bounds"})
 BLOCK = 8  # edge in samples of the blocks that `fill` settles at once
 CHUNK = 256  # blocks evaluated together, which bounds the memory
 
@@ -62,8 +63,13 @@ class Solid:
 
     @property
     def bounds(self) -> Bounds:
-        """Lower and upper corner of the bounding box, nm."""
-        return -self.support(-np.eye(3)), self.support(np.eye(3))
+        """Lower and upper corner of the bounding box, nm; measured unless `exact` says so."""
+        loose = -self.support(-np.eye(3)), self.support(np.eye(3))
+        if "bounds" in self.exact:
+            return loose
+        from .measure import measured_bounds
+
+        return measured_bounds(self, loose)
 
     def volume(self) -> float:
         """Volume, nm^3."""
@@ -156,41 +162,41 @@ class Solid:
 
         return Blend((self, *others), radius)
 
-    def moved(self, offset: ArrayLike) -> combine.Moved:
+    def moved(self, offset: ArrayLike) -> transform.Moved:
         """The solid moved by `offset`, (3,) nm."""
-        from .combine import Moved
+        from .transform import Moved
 
         return Moved(self, np.asarray(offset, dtype=float))
 
-    def rotated(self, angle: float, axis: ArrayLike = (0, 0, 1)) -> combine.Turned:
+    def rotated(self, angle: float, axis: ArrayLike = (0, 0, 1)) -> transform.Turned:
         """The solid turned by `angle` degrees about `axis` through the origin."""
-        from .combine import Turned, rotation_matrix
+        from .transform import Turned, rotation_matrix
 
         return Turned(self, rotation_matrix(angle, axis))
 
-    def mirrored(self, axis: int) -> combine.Turned:
+    def mirrored(self, axis: int) -> transform.Turned:
         """The mirror image in the plane through the origin across x (0), y (1) or z (2)."""
-        from .combine import Turned
+        from .transform import Turned
 
         signs = np.ones(3)
         signs[axis] = -1.0
         return Turned(self, np.diag(signs))
 
-    def scaled(self, factor: float) -> combine.Scaled:
+    def scaled(self, factor: float) -> transform.Scaled:
         """The solid made `factor` times larger about the origin."""
-        from .combine import Scaled
+        from .transform import Scaled
 
         return Scaled(self, float(factor))
 
-    def grown(self, distance: float) -> combine.Grown:
+    def grown(self, distance: float) -> transform.Grown:
         """The solid with a layer of `distance` nm put on (taken off if negative)."""
-        from .combine import Grown
+        from .transform import Grown
 
         return Grown(self, float(distance))
 
-    def shell(self, thickness: float) -> combine.Shell:
+    def shell(self, thickness: float) -> transform.Shell:
         """The outermost `thickness` nm of the solid: a hollow one."""
-        from .combine import Shell
+        from .transform import Shell
 
         return Shell(self, float(thickness))
 
