@@ -26,6 +26,7 @@ from .builders import (
 from .cells import Cells
 from .image import from_image
 from .mesh import from_mesh
+from .parts import assemble, build_parts, placed
 from .solid import Solid
 from .star import star
 from .voxelize import voxelize
@@ -39,8 +40,10 @@ __all__ = [
     "ShapeError",
     "Solid",
     "aggregate",
+    "assemble",
     "bipyramid",
     "bowtie",
+    "build_parts",
     "catalogue",
     "chain",
     "cone",
@@ -59,6 +62,7 @@ __all__ = [
     "icosahedron",
     "multilayer",
     "octahedron",
+    "placed",
     "prism",
     "ring",
     "rod",

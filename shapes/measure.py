@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
+from dataclasses import dataclass
 from weakref import WeakKeyDictionary
 
 import numpy as np
 from numpy.typing import NDArray
 
-from .body import Body, Bounds, Particle, SampleGrid, ShapeError
+from .body import Body, Bounds, FloatArray, Particle, SampleGrid, ShapeError
 from .solid import Solid
 
 VOLUME_SAMPLES = 160  # along the largest extent
@@ -46,15 +47,60 @@ def _volume(thing: Body | Particle, samples: int) -> float:
 
 
 def measured_area(thing: Body | Particle, samples: int = VOLUME_SAMPLES) -> float:
-    """Surface area, nm^2, good to about 1 % where edges are rounded by a few samples.
+    """Surface area, nm^2, good to about 0.1 % for solids and 1 % for other bodies.
 
-    The area is the integral of the length of the gradient of the filled fraction, first smoothed
-    over three samples so that the differences see the direction of the surface.
+    Of solids, the volume between two surfaces half a sample inside and outside, over their
+    distance. Of other bodies, the integral of the gradient of the filled fraction.
     """
     return _remembered(thing, "area", samples, _area)
 
 
 def _area(thing: Body | Particle, samples: int) -> float:
+    solid = _as_solid(thing)
+    if solid is None:
+        # smoothing cuts edges by an area that grows with the samples: two sizes lead back to none
+        return 2 * _slope_area(thing, samples) - _slope_area(thing, samples // 2)
+    low, high = thing.bounds
+    shift = float(np.max(high - low)) / samples / 2
+    outer, inner = (_volume(_Level(solid, sign * shift), samples) for sign in (1, -1))
+    return (outer - inner) / (2 * shift)
+
+
+def _as_solid(thing: Body | Particle) -> Solid | None:
+    """All that is not host as one solid, None if some of it is no solid."""
+    if not isinstance(thing, Particle):
+        return thing if isinstance(thing, Solid) else None
+    total: Solid | None = None
+    for part in thing.parts:
+        if not isinstance(part.body, Solid):
+            return None
+        if part.material is None:
+            total = None if total is None else total.difference(part.body)
+        else:
+            total = part.body if total is None else total.union(part.body)
+    return total
+
+
+@dataclass(frozen=True, eq=False)
+class _Level(Solid):
+    """What lies within `shift` outside of a solid's surface, on its own rough box."""
+
+    base: Solid
+    shift: float
+
+    @property
+    def bounds(self) -> Bounds:
+        low, high = self.base.bounds
+        return low - abs(self.shift), high + abs(self.shift)
+
+    def signed_distance(self, points: FloatArray) -> FloatArray:
+        return self.base.signed_distance(points) + self.shift
+
+    def surface_distance(self, points: FloatArray) -> FloatArray:
+        return self.base.surface_distance(points) + self.shift
+
+
+def _slope_area(thing: Body | Particle, samples: int) -> float:
     grid = _grid(thing, samples)
     total = 0.0
     for inner, filled in _slabs(thing, grid, 3):

@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from .body import FloatArray
 
-FLAT = 1e-6  # share of a normal's component below which the plane counts as along that axis
+FLAT = 1e-9  # share of a normal's component below which the plane counts as along that axis
 MOST = 0.05  # voxels: bound on the correction for curvature, reached at edges only
 KINK = 0.3  # of a distance's slope: less means a ridge, where no one plane stands for the surface
 
