@@ -1,4 +1,4 @@
-"""The FFT library behind the convolution: scipy.fft, or ducc0 when it is installed."""
+"""The transforms behind the convolution: scipy.fft, or ducc0 when it is installed."""
 
 from __future__ import annotations
 
@@ -14,22 +14,26 @@ from ..errors import InputError
 
 @dataclass(frozen=True)
 class FFT:
-    """Unscaled complex transforms along one axis, single threaded and lock free.
+    """Unscaled in-place transforms along one axis, single threaded and lock free.
 
     Attributes
     ----------
     name : str
-    transform : callable
-        ``transform(array, axis, forward, out)`` writes the transform to `out` and returns it.
-        `out` may be `array` itself.
+    complex_transform : callable
+        ``(array, axis, forward)`` replaces the complex array by its Fourier transform.
+    real_transform : callable
+        ``(array, axis, family, type)`` replaces the real and the imaginary part of a complex
+        array by their cosine ("dct") or sine ("dst") transform of the type 1, 2 or 3. The axis
+        must not be negative.
     """
 
     name: str
-    transform: Callable[[np.ndarray, int, bool, np.ndarray], np.ndarray]
+    complex_transform: Callable[[np.ndarray, int, bool], None]
+    real_transform: Callable[[np.ndarray, int, str, int], None]
 
 
 def choose(name: str = "auto") -> FFT:
-    """Pick an FFT library.
+    """Pick a library.
 
     Parameters
     ----------
@@ -41,33 +45,60 @@ def choose(name: str = "auto") -> FFT:
     InputError
         If the library is unknown or not installed.
     """
+    installed = importlib.util.find_spec("ducc0") is not None
     if name == "auto":
-        name = "ducc0" if importlib.util.find_spec("ducc0") else "scipy"
+        name = "ducc0" if installed else "scipy"
     if name == "scipy":
-        return FFT("scipy", _scipy)
+        return FFT("scipy", _scipy_complex, _scipy_real)
     if name == "ducc0":
-        if importlib.util.find_spec("ducc0") is None:
+        if not installed:
             raise InputError(
                 "fft = \"ducc0\" but ducc0 is not installed: pip install 'motelight[fast]'"
             )
-        return FFT("ducc0", _ducc())
+        return FFT("ducc0", *_ducc())
     raise InputError(f'unknown FFT library {name!r}; use "auto", "scipy" or "ducc0"')
 
 
-def _scipy(array: np.ndarray, axis: int, forward: bool, out: np.ndarray) -> np.ndarray:
+def _parts(array: np.ndarray) -> np.ndarray:
+    """The real view with a last axis of real and imaginary part."""
+    return array.view(array.real.dtype).reshape(*array.shape, 2) if _dense(array) else _wide(array)
+
+
+def _dense(array: np.ndarray) -> bool:
+    return bool(array.flags.c_contiguous)
+
+
+def _wide(array: np.ndarray) -> np.ndarray:
+    real = array.real
+    return np.lib.stride_tricks.as_strided(
+        real, (*array.shape, 2), (*array.strides, real.dtype.itemsize)
+    )
+
+
+def _scipy_complex(array: np.ndarray, axis: int, forward: bool) -> None:
     if forward:
-        result = scipy.fft.fft(array, axis=axis, overwrite_x=array is out)
+        result = scipy.fft.fft(array, axis=axis, overwrite_x=True)
     else:
-        result = scipy.fft.ifft(array, axis=axis, norm="forward", overwrite_x=array is out)
-    if result is not out and not np.shares_memory(result, out):
-        out[...] = result
-    return out
+        result = scipy.fft.ifft(array, axis=axis, norm="forward", overwrite_x=True)
+    if not np.shares_memory(result, array):
+        array[...] = result
 
 
-def _ducc() -> Callable[[np.ndarray, int, bool, np.ndarray], np.ndarray]:
-    from ducc0.fft import c2c
+def _scipy_real(array: np.ndarray, axis: int, family: str, kind: int) -> None:
+    transform = scipy.fft.dct if family == "dct" else scipy.fft.dst
+    parts = _parts(array)
+    parts[...] = transform(parts, type=kind, axis=axis)
 
-    def transform(array: np.ndarray, axis: int, forward: bool, out: np.ndarray) -> np.ndarray:
-        return c2c(array, axes=(axis,), forward=forward, out=out, nthreads=1)
 
-    return transform
+def _ducc() -> tuple[Callable, Callable]:
+    from ducc0 import fft
+
+    def complex_transform(array: np.ndarray, axis: int, forward: bool) -> None:
+        fft.c2c(array, axes=(axis,), forward=forward, out=array, nthreads=1)
+
+    def real_transform(array: np.ndarray, axis: int, family: str, kind: int) -> None:
+        parts = _parts(array)
+        transform = fft.dct if family == "dct" else fft.dst
+        transform(parts, kind, axes=(axis,), out=parts, nthreads=1)
+
+    return complex_transform, real_transform

@@ -10,8 +10,9 @@ from shapes import Cells
 
 from .. import materials as _materials
 from ..errors import InputError
-from .convolution import Convolution, padded_shape
+from .convolution import Convolution
 from .green import RadialTable, radial_table
+from .kernel import kernel, padded_shape
 from .polarizability import CellTensor, inverse_polarizability, uniaxial
 from .workers import Workers
 
@@ -216,7 +217,7 @@ def relative_system(
         k,
         int(sum((n - 1) ** 2 for n in cells.shape)),
     )
-    convolution = Convolution(cells.shape, table, precision, fft, workers)
+    convolution = Convolution(kernel(cells.shape, table, precision), None, fft, workers)
     return System(
         cells,
         float(wavelength),
