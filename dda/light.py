@@ -28,6 +28,11 @@ class PlaneWave:
         """Electric field at `positions` (n, 3) in nm, in units of the amplitude, shape (n, 3)."""
         return np.exp(1j * k * (positions @ self.direction))[:, None] * self.polarization
 
+    def magnetic(self, positions: np.ndarray, k: float) -> np.ndarray:
+        """Magnetic field at `positions` in units of its own amplitude, shape (n, 3)."""
+        turned = np.cross(self.direction, self.polarization)
+        return np.exp(1j * k * (positions @ self.direction))[:, None] * turned
+
     @property
     def s_factor(self) -> float:
         """``sum_j (a_j |e_j|)^2``, needed by the lattice dispersion relation."""
