@@ -1,0 +1,365 @@
+"""From a dipole system to its T-matrix.
+
+Regular vector spherical waves are the incident fields, and the induced dipoles radiate outgoing
+ones with the amplitudes ``f = 4 pi i k^3 sum_j W(r_j).p_j`` (Mackowski 2002). In real waves
+``T = 4 pi i k^3 W^T (alpha^-1 - G)^-1 W`` is symmetric and splits into the parity sectors of the
+cells. Waves that symmetries of the cells turn into each other are solved once.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from ..errors import InputError
+from ..lattice.linear_system import System
+from .columns import Column, Solved, solve_columns
+from .symmetry import Sectors, find_sectors
+from .tmatrix import TMatrix
+from .vector_waves import (
+    fields_of,
+    first_order,
+    moments_of,
+    real_to_complex,
+    wave_count,
+    wave_labels,
+)
+from .wave_rotations import real_rotation_matrix
+
+LARGEST_ORDER = 24
+
+# Absorption below this part of extinction is known only to the tolerance times this part.
+_LEAST_ABSORPTION = 0.02
+
+
+def t_matrix(
+    system: System,
+    *,
+    order: int | None = None,
+    tolerance: float = 1e-3,
+    residual: float | None = None,
+    symmetry: bool = True,
+    limit: int = 2000,
+    monitor=None,
+) -> TMatrix:
+    """T-matrix of a particle from its dipole system.
+
+    Parameters
+    ----------
+    system : System
+        With the polarizabilities "fcd" or "rr" (the lattice dispersion relation is made for one
+        direction of light).
+    order : int, optional
+        Highest multipole order; by default chosen from the size parameter and raised until the
+        multipoles left out do not matter.
+    tolerance : float
+        Relative error to allow in the orientation averages of C_ext and C_abs, for the order and
+        the solver each.
+    residual : float, optional
+        Solve every column to this residual instead of by what it adds to the averages. Needed
+        when single elements matter, as in closely spaced pairs.
+    symmetry : bool
+        Whether to use the symmetries of the cells.
+    limit : int
+        Most steps for a column.
+    monitor : callable, optional
+        ``monitor(finished, columns)`` after every column.
+
+    Returns
+    -------
+    TMatrix
+        About the centre of the box of cells.
+
+    Raises
+    ------
+    InputError
+        If the order is not from 1 to `LARGEST_ORDER`.
+
+    References
+    ----------
+    Mackowski, D. W. (2002), J. Opt. Soc. Am. A 19, 881.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> cells = shapes.voxelize(shapes.sphere(diameter=30, material="gold"), cells=8)
+    >>> t = t_matrix(dda.system(cells, wavelength=530))
+    >>> t.order, t.reciprocity() < 1e-3
+    (2, True)
+    """
+    if order is not None and not 1 <= order <= LARGEST_ORDER:
+        raise InputError(f"multipole order {order} is not from 1 to {LARGEST_ORDER}")
+    work = _Work(system, find_sectors(system, symmetry), tolerance, residual, limit, monitor)
+    present = order or min(LARGEST_ORDER, max(first_order(system.k * work.radius), 2))
+    work.extend(present)
+    while order is None and work.tail > tolerance * work.scale and present < LARGEST_ORDER:
+        present += 1
+        work.extend(present)
+    return work.result()
+
+
+@dataclass(frozen=True, eq=False)
+class _Wave:
+    """A wave that is solved and stands for its images under the symmetries."""
+
+    coefficients: np.ndarray  # in real waves up to the order at which it was chosen
+    sector: int
+    order: int
+    count: int  # of independent waves it stands for
+
+
+class _Work:
+    """Columns solved so far and what follows from them."""
+
+    def __init__(self, system: System, sectors: Sectors, tolerance, residual, limit, monitor):
+        self.system, self.sectors = system, sectors
+        self.tolerance, self.residual = tolerance, residual
+        self.limit, self.monitor = limit, monitor
+        self.positions = (system.positions - sectors.centre)[sectors.cells]
+        self.radius = _radius(system, sectors.centre)
+        self.factor = 4j * np.pi * system.k**3
+        self.waves: list[_Wave] = []
+        self.solved: list[Solved] = []
+        self.products = 0
+        self.order = 0
+        self.values: dict[int, complex] = {}
+        self.turns = _cosets(sectors.group)
+
+    def extend(self, order: int) -> None:
+        """Solve the columns of all orders up to this one that are not there yet."""
+        first, self.order = self.order + 1, order
+        self.signs = _wave_sectors(order + 1, self.sectors)
+        self.rotations = [real_rotation_matrix(order, g) for g in self.turns]
+        before = len(self.waves)
+        for n in range(first, order + 1):
+            self.waves += self._choose(n)
+        self._balance(before)
+        new = self.waves[before:]
+        coefficients = np.stack([self._padded(w.coefficients) for w in new])
+        fields = fields_of(coefficients, self.positions, self.system.k)
+        columns = [Column(w.sector, e) for w, e in zip(new, fields, strict=True)]
+
+        def finished(count: int) -> None:
+            if self.monitor is not None:
+                self.monitor(before + count, len(self.waves))
+
+        solved, products = solve_columns(
+            self.system,
+            self.sectors,
+            columns,
+            tolerance=1e-6 if self.residual is None else self.residual,
+            enough=None if self.residual is not None else self._enough(before),
+            limit=self.limit,
+            known=self.solved,
+            monitor=finished,
+        )
+        self.solved += solved
+        self.products += products
+        for j, column in enumerate(self.solved):
+            self.values[j] = column.value
+        self.matrix = self._assemble()
+        self.tail = self._tail()
+
+    def result(self) -> TMatrix:
+        system = self.system
+        count = wave_count(self.order)
+        u = real_to_complex(self.order)
+        keep = wave_labels(self.order + 1)[:, 1] <= self.order
+        matrix = u.conj() @ self.matrix[keep] @ u.T
+        assert matrix.shape == (count, count)
+        drift = np.sqrt(
+            sum((w.count * s.drift) ** 2 for w, s in zip(self.waves, self.solved, strict=True))
+        )
+        worst = [s.status for s in self.solved if s.status != "converged"]
+        return TMatrix(
+            matrix,
+            system.wavelength,
+            system.n_host,
+            self.sectors.centre,
+            self.radius,
+            system.r_eff,
+            order_error=self.tail,
+            solver_error=2 * np.pi / system.k**2 * abs(self.factor) * drift,
+            products=self.products,
+            status=worst[0] if worst else "converged",
+        )
+
+    @property
+    def scale(self) -> float:
+        """The cross section that the tolerance is relative to, nm^2."""
+        return 2 * np.pi / self.system.k**2 * self._strength()
+
+    def _strength(self) -> float:
+        """Sum over waves of the absorption, or a part of extinction if that is larger."""
+        extinction = absorption = 0.0
+        for j, value in self.values.items():
+            t = self.factor * value
+            extinction -= self.waves[j].count * t.real
+            absorption -= self.waves[j].count * (t.real + abs(t) ** 2)
+        return max(absorption, _LEAST_ABSORPTION * extinction, 0.0)
+
+    def _enough(self, before: int):
+        """Stop a column when what it may still change is a small part of the averages."""
+
+        def rule(number: int, value: complex, drift: float) -> bool:
+            j = before + number
+            self.values[j] = value
+            change = self.waves[j].count * abs(self.factor) * drift
+            return change < 0.3 * self.tolerance * self._strength()
+
+        return rule
+
+    # -- which waves to solve ------------------------------------------------------------------
+
+    def _choose(self, n: int) -> list[_Wave]:
+        """Fewest real waves of order n whose images span all of that order and kind."""
+        chosen = []
+        labels = wave_labels(self.order)
+        for kind in (1, 0):  # electric first: it is the stronger
+            rows = np.flatnonzero((labels[:, 0] == kind) & (labels[:, 1] == n))
+            rows = rows[np.argsort(abs(labels[rows, 2]), kind="stable")]
+            blocks = np.stack([d[np.ix_(rows, rows)] for d in self.rotations])
+            span = np.zeros((len(rows), 0))
+            while span.shape[1] < len(rows):
+                grown = [_span(span, blocks[:, :, i]) for i in range(len(rows))]
+                best = max(range(len(rows)), key=lambda i: grown[i].shape[1])
+                unit = np.zeros(len(labels))
+                unit[rows[best]] = 1
+                gain = grown[best].shape[1] - span.shape[1]
+                chosen.append(_Wave(unit, self._sector_of(unit), n, gain))
+                span = grown[best]
+        return chosen
+
+    def _balance(self, before: int) -> None:
+        """Turn waves into the sectors that have the fewest, so that products are shared best."""
+        load = np.zeros(self.sectors.count, int)
+        for j in range(before, len(self.waves)):
+            wave = self.waves[j]
+            images = [d @ self._padded(wave.coefficients) for d in self.rotations]
+            options = [(load[self._sector_of(v)], i) for i, v in enumerate(images)]
+            best = images[min(options)[1]]
+            sector = self._sector_of(best)
+            load[sector] += 1
+            self.waves[j] = _Wave(best, sector, wave.order, wave.count)
+
+    def _sector_of(self, coefficients: np.ndarray) -> int:
+        """Sector of a wave, or -1 if it has parts in several."""
+        known = wave_labels(self.order + 1)[:, 1] <= self.order
+        present = np.unique(self.signs[known][abs(self._padded(coefficients)) > 1e-9])
+        return int(present[0]) if len(present) == 1 else -1
+
+    def _padded(self, coefficients: np.ndarray) -> np.ndarray:
+        """Coefficients in the waves of the present order."""
+        out = np.zeros(wave_count(self.order))
+        old = len(coefficients) // 2
+        half = len(out) // 2
+        out[:old], out[half : half + old] = coefficients[:old], coefficients[old:]
+        return out
+
+    # -- what they give ------------------------------------------------------------------------
+
+    def _assemble(self) -> np.ndarray:
+        """T in real waves, rows up to one order more than the columns."""
+        rows = self.order + 1
+        weight = self.sectors.weight[:, None]
+        dipoles = np.stack([s.dipoles * weight for s in self.solved])
+        columns = moments_of(dipoles, self.positions, self.system.k, rows).T
+        columns[self.signs[:, None] != np.array([w.sector for w in self.waves])] = 0
+        turned = [d @ self._coefficients for d in self.rotations]
+        inverse = np.linalg.pinv(np.concatenate(turned, axis=1))
+        correction = self._second_order(inverse)
+        known = wave_labels(rows)[:, 1] <= self.order
+        columns[known] += correction
+        wide = [real_rotation_matrix(rows, g) for g in self.turns]
+        return self.factor * np.concatenate([d @ columns for d in wide], axis=1) @ inverse
+
+    @property
+    def _coefficients(self) -> np.ndarray:
+        return np.stack([self._padded(w.coefficients) for w in self.waves], axis=1)
+
+    def _second_order(self, inverse: np.ndarray) -> np.ndarray:
+        """``x_i^T r_j`` of the solutions x and remainders r, which makes T stationary.
+
+        The error of W^T x is of first order in what the solver left; that of W^T x + x^T r is of
+        second order, because A is symmetric.
+        """
+        sectors, system = self.sectors, self.system
+        count = len(self.solved)
+        rests = np.stack([s.remainder * sectors.weight[:, None] for s in self.solved])
+        homes = np.array([w.sector for w in self.waves])
+        products = np.zeros((len(self.turns), count, count), complex)
+        whole = np.empty((system.n, 3), system.dtype)
+        for g, (turn, rotation) in enumerate(zip(self.turns, self.rotations, strict=True)):
+            image = _cell_images(system, turn)
+            for i, wave in enumerate(self.waves):
+                sector = self._sector_of(rotation @ self._padded(wave.coefficients))
+                same = np.flatnonzero(homes == sector)
+                if len(same) == 0:
+                    continue
+                sectors.spread(self.solved[i].dipoles[None], homes[i : i + 1], whole)
+                turned = np.empty_like(whole)
+                turned[image] = whole @ turn.T
+                products[g, i, same] = np.tensordot(rests[same], turned[sectors.cells], 2)
+        return inverse.T @ products.reshape(-1, count)
+
+    def _tail(self) -> float:
+        """What the next orders would add to the average cross sections, nm^2.
+
+        The larger of a geometric continuation of the orders' shares of extinction and of what a
+        single resonance behind all of T would put there: T_ll = T_lj T_jl / T_jj.
+        """
+        labels = wave_labels(self.order + 1)
+        column = labels[labels[:, 1] <= self.order]
+        below = labels[:, 1] <= self.order
+        diagonal = np.diag(self.matrix[below])
+        shares = [abs(diagonal[column[:, 1] == n].real.sum()) for n in range(1, self.order + 1)]
+        x, n = self.system.k * self.radius, self.order
+        ratio = x**2 / ((n + 1) * (2 * n + 1))
+        if n > 1:
+            ratio = max(ratio, min(shares[-1] / shares[-2], 1.0))
+        beyond = self.matrix[~below]
+        shared = abs(beyond) ** 2 / np.maximum(abs(diagonal), 1e-300)
+        total = max(shares[-1] * ratio, float(shared.max(axis=1).sum()))
+        total += float((abs(beyond) ** 2).sum())
+        return 2 * np.pi / self.system.k**2 * total
+
+
+def _span(span: np.ndarray, vectors: np.ndarray) -> np.ndarray:
+    """Orthonormal basis of a span with more vectors (rows) added."""
+    rest = vectors.T - span @ (span.T @ vectors.T)
+    u, s, _ = np.linalg.svd(rest, full_matrices=False)
+    return np.concatenate([span, u[:, s > 1e-8]], axis=1)
+
+
+def _cosets(group: np.ndarray) -> np.ndarray:
+    """One symmetry of every exchange of axes; the others differ by sign changes."""
+    _, first = np.unique(abs(group).reshape(len(group), -1), axis=0, return_index=True)
+    return group[np.sort(first)]
+
+
+def _wave_sectors(order: int, sectors: Sectors) -> np.ndarray:
+    """Sector of every real wave."""
+    signs = np.stack(
+        [np.diag(real_rotation_matrix(order, np.diag(f))) for f in sectors.flips], axis=1
+    )
+    same = np.round(signs)[:, None, :] == sectors.characters
+    return np.argmax(same.all(axis=2), axis=1)
+
+
+def _cell_images(system: System, turn: np.ndarray) -> np.ndarray:
+    """Cell that a symmetry takes every cell to."""
+    low, high = system.index.min(axis=0), system.index.max(axis=0)
+    row = np.full(high - low + 1, -1, np.int64)
+    row[tuple((system.index - low).T)] = np.arange(system.n)
+    twice = (2 * system.index - (low + high)) @ turn.T + (low + high)
+    return row[tuple((twice // 2 - low).T)]
+
+
+def _radius(system: System, centre: np.ndarray) -> float:
+    """Of a sphere around the particle: its outermost cell centres and half a cell."""
+    cells = system.cells
+    inside = cells.centre_material >= 0
+    positions = cells.positions[inside] if inside.any() else system.positions
+    distance = np.linalg.norm(positions - centre, axis=1).max()
+    return float(distance + cells.spacing / 2)
