@@ -75,10 +75,9 @@ def run(options: argparse.Namespace) -> int:
     if interrupted:
         kept = f"{len(folder.rows)} of {len(prepared.points)} wavelengths are kept"
         return _complain(f"interrupted; {kept}", INTERRUPTED)
-    doubtful = [row for row in folder.rows if not row.converged]
-    for row in doubtful:
-        print(f"dda: {row.wavelength_nm:g} nm {row.status}: {row.message}", file=sys.stderr)
-    return FAILED if doubtful else OK
+    for complaint in _complaints(folder):
+        print(f"dda: {complaint}", file=sys.stderr)
+    return OK if all(row.converged for row in folder.rows) else FAILED
 
 
 def plan(options: argparse.Namespace) -> int:
@@ -169,6 +168,26 @@ def _cautions(prepared: Prepared) -> list[str]:
         for figure in validity(prepared)
         if not figure.good
     ]
+
+
+def _complaints(folder: RunFolder) -> list[str]:
+    """Return a line for the failed wavelengths and one for those that did not converge."""
+    failed = [row for row in folder.rows if not row.answered]
+    doubtful = [row for row in folder.rows if row.answered and not row.converged]
+    lines = []
+    if failed:
+        where = ", ".join(f"{row.wavelength_nm:g}" for row in failed)
+        lines.append(f"no answer at {where} nm: {failed[0].message}")
+    if doubtful:
+        where = ", ".join(f"{row.wavelength_nm:g}" for row in doubtful)
+        worst = max(row.residual for row in doubtful)
+        lines.append(
+            f"the solver did not converge at {where} nm (residual up to {worst:.1e}): these rows "
+            "are marked in the table and ringed in the figure, do not rely on them. What can "
+            "help: other cells, or a larger [solver] tolerance if the message column says that "
+            "the residual came close"
+        )
+    return lines
 
 
 def _report(error: Exception) -> int:

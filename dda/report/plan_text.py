@@ -7,6 +7,7 @@ import textwrap
 from dda.report.progress import duration_text
 from dda.study.geometry import Geometry
 from dda.study.memory import bytes_text
+from dda.study.particle import notes_of
 from dda.study.plan import Plan, Prepared
 
 #: Characters in a printed line.
@@ -63,6 +64,7 @@ def study_lines(prepared: Prepared) -> list[str]:
                 *sources,
                 ("wavelengths", f"{len(points)}, {span}"),
                 ("polarization", _polarization(prepared)),
+                *[("note", note) for note in notes_of(prepared.geometry.particle)],
                 ("cells", f"{cells.n} of {cells.spacing:.4g} nm in a box of {nx} x {ny} x {nz}"),
             ]
         ),

@@ -19,8 +19,8 @@ from dda.report.colours import BACKGROUND, INK, material_colours, rgb
 
 #: Samples across the largest extent from which the surface is drawn.
 SURFACE_SAMPLES = 140
-#: Rounds of smoothing of the drawn surface.
-SMOOTHING = 12
+#: Standard deviation of the smoothing of the drawn surface, in samples.
+SMOOTHING = 0.9
 #: Edges of cells are drawn up to this many cells across.
 MOST_EDGES = 48
 #: Where the eye is, seen from the particle.
@@ -132,10 +132,11 @@ def surface_meshes(
     With ``cut`` the quarter x > centre, y < centre is taken away and the sections are closed.
     """
     import pyvista
+    from scipy.ndimage import gaussian_filter
 
     low, high = (np.asarray(b, float) for b in particle.bounds)
     step = float((high - low).max()) / samples
-    counts = np.ceil((high - low) / step).astype(int) + 4
+    counts = np.ceil((high - low) / step).astype(int) + 8
     origin = (low + high) / 2 - step * (counts - 1) / 2
     grid = shapes.SampleGrid(origin=origin, step=step, shape=tuple(int(c) for c in counts))
     filled = {name: np.zeros(grid.shape, np.float32) for name in particle.materials}
@@ -152,11 +153,11 @@ def surface_meshes(
     image = pyvista.ImageData(dimensions=grid.shape, spacing=(step,) * 3, origin=tuple(origin))
     meshes = {}
     for name, field in filled.items():
-        image.point_data["filled"] = field.ravel(order="F")
+        # Filled fractions change within a sample; spread over more, the contour has no ripple.
+        image.point_data["filled"] = gaussian_filter(field, SMOOTHING).ravel(order="F")
         mesh = image.contour([0.5], scalars="filled")
         if mesh.n_points:
-            # Takes out the ripple of the samples, hardly more.
-            meshes[name] = mesh.smooth_taubin(n_iter=SMOOTHING, pass_band=0.2)
+            meshes[name] = mesh
     return meshes
 
 

@@ -145,5 +145,5 @@ def _advice(solutions: list[Polarization], point: Point) -> str:
     worst = max(solutions, key=lambda s: s.residual)
     return (
         f"residual {worst.residual:.1e} after {worst.iterations} steps, "
-        f"{point.solver.tolerance:.0e} asked for: do not trust this row"
+        f"{point.solver.tolerance:.0e} asked for"
     )
