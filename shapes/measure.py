@@ -14,7 +14,8 @@ from .solid import Solid
 
 VOLUME_SAMPLES = 160  # along the largest extent
 SLAB = 2_000_000  # samples held at once
-BOX_TOLERANCE = 1e-3  # of the largest extent
+BOX_TOLERANCE = 4e-3  # of the largest extent: how far ahead a corner may be overlooked
+RAYS, STEPS = 64, 12
 
 # bodies never change, so what has been measured once stays true as long as they live
 _boxes: WeakKeyDictionary[Solid, Bounds] = WeakKeyDictionary()
@@ -125,7 +126,7 @@ def _remembered(
 
 
 def measured_bounds(solid: Solid, loose: Bounds) -> Bounds:
-    """Bounding box within the box `loose`, to BOX_TOLERANCE of its size.
+    """Bounding box within the box `loose`; a sharp corner may stick out by BOX_TOLERANCE of it.
 
     Boxes that may hold a point of the solid beyond the farthest one known are split, until they
     are small; that the distance is 1-Lipschitz says which may.
@@ -151,23 +152,50 @@ def measured_bounds(solid: Solid, loose: Bounds) -> Bounds:
 
 def _farthest(solid: Solid, loose: Bounds, axis: int, sign: float) -> float:
     """Greatest coordinate along sign * axis of a point of the solid."""
-    tolerance = BOX_TOLERANCE * float(np.max(loose[1] - loose[0]))
-    half = float(np.max(loose[1] - loose[0])) / 2
+    size = float(np.max(loose[1] - loose[0]))
+    half = size / 2
     centres = ((loose[0] + loose[1]) / 2)[None]
     corners = np.stack(np.meshgrid([-1, 1], [-1, 1], [-1, 1], indexing="ij"), axis=-1).reshape(8, 3)
-    best = -np.inf
-    while len(centres) and half > tolerance / 2:
+    best, tip = -np.inf, np.zeros(3)
+    while len(centres) and half > BOX_TOLERANCE * size / 2:
         half /= 2
         centres = (centres[:, None] + half * corners).reshape(-1, 3)
         distance = solid.signed_distance(centres)
         along = sign * centres[:, axis]
-        if np.any(distance >= 0):  # a ball of that radius about the centre is inside
-            best = max(best, float((along + distance)[distance >= 0].max()))
-        able = (distance > -half * np.sqrt(3)) & (along + half > best + tolerance)
+        inside = np.nonzero(distance >= 0)[0]
+        if len(inside):
+            foremost = inside[np.argsort(-(along + distance)[inside])[:RAYS]]
+            reached, there = _along_rays(solid, centres[foremost], axis, sign)
+            if reached > best:
+                best, tip = reached, there
+        able = (distance > -half * np.sqrt(3)) & (along + half > best + BOX_TOLERANCE * size)
         centres = centres[able]
     if best == -np.inf:
         raise ShapeError("this combination of solids is empty: nothing is left, or none overlap")
+    # the farthest point is known to a box: climb to it
+    across = np.roll(corners[:4] * [0, 1, 1], axis, axis=1)
+    while half > 1e-5 * size:
+        back = tip - sign * half * np.eye(3)[axis]
+        reached, there = _along_rays(solid, back + half * across, axis, sign)
+        if reached > best:
+            best, tip = reached, there
+        else:
+            half /= 2
     return best
+
+
+def _along_rays(
+    solid: Solid, points: FloatArray, axis: int, sign: float
+) -> tuple[float, FloatArray]:
+    """Farthest place reached by going along the axis from points inside to the surface."""
+    places, room = points.copy(), solid.signed_distance(points)
+    started = room >= 0
+    for _ in range(STEPS):
+        places[:, axis] += sign * np.maximum(room, 0.0)  # a ball of that radius is inside
+        room = solid.signed_distance(places)
+    reached = np.where(started, sign * places[:, axis], -np.inf)
+    first = int(reached.argmax())
+    return float(reached[first]), places[first]
 
 
 def occupied(thing: Body | Particle, grid: SampleGrid) -> NDArray[np.float32]:

@@ -47,7 +47,7 @@ def _cut(distance, n0, n1, n2):  # type: ignore[no-untyped-def]
     return part if level <= 0.5 else 1.0 - part
 
 
-@numba.njit(cache=True, nogil=True, parallel=True)
+@numba.njit(cache=True, nogil=True)
 def plane_in_cube(distance: FloatArray, normal: FloatArray) -> FloatArray:
     """Filled part of unit cubes cut by planes (Scardovelli & Zaleski 2000).
 
@@ -68,13 +68,13 @@ def plane_in_cube(distance: FloatArray, normal: FloatArray) -> FloatArray:
     array([0.5 , 0.75, 1.  ])
     """
     out = np.empty(distance.shape)
-    for i in numba.prange(distance.shape[0]):
+    for i in range(distance.shape[0]):
         for q in range(distance.shape[1]):
             out[i, q] = _cut(distance[i, q], normal[i, 0], normal[i, 1], normal[i, 2])
     return out
 
 
-@numba.njit(cache=True, nogil=True, parallel=True)
+@numba.njit(cache=True, nogil=True)
 def blocks_filled(distance: FloatArray, step: float) -> NDArray[np.float32]:
     """Filled part of the voxels of small blocks, from the signed distances of their centres.
 
@@ -95,7 +95,7 @@ def blocks_filled(distance: FloatArray, step: float) -> NDArray[np.float32]:
     """
     count, b = distance.shape[0], distance.shape[1]
     out = np.empty(distance.shape, dtype=np.float32)
-    for n in numba.prange(count):
+    for n in range(count):
         d = distance[n]
         for i in range(b):
             i0, i1 = max(i - 1, 0), min(i + 1, b - 1)

@@ -183,12 +183,12 @@ def ellipsoid_mean_curvature(half: FloatArray) -> float:
     return float(2 * np.pi * 2 * (weights @ reach.mean(axis=1)) / 2)
 
 
-@numba.njit(cache=True, nogil=True, parallel=True)
+@numba.njit(cache=True, nogil=True)
 def _ellipsoid_distance(points, half):  # type: ignore[no-untyped-def]
     """Signed distance; the closest point solves sum (a_i y_i/(t + a_i^2))^2 = 1."""
     out = np.empty(points.shape[0])
     smallest = half.min()
-    for n in numba.prange(points.shape[0]):
+    for n in range(points.shape[0]):
         y0, y1, y2 = abs(points[n, 0]), abs(points[n, 1]), abs(points[n, 2])
         a0, a1, a2 = half[0] ** 2, half[1] ** 2, half[2] ** 2
         level = y0 * y0 / a0 + y1 * y1 / a1 + y2 * y2 / a2

@@ -157,11 +157,11 @@ def _to_triangle(p, a, b, c):  # type: ignore[no-untyped-def]
     return x * x + y * y + z * z
 
 
-@numba.njit(cache=True, nogil=True, parallel=True)
+@numba.njit(cache=True, nogil=True)
 def _polyhedron_distance(points, planes, triangles):  # type: ignore[no-untyped-def]
     """Signed distance, inside positive; planes (k, 4) as normal and offset, outside positive."""
     out = np.empty(points.shape[0])
-    for n in numba.prange(points.shape[0]):
+    for n in range(points.shape[0]):
         p = points[n]
         beyond = -np.inf
         for k in range(planes.shape[0]):
@@ -295,12 +295,12 @@ def _sides(corners: FloatArray) -> tuple[FloatArray, FloatArray]:
     return normals, np.einsum("ij,ij->i", normals, corners)
 
 
-@numba.njit(cache=True, nogil=True, parallel=True)
+@numba.njit(cache=True, nogil=True)
 def _polygon_distance(points, corners):  # type: ignore[no-untyped-def]
     """Signed distance in the plane from a convex polygon, inside positive."""
     out = np.empty(points.shape[0])
     count = corners.shape[0]
-    for n in numba.prange(points.shape[0]):
+    for n in range(points.shape[0]):
         x, y = points[n, 0], points[n, 1]
         nearest, inside = np.inf, True
         for i in range(count):

@@ -165,13 +165,13 @@ class Helix(Solid):
         return self.thickness
 
 
-@numba.njit(cache=True, nogil=True, parallel=True)
+@numba.njit(cache=True, nogil=True)
 def _helix_distance(points, radius, rise, end):  # type: ignore[no-untyped-def]
     """Distance from the curve (radius cos t, radius sin t, rise t), |t| <= end."""
     out = np.empty(points.shape[0])
     count = max(int(np.ceil(2 * end / (2 * np.pi) * SCAN)), 2)
     step = 2 * end / count
-    for n in numba.prange(points.shape[0]):
+    for n in range(points.shape[0]):
         x, y, z = points[n, 0], points[n, 1], points[n, 2]
         best, start = np.inf, 0.0
         for i in range(count + 1):

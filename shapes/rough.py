@@ -176,12 +176,12 @@ def _synthesis(
     return value, slope, across / sine[:, None]
 
 
-@numba.njit(cache=True, nogil=True, parallel=True)
+@numba.njit(cache=True, nogil=True)
 def _looked_up(points, radius, upright):  # type: ignore[no-untyped-def]
     """Radius less distance from the centre, and tilt, by bilinear interpolation, (N, 2)."""
     rows, columns = radius.shape
     out = np.empty((points.shape[0], 2))
-    for n in numba.prange(points.shape[0]):
+    for n in range(points.shape[0]):
         x, y, z = points[n, 0], points[n, 1], points[n, 2]
         across = np.hypot(x, y)
         u = np.arctan2(across, z) / np.pi * (rows - 1)

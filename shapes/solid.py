@@ -7,6 +7,8 @@ are settled by one evaluation.
 
 from __future__ import annotations
 
+import os
+from concurrent.futures import ThreadPoolExecutor
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -128,13 +130,23 @@ class Solid:
         by_block[inner[0], :, inner[1], :, inner[2], :] = 1.0
         near = np.stack(np.nonzero((np.abs(distance) < reach).reshape(blocks)), axis=1)
         offsets = SampleGrid(np.zeros(3), grid.step, (BLOCK, BLOCK, BLOCK)).points()
-        for start in range(0, len(near), CHUNK):
+
+        def sample(start: int) -> None:
             some = near[start : start + CHUNK]
             corners = grid.origin + grid.step * BLOCK * some
             points = (corners[:, None, :] + offsets[None]).reshape(-1, 3)
             distance = self.surface_distance(points).reshape(len(some), BLOCK, BLOCK, BLOCK)
             filled = blocks_filled(distance, grid.step)
             by_block[some[:, 0], :, some[:, 1], :, some[:, 2], :] = filled
+
+        starts = range(0, len(near), CHUNK)
+        if len(starts) > 1:
+            # distances release the interpreter's lock, so plain threads share them out
+            with ThreadPoolExecutor(os.cpu_count()) as workers:
+                list(workers.map(sample, starts))
+        else:
+            for start in starts:
+                sample(start)
         nx, ny, nz = grid.shape
         return padded[:nx, :ny, :nz]
 

@@ -155,11 +155,11 @@ class Spikes(Solid):
         return np.concatenate(points)
 
 
-@numba.njit(cache=True, nogil=True, parallel=True)
+@numba.njit(cache=True, nogil=True)
 def _spikes_distance(points, directions, between, start, base, tip):  # type: ignore[no-untyped-def]
     """Signed distance from the union of hulls of two spheres on each direction."""
     out = np.empty(points.shape[0])
-    for n in numba.prange(points.shape[0]):
+    for n in range(points.shape[0]):
         x, y, z = points[n, 0], points[n, 1], points[n, 2]
         square = x * x + y * y + z * z
         best = -np.inf
