@@ -4,9 +4,11 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import permutations
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import csr_array
 
 from .body import FloatArray, ShapeError
 from .plane import plane_in_cube
@@ -76,9 +78,24 @@ def ball_window(width: float = 2.2, samples: int = 4) -> Window:
     for i, j in MIXED:
         second = _fit(rows, bend * normals[:, i] * normals[:, j], places, (i, j)) * samples**2
         weights.append(second - fraction * second.sum())
+    fitted = _symmetric(np.array(weights), places)
     offsets = np.round(places + (samples - 1) / 2).astype(np.int64)
     beyond = max(int(-offsets.min()), int(offsets.max()) - samples + 1)
-    return Window(offsets, np.array(weights), -(-beyond // samples))
+    return Window(offsets, fitted, -(-beyond // samples))
+
+
+def _symmetric(weights: FloatArray, places: FloatArray) -> FloatArray:
+    """Mean over the six orders of the axes: the planes fitted to would tell x from z."""
+    labels = [(), (0,), (1,), (2,), *MIXED]
+    row = {label: i for i, label in enumerate(labels)}
+    at = {tuple(place): i for i, place in enumerate(places)}
+    out = np.zeros_like(weights)
+    for order in permutations(range(3)):
+        image = [at[tuple(place)] for place in places[:, order]]
+        for i, label in enumerate(labels):
+            moved = tuple(sorted(order.index(axis) for axis in label))
+            out[row[moved], image] += weights[i] / 6
+    return out
 
 
 def plane_fraction(distance: FloatArray, width: float) -> FloatArray:
@@ -125,10 +142,10 @@ def _fit(
     )
     _, orbit = np.unique(key, axis=0, return_inverse=True)
     sign = np.prod(np.sign(places[:, signed]), axis=1)
-    basis = np.zeros((len(places), int(orbit.max()) + 1))
-    basis[np.arange(len(places)), orbit.ravel()] = sign
-    length = np.linalg.norm(basis, axis=0)
-    basis = basis[:, length > 0] / length[length > 0]
-    matrix = rows.reshape(-1, len(places)) @ basis
+    length = np.sqrt(np.bincount(orbit.ravel(), sign**2))[orbit.ravel()]
+    used = np.nonzero(sign)[0]
+    _, column = np.unique(orbit.ravel()[used], return_inverse=True)
+    basis = csr_array((sign[used] / length[used], (used, column)), (len(places), column.max() + 1))
+    matrix = (basis.T @ rows.reshape(-1, len(places)).T).T
     normal = matrix.T @ matrix + RIDGE * len(matrix) * np.eye(matrix.shape[1])
     return basis @ np.linalg.solve(normal, matrix.T @ target.ravel())
