@@ -73,7 +73,7 @@ def aggregate_centres(number: int, dimension: float, prefactor: float, seed: int
     >>> centres = aggregate_centres(50, 1.8, 1.3, seed=1)
     >>> spread = centres - centres.mean(axis=0)
     >>> gyration = np.sqrt((spread**2).sum() / 50 + 3 / 5)
-    >>> round(1.3 * gyration**1.8, 3)
+    >>> round(float(1.3 * gyration**1.8), 3)
     50.0
     """
     for attempt in range(RESTARTS):

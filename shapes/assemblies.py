@@ -50,13 +50,14 @@ def multilayer(
 ) -> Particle:
     """Core of any shape with several layers, each of even thickness."""
     count = len(thicknesses)
-    require(count > 0, "multilayer: thicknesses must list at least one layer (nm)")
+    require(count > 0, "multilayer: thicknesses must list a layer or more (nm)", ("thicknesses",))
     if not materials:
         both = (material, of.materials[-1])
         materials = tuple(both[(count - 1 - k) % 2] for k in range(count))
     require(
         len(materials) == count,
         f"multilayer: materials lists {len(materials)} names for {count} thicknesses",
+        ("materials",),
     )
     coated = _coated(of, tuple(thicknesses), tuple(materials))
     return Particle(coated.parts, "multilayer", coated.outline, coated.thin, of.gap)
@@ -74,6 +75,7 @@ def hollow(of: Particle, thickness: float, material: str = "gold") -> Particle:
         thin is None or 2 * thickness < thin,
         f"hollow: thickness = {thickness:g} must be less than half of the solid's thinnest part, "
         f"{(thin or 0.0) / 2:g} nm",
+        ("thickness",),
     )
     return particle_of(Shell(solid, thickness), material, "hollow")
 
@@ -91,6 +93,7 @@ def dimer(of: Particle, gap: float, axis: str = "x", material: str = "gold") -> 
         gap > -first.extent[k],
         f"dimer: gap = {gap:g} nm makes the two coincide; it must be more than "
         f"{-first.extent[k]:g} nm",
+        ("gap",),
     )
     offset = np.zeros(3)
     offset[k] = -(first.extent[k] + gap) / 2
@@ -111,7 +114,7 @@ def chain(
     k = "xyz".index(axis)
     one = of.centred()
     pitch = one.extent[k] + gap
-    require(pitch > 0, f"chain: gap = {gap:g} must be more than {-one.extent[k]:g} nm")
+    require(pitch > 0, f"chain: gap = {gap:g} must be more than {-one.extent[k]:g} nm", ("gap",))
     places = np.zeros((number, 3))
     places[:, k] = pitch * (np.arange(number) - (number - 1) / 2)
     return _together([one.moved(place) for place in places], gap, "chain")
@@ -129,7 +132,7 @@ def ring(of: Particle, number: int, gap: float, material: str = "gold") -> Parti
     # neighbours meet at the plane halfway between them: their reach towards it sets the circle
     reach = (one.rotated(-half).bounds[1][1] - one.rotated(half).bounds[0][1]) / 2
     radius = (reach + gap / 2) / np.sin(np.radians(half))
-    require(radius > 0, f"ring: gap = {gap:g} must be more than {-2 * reach:g} nm")
+    require(radius > 0, f"ring: gap = {gap:g} must be more than {-2 * reach:g} nm", ("gap",))
     out = one.moved((radius, 0.0, 0.0))
     members = [out.rotated(2 * half * k) for k in range(number)]
     return _together(members, gap, "ring")

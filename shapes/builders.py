@@ -290,6 +290,6 @@ def rough_sphere(
 
 def three(values: Sequence[float], name: str) -> tuple[float, float, float]:
     """Three numbers, or ShapeError."""
-    require(len(values) == 3, f"{name} = {values} must be three lengths, along x, y and z (nm)")
+    require(len(values) == 3, f"{name} = {values} must be three lengths (nm)", (name,))
     x, y, z = (float(v) for v in values)
     return x, y, z

@@ -266,7 +266,7 @@ def _typed(shape_name: str, parameter: Parameter, value: Any) -> Any:
         return tuple(float(v) for v in value)
     if kind == "choice":
         if value not in parameter.choices:
-            near = difflib.get_close_matches(str(value), parameter.choices, n=1)
+            near = difflib.get_close_matches(str(value).lower(), parameter.choices, n=1)
             hint = f"; did you mean {near[0]!r}?" if near else ""
             raise wrong(f"one of {', '.join(parameter.choices)}{hint}")
         return value

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from .body import Body, Bounds, FloatArray, Particle, SampleGrid, ShapeError
 from .solid import Solid
 
-VOLUME_SAMPLES = 160  # along the largest extent
+VOLUME_SAMPLES = 120  # along the largest extent
 SLAB = 2_000_000  # samples held at once
 BOX_TOLERANCE = 4e-3  # of the largest extent: how far ahead a corner may be overlooked
 RAYS, STEPS = 64, 12

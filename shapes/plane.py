@@ -10,6 +10,7 @@ from .body import FloatArray
 
 FLAT = 1e-9  # share of a normal's component below which the plane counts as along that axis
 MOST = 0.05  # voxels: bound on the correction for curvature, reached at edges only
+FAR = 0.92  # voxels: half the diagonal, and room for the correction
 KINK = 0.3  # of a distance's slope: less means a ridge, where no one plane stands for the surface
 
 
@@ -84,8 +85,9 @@ def blocks_filled(distance: FloatArray, step: float) -> NDArray[np.float32]:
 
     Parameters
     ----------
-    distance : (blocks, b, b, b) array
-        Signed distance at the centres, inside positive, nm.
+    distance : (blocks, b + 2, b + 2, b + 2) array
+        Signed distance at the centres of the voxels and of one more layer around them, inside
+        positive, nm.
     step : float
         Edge of a voxel, nm.
 
@@ -93,34 +95,30 @@ def blocks_filled(distance: FloatArray, step: float) -> NDArray[np.float32]:
     -------
     (blocks, b, b, b) float32 array
     """
-    count, b = distance.shape[0], distance.shape[1]
-    out = np.empty(distance.shape, dtype=np.float32)
+    count, b = distance.shape[0], distance.shape[1] - 2
+    out = np.empty((count, b, b, b), dtype=np.float32)
     for n in range(count):
         d = distance[n]
-        for i in range(b):
-            i0, i1 = max(i - 1, 0), min(i + 1, b - 1)
-            for j in range(b):
-                j0, j1 = max(j - 1, 0), min(j + 1, b - 1)
-                for k in range(b):
+        for i in range(1, b + 1):
+            for j in range(1, b + 1):
+                for k in range(1, b + 1):
                     here = d[i, j, k] / step
-                    if here >= 0.87:  # half the diagonal of a voxel
-                        out[n, i, j, k] = 1.0
+                    if here >= FAR:
+                        out[n, i - 1, j - 1, k - 1] = 1.0
                         continue
-                    if here <= -0.87:
-                        out[n, i, j, k] = 0.0
+                    if here <= -FAR:
+                        out[n, i - 1, j - 1, k - 1] = 0.0
                         continue
-                    k0, k1 = max(k - 1, 0), min(k + 1, b - 1)
-                    gx = (d[i1, j, k] - d[i0, j, k]) / ((i1 - i0) * step)
-                    gy = (d[i, j1, k] - d[i, j0, k]) / ((j1 - j0) * step)
-                    gz = (d[i, j, k1] - d[i, j, k0]) / ((k1 - k0) * step)
+                    gx = (d[i + 1, j, k] - d[i - 1, j, k]) / (2 * step)
+                    gy = (d[i, j + 1, k] - d[i, j - 1, k]) / (2 * step)
+                    gz = (d[i, j, k + 1] - d[i, j, k - 1]) / (2 * step)
                     slope = np.sqrt(gx * gx + gy * gy + gz * gz)
-                    a, e, c = min(max(i, 1), b - 2), min(max(j, 1), b - 2), min(max(k, 1), b - 2)
-                    bend = d[a - 1, j, k] - 2 * d[a, j, k] + d[a + 1, j, k]
-                    bend += d[i, e - 1, k] - 2 * d[i, e, k] + d[i, e + 1, k]
-                    bend += d[i, j, c - 1] - 2 * d[i, j, c] + d[i, j, c + 1]
+                    bend = d[i + 1, j, k] + d[i - 1, j, k] + d[i, j + 1, k] + d[i, j - 1, k]
+                    bend += d[i, j, k + 1] + d[i, j, k - 1] - 6 * d[i, j, k]
                     here += min(max(bend / (24 * step), -MOST), MOST)
                     if slope > KINK:
-                        out[n, i, j, k] = _cut(here, gx / slope, gy / slope, gz / slope)
+                        filled = _cut(here, gx / slope, gy / slope, gz / slope)
                     else:
-                        out[n, i, j, k] = min(max(0.5 + here, 0.0), 1.0)
+                        filled = min(max(0.5 + here, 0.0), 1.0)
+                    out[n, i - 1, j - 1, k - 1] = filled
     return out

@@ -129,13 +129,15 @@ class Solid:
         inner = np.nonzero((distance >= reach).reshape(blocks))
         by_block[inner[0], :, inner[1], :, inner[2], :] = 1.0
         near = np.stack(np.nonzero((np.abs(distance) < reach).reshape(blocks)), axis=1)
-        offsets = SampleGrid(np.zeros(3), grid.step, (BLOCK, BLOCK, BLOCK)).points()
+        # with a layer around, so that it does not matter where blocks begin
+        wide = BLOCK + 2
+        offsets = SampleGrid(np.full(3, -grid.step), grid.step, (wide, wide, wide)).points()
 
         def sample(start: int) -> None:
             some = near[start : start + CHUNK]
             corners = grid.origin + grid.step * BLOCK * some
             points = (corners[:, None, :] + offsets[None]).reshape(-1, 3)
-            distance = self.surface_distance(points).reshape(len(some), BLOCK, BLOCK, BLOCK)
+            distance = self.surface_distance(points).reshape(len(some), wide, wide, wide)
             filled = blocks_filled(distance, grid.step)
             by_block[some[:, 0], :, some[:, 1], :, some[:, 2], :] = filled
 
@@ -222,10 +224,10 @@ class Solid:
         return self.difference(other)
 
 
-def require(condition: bool, message: str) -> None:
+def require(condition: bool, message: str, where: tuple[str, ...] = ()) -> None:
     """Raise ShapeError with `message` unless `condition` holds."""
     if not condition:
-        raise ShapeError(message)
+        raise ShapeError(message, where)
 
 
 def positive(**values: float) -> None:

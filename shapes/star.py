@@ -101,7 +101,11 @@ def _random_apart(count: int, rng: np.random.Generator) -> FloatArray:
             chosen = np.concatenate([chosen, vector[None]])
             if len(chosen) == count:
                 break
-    require(len(chosen) == count, f"no room for {count} random spikes; use arrangement 'even'")
+    require(
+        len(chosen) == count,
+        f"no room for {count} random spikes; use arrangement 'even'",
+        ("spikes",),
+    )
     return chosen
 
 
@@ -126,6 +130,7 @@ class Spikes(Solid):
             shortest > self.base - self.tip,
             f"length: the shortest spike, {self.lengths.min():.3g} nm, must be longer than its "
             f"base radius, {self.base:g} nm",
+            ("length",),
         )
 
     def signed_distance(self, points: FloatArray) -> FloatArray:

@@ -20,7 +20,7 @@ if TYPE_CHECKING:
 
 TOLERANCE = 1e-7  # of the largest extent; distances are good to about 1e-12 of it
 FEW, MANY, LIMIT = 12, 400, 20_000
-ORDERS = (12, 10, 8, 6, 5, 4, 3, 2)
+ORDERS = range(24, 1, -1)
 TURN_UNLIKELY = 1.0  # radians: no rational part of a full turn, so only a round body passes
 
 Field = Callable[[FloatArray], FloatArray]

@@ -72,13 +72,13 @@ def ball_window(width: float = 2.2, samples: int = 4) -> Window:
     bend = -1.5 / radius**2 * t * (np.abs(t) < 1)
     fraction = _fit(rows, value, places, ())
     fraction /= fraction.sum()
-    weights = [fraction]
+    rows_of_weights = [fraction]
     for k in range(3):
-        weights.append(_fit(rows, slope * normals[:, k], places, (k,)) * samples)
+        rows_of_weights.append(_fit(rows, slope * normals[:, k], places, (k,)) * samples)
     for i, j in MIXED:
         second = _fit(rows, bend * normals[:, i] * normals[:, j], places, (i, j)) * samples**2
-        weights.append(second - fraction * second.sum())
-    fitted = _symmetric(np.array(weights), places)
+        rows_of_weights.append(second - fraction * second.sum())
+    fitted = _symmetric(np.array(rows_of_weights), places)
     offsets = np.round(places + (samples - 1) / 2).astype(np.int64)
     beyond = max(int(-offsets.min()), int(offsets.max()) - samples + 1)
     return Window(offsets, fitted, -(-beyond // samples))

@@ -40,17 +40,17 @@ def test_cubes_along_a_line_add_up() -> None:
 @pytest.mark.parametrize("normal", [(1, 0, 0), (3, 1, 2), (1, 1, 1)])
 def test_blocks_of_plane_distances_are_exact(normal: tuple[float, float, float]) -> None:
     unit = np.array(normal, float) / np.linalg.norm(normal)
-    axis = np.arange(8) - 3.5
+    axis = np.arange(10) - 4.5
     points = np.stack(np.meshgrid(axis, axis, axis, indexing="ij"), axis=-1)
     distance = points @ unit + 0.2
-    exact = plane_in_cube(distance.reshape(1, -1), unit[None]).reshape(8, 8, 8)
+    exact = plane_in_cube(distance[1:-1, 1:-1, 1:-1].reshape(1, -1), unit[None]).reshape(8, 8, 8)
     # float32 output
     assert np.allclose(blocks_filled(2.5 * distance[None], 2.5)[0], exact, atol=1e-6)
 
 
 def test_blocks_hold_the_volume_of_a_small_ball() -> None:
     # the averaged distance leaves an error of fourth order: 1e-3 at a radius of three voxels
-    axis = np.arange(8) - 3.5
+    axis = np.arange(10) - 4.5
     points = np.stack(np.meshgrid(axis, axis, axis, indexing="ij"), axis=-1)
     filled = blocks_filled(3 - np.linalg.norm(points, axis=-1)[None], 1.0)
     assert filled.sum(dtype=float) == pytest.approx(4 / 3 * np.pi * 27, rel=2e-3)
