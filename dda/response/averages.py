@@ -29,8 +29,8 @@ class OrientationAverage:
     way : {"t-matrix", "quadrature"}
     order : int
         Highest multipole order, or the number of directions.
-    products : int
-        Products with the interaction matrix.
+    products : float
+        Products with the interaction matrix, in units of one with all cells.
     status : str
     """
 
@@ -46,7 +46,7 @@ class OrientationAverage:
     area: float
     way: str = "t-matrix"
     order: int = field(default=0)
-    products: int = 0
+    products: float = 0.0
     status: str = "converged"
 
     @property

@@ -26,7 +26,7 @@ class Column:
     sector : int
         Parity sector the field belongs to.
     incident : ndarray, shape (c, 3)
-        Incident field at `Sectors.cells`.
+        Incident field, a vector of the sector.
     """
 
     sector: int
@@ -41,7 +41,7 @@ class Solved:
     ----------
     sector : int
     dipoles : ndarray of complex, shape (c, 3)
-        On `Sectors.cells`, nm^3 per unit amplitude.
+        Vector of the sector, nm^3 per unit amplitude.
     incident : ndarray, shape (c, 3)
     remainder : ndarray of complex, shape (c, 3)
         What is left of the incident field, ``E - A p``.
@@ -82,14 +82,14 @@ def solve_columns(
     limit: int = 2000,
     known: Sequence[Solved] = (),
     monitor: Callable[[int], None] | None = None,
-) -> tuple[list[Solved], int]:
-    """Solve columns side by side, one of each sector at a time.
+) -> tuple[list[Solved], float]:
+    """Solve columns with conjugate gradients (COCG), sector by sector.
 
-    Every sector runs its own conjugate gradients (COCG), but the search vectors of all sectors are
-    added up before the product with the interaction matrix and its result is taken apart again, so
-    that a product serves up to eight columns. A column starts from the best combination of those
-    solved before in its sector (Galerkin, at no product). One that stalls is handed to
-    `dda.solve`.
+    In mirror sectors a product is one on a part of the cells. Otherwise the sectors go side by
+    side: their search vectors are added up before a product with all cells and its result is taken
+    apart again, so that it serves a column of every sector. A column starts from the best
+    combination of those solved before in its sector (Galerkin, at no product). One that stalls is
+    handed to `dda.solve`.
 
     Parameters
     ----------
@@ -113,89 +113,106 @@ def solve_columns(
     -------
     solved : list of Solved
         As `columns`.
-    products : int
-        Products with the interaction matrix on all cells.
+    products : float
+        Products with the interaction matrix, in units of one with all cells.
 
     References
     ----------
     van der Vorst, H. A., Melissen, J. B. M. (1990), IEEE Trans. Magn. 26, 706.
     """
+    work = _Operator(system, sectors)
     waiting: dict[int, list[int]] = {}
     for j, column in enumerate(columns):
         waiting.setdefault(column.sector, []).append(j)
     solved: dict[int, Solved] = {}
     runs: list[_Run] = []
-    whole = np.empty((system.n, 3), system.dtype)
-    products = 0
 
     def start(sector: int) -> None:
         j = waiting[sector].pop(0)
         earlier = [s for s in (*known, *solved.values()) if s.sector == sector]
-        rules = (tolerance, limit, enough)
-        runs.append(_Run(j, columns[j], system, sectors, earlier, rules))
+        runs.append(_Run(j, columns[j], work, earlier, (tolerance, limit, enough)))
 
     for sector in waiting:
         start(sector)
     while runs:
-        active = np.array([run.column.sector for run in runs])
-        sectors.spread(np.stack([run.search for run in runs]), active, whole)
-        product = system.matvec(whole)
-        products += 1
-        parts = np.empty((len(runs), len(sectors.cells), 3), system.dtype)
-        for run, part in zip(runs, sectors.gather(product, active, parts), strict=True):
-            run.descend(part)
-        rests = np.stack([run.r for run in runs])
-        product = system.precondition(sectors.spread(rests, active, whole))
-        for run, part in zip(runs, sectors.gather(product, active, parts), strict=True):
-            run.turn(part)
+        active = [run for run in runs if not run.status]
+        homes = [run.column.sector for run in active]
+        for run, q in zip(active, work.products([r.search for r in active], homes), strict=True):
+            run.descend(q)
+        for run, z in zip(active, work.preconditioned([r.r for r in active], homes), strict=True):
+            run.turn(z)
         for run in [run for run in runs if run.status]:
             runs.remove(run)
             finished = run.result()
             if finished.status != "converged":
-                finished, extra = _rescued(system, sectors, run)
-                products += extra
+                finished = _rescued(work, run)
             solved[run.number] = finished
             if monitor is not None:
                 monitor(len(solved))
             if waiting[run.column.sector]:
                 start(run.column.sector)
-    return [solved[j] for j in range(len(columns))], products
+    return [solved[j] for j in range(len(columns))], work.count
+
+
+class _Operator:
+    """The system's matrix and preconditioner on vectors of sectors; counts products."""
+
+    def __init__(self, system: System, sectors: Sectors):
+        self.system, self.sectors = system, sectors
+        self.count = 0.0
+        self._whole = np.empty((system.n, 3), system.dtype)
+
+    def products(self, vectors: list[np.ndarray], homes: list[int]) -> list[np.ndarray]:
+        if not vectors:
+            return []
+        if self.sectors.mirrored:
+            self.count += len(vectors) / self.sectors.count
+            parts = zip(vectors, homes, strict=True)
+            return [self.sectors.mirrored[s].matvec(v) for v, s in parts]
+        self.count += 1
+        return self._apart(self.system.matvec, vectors, homes)
+
+    def preconditioned(self, vectors: list[np.ndarray], homes: list[int]) -> list[np.ndarray]:
+        if not vectors:
+            return []
+        if self.sectors.mirrored:
+            parts = zip(vectors, homes, strict=True)
+            return [self.sectors.mirrored[s].precondition(v) for v, s in parts]
+        return self._apart(self.system.precondition, vectors, homes)
+
+    def _apart(self, operator, vectors: list[np.ndarray], homes: list[int]) -> list[np.ndarray]:
+        active, parts = np.array(homes), np.stack(vectors)
+        done = operator(self.sectors.spread(parts, active, self._whole))
+        return list(self.sectors.gather(done, active, np.empty_like(parts)))
 
 
 class _Run:
     """Conjugate gradients of one column, a step in two halves."""
 
-    def __init__(self, number, column: Column, system: System, sectors: Sectors, known, rules):
+    def __init__(self, number: int, column: Column, work: _Operator, known, rules):
         self.number, self.column = number, column
         self.tolerance, self.limit, self.enough = rules
-        self.weight = sectors.weight
         self.status, self.steps = "", 0
-        b = column.incident.astype(system.dtype)
+        b = column.incident.astype(work.system.dtype)
         self.x = np.zeros_like(b)
         self.r = b.copy()
-        start = self._precondition(system, sectors, b)
-        self.norm = _norm(self.weight, start)
+        start = work.preconditioned([b], [column.sector])[0]
+        self.norm = float(np.linalg.norm(start))
         if known and self.norm > 0:
             self._project(known)
-            start = self._precondition(system, sectors, self.r)
-        self.residual = _norm(self.weight, start) / self.norm if self.norm > 0 else 0.0
+            start = work.preconditioned([self.r], [column.sector])[0]
+        self.residual = float(np.linalg.norm(start)) / self.norm if self.norm > 0 else 0.0
         self.search = start.copy()
-        self.rho = _dot(self.weight, self.r, start)
-        self.values = [_dot(self.weight, b, self.x) + _dot(self.weight, self.x, self.r)]
+        self.rho = _dot(self.r, start)
+        self.values = [_dot(b, self.x) + _dot(self.x, self.r)]
         if self.residual <= self.tolerance:
             self.status = "converged"
-
-    def _precondition(self, system: System, sectors: Sectors, r: np.ndarray) -> np.ndarray:
-        sector = np.array([self.column.sector])
-        whole = np.empty((system.n, 3), system.dtype)
-        done = system.precondition(sectors.spread(r[None], sector, whole))
-        return sectors.gather(done, sector, np.empty_like(r[None]))[0]
 
     def _project(self, known) -> None:
         """Best start in the span of known solutions x, A x = their incident field - remainder."""
         x = np.stack([s.dipoles for s in known])
         image = np.stack([s.image for s in known])
-        flat = (x * self.weight[:, None]).reshape(len(known), -1)
+        flat = x.reshape(len(known), -1)
         y = np.linalg.lstsq(flat @ image.reshape(len(known), -1).T, flat @ self.r.ravel())[0]
         self.x += np.tensordot(y, x, 1).astype(self.x.dtype)
         self.r -= np.tensordot(y, image, 1).astype(self.x.dtype)
@@ -204,7 +221,7 @@ class _Run:
         if self.status:
             return
         self.steps += 1
-        pq = _dot(self.weight, self.search, q)
+        pq = _dot(self.search, q)
         if pq == 0 or self.rho == 0 or not np.isfinite(pq):
             self.status = "stalled"
             return
@@ -222,7 +239,7 @@ class _Run:
     def turn(self, z: np.ndarray) -> None:
         if self.status:
             return
-        self.residual = _norm(self.weight, z) / self.norm
+        self.residual = float(np.linalg.norm(z)) / self.norm
         known = self.residual < _LEAST_RESIDUAL and self.enough is not None
         if self.residual <= self.tolerance or (
             known and self.enough(self.number, self.values[-1], self.drift)
@@ -231,7 +248,7 @@ class _Run:
         elif self.steps >= self.limit:
             self.status = "limit"
         else:
-            fresh = _dot(self.weight, self.r, z)
+            fresh = _dot(self.r, z)
             _extend(self.search, z, self.x.dtype.type(fresh / self.rho))
             self.rho = fresh
 
@@ -260,20 +277,20 @@ class _Given:
         return self.values
 
 
-def _rescued(system: System, sectors: Sectors, run: _Run) -> tuple[Solved, int]:
+def _rescued(work: _Operator, run: _Run) -> Solved:
     """Go on from where a column stopped with the program's general solver."""
-    column = run.column
-    sector = np.array([column.sector])
+    column, system, sectors = run.column, work.system, work.sectors
+    home = np.array([column.sector])
     whole = np.empty((system.n, 3), complex)
-    field_ = sectors.spread(column.incident[None].astype(complex), sector, whole)
-    start = sectors.spread(run.x[None], sector, np.empty((system.n, 3), system.dtype))
-    answer = solve(system, _Given(field_), tolerance=run.tolerance, limit=run.limit, start=start)
+    incident = sectors.spread(column.incident[None].astype(complex), home, whole)
+    start = sectors.spread(run.x[None], home, np.empty((system.n, 3), system.dtype))
+    answer = solve(system, _Given(incident), tolerance=run.tolerance, limit=run.limit, start=start)
+    work.count += answer.products / (sectors.count if sectors.mirrored else 1)
     p = np.ascontiguousarray(answer.p, system.dtype)
-    x = sectors.gather(p, sector, np.empty_like(run.x[None]))[0]
-    image = sectors.gather(system.matvec(p), sector, np.empty_like(run.x[None]))[0]
-    remainder = column.incident - image
-    value = _dot(sectors.weight, column.incident, x) + _dot(sectors.weight, x, remainder)
-    done = Solved(
+    x = sectors.gather(p, home, np.empty_like(run.x[None]))[0]
+    remainder = column.incident - work.products([x], [column.sector])[0]
+    value = _dot(column.incident.astype(x.dtype), x) + _dot(x, remainder)
+    return Solved(
         column.sector,
         x,
         column.incident,
@@ -284,24 +301,11 @@ def _rescued(system: System, sectors: Sectors, run: _Run) -> tuple[Solved, int]:
         run.steps + answer.iterations,
         answer.status,
     )
-    return done, answer.products + 1
 
 
-@njit(nogil=True, cache=True)
-def _dot(weight, a, b):  # pragma: no cover - compiled
-    total = 0j
-    for i in range(len(a)):
-        total += weight[i] * (a[i, 0] * b[i, 0] + a[i, 1] * b[i, 1] + a[i, 2] * b[i, 2])
-    return total
-
-
-@njit(nogil=True, cache=True)
-def _norm(weight, a):  # pragma: no cover - compiled
-    total = 0.0
-    for i in range(len(a)):
-        for c in range(3):
-            total += weight[i] * (a[i, c].real ** 2 + a[i, c].imag ** 2)
-    return np.sqrt(total)
+def _dot(a: np.ndarray, b: np.ndarray) -> complex:
+    """Without a conjugate, and summed in double precision."""
+    return complex(np.sum(np.einsum("ia,ia->i", a, b), dtype=complex))
 
 
 @njit(nogil=True, cache=True)

@@ -2,8 +2,9 @@
 
 A cubic lattice can have 48 symmetries: the matrices that exchange axes and change their signs. The
 sign changes among them commute, so every field is a sum of fields that each of them keeps up to a
-sign. Such a parity sector is solved by itself, and one product with the interaction matrix serves
-a vector of every sector at once.
+sign. Such a parity sector is solved by itself: on a part of the cells where mirrors make the
+sectors, and otherwise (half turns, inversion) on all cells but for a vector of every sector at
+once.
 """
 
 from __future__ import annotations
@@ -15,6 +16,7 @@ import numpy as np
 from numba import njit
 
 from ..lattice.linear_system import System
+from ..lattice.sectors import Sector, sectors
 
 # Voxelization makes mirror images equal to the last bits, but cells after an exchange of axes only
 # to a per cent or so of a surface cell's tensor (the signs of these deviations alternate).
@@ -40,8 +42,11 @@ class Sectors:
         One cell of every set of images.
     images : ndarray of int, shape (f, c)
         The cell that each sign change takes it to.
-    weight : ndarray, shape (c,)
-        Number of different cells in its set.
+    scale : ndarray, shape (c, 1)
+        Square root of the number of different cells in its set. Vectors of a sector are fields on
+        `cells` times this, so that their products are those of the fields on all cells.
+    mirrored : tuple of dda.lattice.sectors.Sector
+        The operators of the sectors if mirrors make all of them, else empty.
     """
 
     group: np.ndarray
@@ -50,7 +55,8 @@ class Sectors:
     centre: np.ndarray
     cells: np.ndarray = field(repr=False)
     images: np.ndarray = field(repr=False)
-    weight: np.ndarray = field(repr=False)
+    scale: np.ndarray = field(repr=False)
+    mirrored: tuple[Sector, ...] = field(repr=False)
 
     @property
     def count(self) -> int:
@@ -58,23 +64,23 @@ class Sectors:
         return len(self.flips)
 
     def spread(self, parts: np.ndarray, sectors: np.ndarray, out: np.ndarray) -> np.ndarray:
-        """Sum of fields of different sectors on all cells.
+        """Field on all cells from vectors of different sectors.
 
         Parameters
         ----------
         parts : ndarray, shape (s, c, 3)
-            On `cells`.
         sectors : ndarray of int, shape (s,)
         out : ndarray, shape (n, 3)
         """
         signs = self.characters[sectors].astype(float)
-        _spread(parts, signs, self.flips.astype(float), self.images, out)
+        _spread(parts / self.scale, signs, self.flips.astype(float), self.images, out)
         return out
 
     def gather(self, whole: np.ndarray, sectors: np.ndarray, out: np.ndarray) -> np.ndarray:
-        """Parts of a field (n, 3) in each of the sectors, to `out` (s, c, 3)."""
+        """Vectors of the sectors in a field (n, 3), to `out` (s, c, 3)."""
         signs = self.characters[sectors].astype(float)
         _gather(whole, signs, self.flips.astype(float), self.images, out)
+        out *= self.scale
         return out
 
 
@@ -105,12 +111,27 @@ def find_sectors(system: System, use: bool = True) -> Sectors:
     group = _group(system, row, low, high) if use else np.eye(3, dtype=int)[None]
     flips = np.array([np.diag(g) for g in group if np.count_nonzero(np.diag(g)) == 3])
     images = np.stack([_image(system.index, np.diag(f), row, low, high) for f in flips])
-    first = np.flatnonzero((images >= np.arange(system.n)).all(axis=0))
-    images = np.ascontiguousarray(images[:, first])
-    ordered = np.sort(images, axis=0)
-    weight = 1.0 + (np.diff(ordered, axis=0) > 0).sum(axis=0)
+    # The last of the images, as the lattice's own sectors have it.
+    chosen = np.flatnonzero((images <= np.arange(system.n)).all(axis=0))
+    images = np.ascontiguousarray(images[:, chosen])
+    copies = 1.0 + (np.diff(np.sort(images, axis=0), axis=0) > 0).sum(axis=0)
     centre = system.cells.origin + system.cells.spacing * (low + high) / 2
-    return Sectors(group, flips, _characters(flips), centre, first, images, weight)
+    characters = _characters(flips)
+    mirrored = _mirrored(system, flips, characters)
+    scale = np.sqrt(copies)[:, None]
+    return Sectors(group, flips, characters, centre, chosen, images, scale, mirrored)
+
+
+def _mirrored(system: System, flips: np.ndarray, characters: np.ndarray) -> tuple[Sector, ...]:
+    mirror = [
+        np.flatnonzero((flips == 1 - 2 * np.eye(3, dtype=int)[a]).all(axis=1)) for a in range(3)
+    ]
+    planes = [len(m) == 1 for m in mirror]
+    if not any(planes) or len(flips) != 2 ** sum(planes):
+        return ()
+    parts = {s.signs: s for s in sectors(system, (planes[0], planes[1], planes[2]))}
+    rows = [tuple(int(c[m[0]]) if len(m) else 0 for m in mirror) for c in characters]
+    return tuple(parts[row] for row in rows)  # type: ignore[index]
 
 
 def _characters(flips: np.ndarray) -> np.ndarray:

@@ -37,8 +37,9 @@ class TMatrix:
         C_abs or C_sca, nm^2.
     solver_error : float
         Estimate of the error of the orientation averages from the iterative solution, nm^2.
-    products : int
-        Products with the interaction matrix it took.
+    products : float
+        Products with the interaction matrix it took, in units of one with all cells (one of a
+        sector of m mirror planes counts 2^-m).
     status : str
         "converged", or that of the worst column.
     """
@@ -51,7 +52,7 @@ class TMatrix:
     r_eff: float
     order_error: float = 0.0
     solver_error: float = 0.0
-    products: int = 0
+    products: float = 0.0
     status: str = "converged"
 
     @property

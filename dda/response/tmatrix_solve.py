@@ -121,7 +121,7 @@ class _Work:
         self.factor = 4j * np.pi * system.k**3
         self.waves: list[_Wave] = []
         self.solved: list[Solved] = []
-        self.products = 0
+        self.products = 0.0
         self.order = 0
         self.values: dict[int, complex] = {}
         self.turns = _cosets(sectors.group)
@@ -137,7 +137,7 @@ class _Work:
         self._balance(before)
         new = self.waves[before:]
         coefficients = np.stack([self._padded(w.coefficients) for w in new])
-        fields = fields_of(coefficients, self.positions, self.system.k)
+        fields = fields_of(coefficients, self.positions, self.system.k) * self.sectors.scale
         columns = [Column(w.sector, e) for w, e in zip(new, fields, strict=True)]
 
         def finished(count: int) -> None:
@@ -262,8 +262,7 @@ class _Work:
     def _assemble(self) -> np.ndarray:
         """T in real waves, rows up to one order more than the columns."""
         rows = self.order + 1
-        weight = self.sectors.weight[:, None]
-        dipoles = np.stack([s.dipoles * weight for s in self.solved])
+        dipoles = np.stack([s.dipoles * self.sectors.scale for s in self.solved])
         columns = moments_of(dipoles, self.positions, self.system.k, rows).T
         columns[self.signs[:, None] != np.array([w.sector for w in self.waves])] = 0
         turned = [d @ self._coefficients for d in self.rotations]
@@ -286,7 +285,7 @@ class _Work:
         """
         sectors, system = self.sectors, self.system
         count = len(self.solved)
-        rests = np.stack([s.remainder * sectors.weight[:, None] for s in self.solved])
+        rests = np.stack([s.remainder for s in self.solved])
         homes = np.array([w.sector for w in self.waves])
         products = np.zeros((len(self.turns), count, count), complex)
         whole = np.empty((system.n, 3), system.dtype)
@@ -300,7 +299,8 @@ class _Work:
                 sectors.spread(self.solved[i].dipoles[None], homes[i : i + 1], whole)
                 turned = np.empty_like(whole)
                 turned[image] = whole @ turn.T
-                products[g, i, same] = np.tensordot(rests[same], turned[sectors.cells], 2)
+                part = turned[sectors.cells] * sectors.scale
+                products[g, i, same] = np.tensordot(rests[same], part, 2)
         return inverse.T @ products.reshape(-1, count)
 
     def _tail(self) -> float:
