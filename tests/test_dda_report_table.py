@@ -11,10 +11,20 @@ from dda.report.table import peak_sentence, spectrum_text, write_csv
 from dda.study.rows import Row
 from dda.study.spectrum import Peak
 
-ASKED = (
-    "wavelength_nm c_ext_nm2 c_abs_nm2 c_sca_nm2 q_ext q_abs q_sca cells spacing_nm iterations "
-    "residual status"
-).split()
+ASKED = [
+    "wavelength_nm",
+    "c_ext_nm2",
+    "c_abs_nm2",
+    "c_sca_nm2",
+    "q_ext",
+    "q_abs",
+    "q_sca",
+    "cells",
+    "spacing_nm",
+    "iterations",
+    "residual",
+    "status",
+]
 
 
 def _row(wavelength, **changes):

@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 #: Every two differ in lightness L* by 12 or more, the first ones by much more, so that they are
 #: told apart in grey; the hues help those who see them.
-PALETTE = ("#F2C14E", "#1B4F8A", "#2FA38A", "#F4EAF8", "#1A1A1A", "#A9477A")
+PALETTE = ("#F2C14E", "#15407A", "#2FA38A", "#F4EAF8", "#1A1A1A", "#A9477A")
 BACKGROUND = "#FFFFFF"
 INK = "#202020"
 
@@ -15,7 +15,7 @@ def material_colours(materials: Sequence[str]) -> dict[str, str]:
     """Return a colour for each material, in the order given; past six they repeat.
 
     >>> material_colours(["gold", "silica"])
-    {'gold': '#F2C14E', 'silica': '#1B4F8A'}
+    {'gold': '#F2C14E', 'silica': '#15407A'}
     """
     return {name: PALETTE[i % len(PALETTE)] for i, name in enumerate(materials)}
 

@@ -89,10 +89,14 @@ def _spelled_out(
 ) -> Any:
     """Put the user's own materials in the place of their names, also inside mixtures."""
     if isinstance(specification, Mapping):
-        return {
+        spelled = {
             key: _spelled_out(value, own, within) if key in _REFERRING else value
             for key, value in specification.items()
         }
+        if isinstance(base := spelled.get("material"), Mapping):
+            # another name for an own material, perhaps with more keys such as extrapolate
+            return {**base, **{key: v for key, v in spelled.items() if key != "material"}}
+        return spelled
     if not isinstance(specification, str) or specification not in own:
         return specification
     if specification in within:
