@@ -24,7 +24,7 @@ from .smeared_sums import add_all, add_close, add_surroundings, phase_count
 SMEAR = 1.75
 
 # Below this many pairs of a point and a cell direct sums are quicker than a mesh.
-_FEW_PAIRS = 2e8
+_FEW_PAIRS = 5e7
 # Pairs, or points of a mesh, between two calls of the progress callback: about a second.
 _PAIRS_AT_ONCE = 1e8
 _POINTS_AT_ONCE = 200_000

@@ -1,0 +1,1 @@
+"""Answers for the bench, made of the responses."""
