@@ -16,8 +16,8 @@ from .body import FloatArray, Mirrors, Particle, SampleGrid, ShapeError
 from .cells import Cells
 from .window import Window, ball_window
 
-OCCUPIED = 0.02  # a cell belongs to the particle when its window holds more than this
-KEPT = 0.018  # what is carried until mirror images have been averaged
+OCCUPIED = 0.005  # a cell belongs to the particle when its window holds more than this
+KEPT = 0.004  # what is carried until mirror images have been averaged
 SLAB_SAMPLES = 12_000_000  # samples of one material held at once
 BEND = 0.2  # cells: weight of second derivatives, which matter where a thin layer has no gradient
 FAINT = 0.02  # 1/cell: gradients below this are noise of the sampling, not an interface

@@ -13,7 +13,7 @@ import numpy as np
 from numba import njit
 from scipy.special import sici
 
-KERNELS = ("fcd", "point")
+KERNELS = ("fcd", "point", "fcd-corners")
 
 
 @dataclass(frozen=True)
@@ -36,8 +36,9 @@ def radial_table(kernel: str, spacing: float, k: float, m_max: int) -> RadialTab
 
     Parameters
     ----------
-    kernel : {"fcd", "point"}
-        Filtered coupled dipoles or point dipoles.
+    kernel : {"fcd", "point", "fcd-corners"}
+        Filtered coupled dipoles, point dipoles, or filtered coupled dipoles whose corners of the
+        Brillouin zone answer like longitudinal waves (see Notes).
     spacing : float
         Edge d of a cell, nm.
     k : float
@@ -57,7 +58,12 @@ def radial_table(kernel: str, spacing: float, k: float, m_max: int) -> RadialTab
     Notes
     -----
     The filtered tensor removes all spatial frequencies above ``k_F = pi/d`` from the
-    free-space tensor, which a lattice of that spacing cannot carry.
+    free-space tensor, which a lattice of that spacing cannot carry. It leaves the corners of the
+    cubic Brillouin zone, outside the sphere of radius k_F, without interaction; there a cell
+    answers with its polarizability alone, which is resonant at eps = -2. "fcd-corners" gives
+    those waves the interaction of longitudinal ones, ``-4 pi/d^3``, resonant at eps = 0 only:
+    with H(R) the sphere's low-pass kernel it subtracts ``(8 pi/3)(1 - H)/d^3`` from the tensor.
+    That is this project's own; in the sphere nothing changes.
 
     References
     ----------
@@ -74,10 +80,10 @@ def radial_table(kernel: str, spacing: float, k: float, m_max: int) -> RadialTab
     r = spacing * np.sqrt(m)
     if kernel == "point":
         iso, dyad = _point(r, k)
-    elif kernel == "fcd":
+    elif kernel in ("fcd", "fcd-corners"):
         if k * spacing >= np.pi:
             raise ValueError(f"k d = {k * spacing:.3g} is not below pi: the spacing is too coarse")
-        iso, dyad = _filtered(r, k, np.pi / spacing)
+        iso, dyad = _filtered(r, k, np.pi / spacing, corners=kernel == "fcd-corners")
     else:
         raise ValueError(f"unknown kernel {kernel!r}; known are {', '.join(KERNELS)}")
     zero = np.zeros(1, complex)
@@ -90,7 +96,9 @@ def _point(r: np.ndarray, k: float) -> tuple[np.ndarray, np.ndarray]:
     return wave * (k**2 - near), wave * (3 * near - k**2)
 
 
-def _filtered(r: np.ndarray, k: float, k_filter: float) -> tuple[np.ndarray, np.ndarray]:
+def _filtered(
+    r: np.ndarray, k: float, k_filter: float, corners: bool
+) -> tuple[np.ndarray, np.ndarray]:
     si_sum, ci_sum = sici((k_filter + k) * r)
     si_dif, ci_dif = sici((k_filter - k) * r)
     sine, cosine = np.sin(k * r), np.cos(k * r)
@@ -107,7 +115,9 @@ def _filtered(r: np.ndarray, k: float, k_filter: float) -> tuple[np.ndarray, np.
     g1 = u1 / r - u / r**2
     g2 = u2 / r - 2 * u1 / r**2 + 2 * u / r**3
     delta = (edge_sin - k_filter * r * edge_cos) / (2 * np.pi**2 * r**3)
-    return k**2 * g + g1 / r + (4 * np.pi / 3) * delta, g2 - g1 / r
+    # the sphere's low pass: a third of it belongs to the tensor, the corners add two thirds
+    weight = 4 * np.pi if corners else 4 * np.pi / 3
+    return k**2 * g + g1 / r + weight * delta, g2 - g1 / r
 
 
 # Order of the six independent components everywhere in this package.

@@ -18,8 +18,13 @@ from .workers import Workers
 
 SURFACES = ("window", "cell", "whole")
 
-# A cell belongs to the system when more than this part of its window is filled.
-_LEAST_FILL = 0.02
+# A cell belongs to the system when more than this part of its window is filled. What is left out
+# is an error of first order in the spacing: at 0.02 it was 0.1 % of a sphere 20 cells across.
+_LEAST_FILL = 0.005
+
+# Largest imaginary part given to the fractions of a layer between a metal and a dielectric is
+# about a twentieth of this.
+_LAYER_DAMPING = 0.5
 
 
 @dataclass(frozen=True, eq=False)
@@ -103,7 +108,7 @@ def system(
     *,
     materials: dict | None = None,
     surface: str = "window",
-    polarizability: str = "fcd",
+    polarizability: str = "fcd-corners",
     light=None,
     precision: str = "double",
     fft: str = "auto",
@@ -123,8 +128,9 @@ def system(
     surface : {"window", "cell", "whole"}
         Tensor of surface cells from the window of the design, from the cell's own fraction, or
         no surface treatment (a cell belongs to the material at its centre).
-    polarizability : {"fcd", "ldr", "rr"}
-        "fcd" goes with the filtered Green tensor, the others with point dipoles.
+    polarizability : {"fcd-corners", "fcd", "ldr", "rr"}
+        The first two go with the filtered Green tensor of the same name, the others with point
+        dipoles.
     light : PlaneWave, optional
         Needed by "ldr" alone.
     precision : {"double", "single"}
@@ -148,6 +154,13 @@ def system(
     ``1/eps_n = sum f_m/eps_m`` across it (Kottke, Farjadpour & Johnson 2008, Phys. Rev. E 77,
     036611; Piller 1997, Opt. Lett. 22, 1674). The fractions are those of a ball 2.2 spacings
     wide, which makes the error of the surface smooth in the spacing.
+
+    Between a metal and a dielectric eps_t and 1/eps_n pass through zero, at different depths, and
+    in between the layer carries short waves that only the metal's loss damps. The fractions
+    therefore get an imaginary part, odd about one half, that makes the layer lossy at both zeros
+    and pays it back elsewhere: its integral across the layer vanishes, so the answer changes by
+    an amount that falls as d^2, like the other errors of the layer, while the solver needs a
+    third of the steps. (This project's own.)
     """
     if surface not in SURFACES:
         raise InputError(f"surface {surface!r} is not known; use one of {', '.join(SURFACES)}")
@@ -182,7 +195,7 @@ def relative_system(
     permittivity: np.ndarray,
     *,
     surface: str = "window",
-    polarizability: str = "fcd",
+    polarizability: str = "fcd-corners",
     light=None,
     precision: str = "double",
     fft: str = "auto",
@@ -212,7 +225,7 @@ def relative_system(
     alpha_inverse = CellTensor(inverse(scalar), where, full)
     index = np.ascontiguousarray(cells.index[kept])
     table = radial_table(
-        "fcd" if polarizability == "fcd" else "point",
+        polarizability if polarizability.startswith("fcd") else "point",
         d,
         k,
         int(sum((n - 1) ** 2 for n in cells.shape)),
@@ -242,11 +255,27 @@ def _mixed(cells: Cells, eps: np.ndarray, surface: str):
     keep = filled.sum(axis=1) > _LEAST_FILL
     filled = filled[keep]
     host = np.clip(1 - filled.sum(axis=1), 0, 1)
-    along = filled @ eps + host
-    across = 1 / (filled @ (1 / eps) + host)
+    parts, rest = (
+        _damped(filled, host, eps) if surface == "window" else (filled.astype(complex), host)
+    )
+    along = parts @ eps + rest
+    across = 1 / (parts @ (1 / eps) + rest)
     mixed = (filled.max(axis=1) < 1 - 1e-9) & (cells.normal[keep] != 0).any(axis=1)
     where = np.flatnonzero(mixed)
     return keep, along, where, along[where], across[where]
+
+
+def _damped(filled: np.ndarray, host: np.ndarray, eps: np.ndarray):
+    """Fractions of the materials and the host with the layer's imaginary part."""
+    strength = _LAYER_DAMPING * np.clip(-eps.real, 0, 1)
+    metal = filled @ (strength > 0)
+    other = 1 - metal
+    swing = (metal - 0.5) * (filled @ strength) * other
+    with np.errstate(divide="ignore", invalid="ignore"):
+        up = np.where(metal > 0, swing / metal, 0)
+        down = np.where(other > 0, swing / other, 0)
+    factor = np.where(strength > 0, up[:, None], -down[:, None])
+    return filled * (1 + 1j * factor), host * (1 - 1j * down)
 
 
 def _as_material(spec, overrides: dict | None):

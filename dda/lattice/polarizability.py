@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numba import njit
 
-POLARIZABILITIES = ("fcd", "ldr", "rr")
+POLARIZABILITIES = ("fcd", "ldr", "rr", "fcd-corners")
 
 # Draine & Goodman (1993), table of the lattice dispersion relation for a cubic lattice.
 _LDR = (-1.891531, 0.1648469, -1.7700004)
@@ -60,8 +60,9 @@ def inverse_polarizability(
     ----------
     eps : ndarray of complex
         Permittivity relative to the host.
-    kind : {"fcd", "ldr", "rr"}
-        Filtered coupled dipoles, lattice dispersion relation, radiative reaction alone.
+    kind : {"fcd", "ldr", "rr", "fcd-corners"}
+        Filtered coupled dipoles, lattice dispersion relation, radiative reaction alone, and the
+        first with the corners of the Brillouin zone corrected as in `dda.lattice.green`.
     k : float
         Wave number in the host, 1/nm.
     spacing : float
@@ -98,7 +99,7 @@ def inverse_polarizability(
     eps = np.asarray(eps, complex)
     x = k * spacing
     clausius = (4 * np.pi / 3) * (eps + 2) / (eps - 1)
-    if kind == "fcd":
+    if kind in ("fcd", "fcd-corners"):
         m = 4 / 3 * x**2 + 2 / 3 * (1j + np.log((np.pi - x) / (np.pi + x)) / np.pi) * x**3
     elif kind == "rr":
         m = 2 / 3 * 1j * x**3
@@ -109,6 +110,9 @@ def inverse_polarizability(
         m = -(b1 + b2 * eps + b3 * eps * s_factor) * x**2 + 2 / 3 * 1j * x**3
     else:
         raise ValueError(f"unknown polarizability {kind!r}; known: {', '.join(POLARIZABILITIES)}")
+    if kind == "fcd-corners":
+        # a cell's own share of (8 pi/3)(1 - H): the filter sphere fills pi/6 of the zone
+        m = m - (8 * np.pi / 3) * (1 - np.pi / 6)
     return (clausius - m) / spacing**3
 
 

@@ -1,0 +1,74 @@
+"""Stop when the quantities asked for have settled, not when the residual has."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+
+# Quantities are looked at every so many steps, and their spread is taken over this part of all
+# steps so far: a slow method must hold still for longer than a quick one.
+_STRIDE = 4
+_WINDOW = 0.3
+_LEAST_LOOKS = 6
+
+
+class Settling:
+    """Watches quantities of an iterate; called after every step of a Krylov method.
+
+    Parameters
+    ----------
+    quantities : callable
+        ``quantities(x)`` gives the array (q,) of what is asked for.
+    allowed : callable
+        ``allowed(values)`` gives how far each may still move, shape (q,).
+    after_step : callable, optional
+        Called as ``after_step(step, x, residual)`` for progress; True stops the iteration.
+
+    Notes
+    -----
+    A Krylov method on a system with slowly damped short waves goes on moving in directions that
+    no answer sees, so the residual says little. The estimate of the error of a quantity is the
+    spread of its values over the last third of the steps.
+    """
+
+    def __init__(
+        self,
+        quantities: Callable[[np.ndarray], np.ndarray],
+        allowed: Callable[[np.ndarray], np.ndarray],
+        after_step: Callable[[int, np.ndarray, float], bool] | None = None,
+    ):
+        self._quantities = quantities
+        self._allowed = allowed
+        self._after_step = after_step
+        self.steps: list[int] = []
+        self.values: list[np.ndarray] = []
+
+    def __call__(self, step: int, x: np.ndarray, residual: float) -> bool:
+        """Whether to stop."""
+        stop = bool(self._after_step and self._after_step(step, x, residual))
+        if step % _STRIDE == 0:
+            self.look(step, x)
+            stop = stop or self.settled
+        return stop
+
+    def look(self, step: int, x: np.ndarray) -> None:
+        """Record the quantities of an iterate."""
+        self.steps.append(step)
+        self.values.append(np.asarray(self._quantities(x), float))
+
+    @property
+    def settled(self) -> bool:
+        """Whether every quantity has stopped moving by more than is allowed."""
+        if len(self.values) < _LEAST_LOOKS:
+            return False
+        return bool(np.all(self.spread <= self._allowed(self.values[-1])))
+
+    @property
+    def spread(self) -> np.ndarray:
+        """Error estimate of each quantity, shape (q,); infinite before there is one."""
+        if len(self.values) < _LEAST_LOOKS:
+            return np.full(len(self.values[-1]) if self.values else 1, np.inf)
+        first = self.steps[-1] * (1 - _WINDOW)
+        looks = max(_LEAST_LOOKS - 1, sum(s >= first for s in self.steps))
+        return np.ptp(np.array(self.values[-looks:]), axis=0)
