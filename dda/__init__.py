@@ -15,7 +15,7 @@ True
 from .errors import ComputationError, InputError
 from .lattice import Polarization, System, solve, system
 from .light import PlaneWave, plane_wave
-from .response import CrossSections, cross_sections
+from .response import CrossSections, Settled, cross_sections, settle
 
 __all__ = [
     "ComputationError",
@@ -23,9 +23,11 @@ __all__ = [
     "InputError",
     "PlaneWave",
     "Polarization",
+    "Settled",
     "System",
     "cross_sections",
     "plane_wave",
+    "settle",
     "solve",
     "system",
 ]

@@ -33,6 +33,22 @@ class PlaneWave:
         turned = np.cross(self.direction, self.polarization)
         return np.exp(1j * k * (positions @ self.direction))[:, None] * turned
 
+    def linear_parts(self) -> list[tuple[complex, PlaneWave]]:
+        """Linearly polarized waves that add up to this one, with their coefficients.
+
+        Methods for complex symmetric systems break down on right-hand sides with ``b.b = 0``,
+        which circular light has exactly.
+        """
+        turned = self.polarization * np.exp(-1j * np.angle(_largest(self.polarization)))
+        real, imaginary = turned.real, turned.imag
+        turn = complex(_largest(self.polarization) / _largest(turned))
+        if np.linalg.norm(imaginary) < 1e-12:
+            return [(turn, PlaneWave(self.direction, real.astype(complex)))]
+        return [
+            (turn * factor * np.linalg.norm(part), PlaneWave(self.direction, _unit(part + 0j, "")))
+            for factor, part in ((1, real), (1j, imaginary))
+        ]
+
     @property
     def s_factor(self) -> float:
         """``sum_j (a_j |e_j|)^2``, needed by the lattice dispersion relation."""
@@ -94,6 +110,10 @@ def transverse(direction: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     e1 = np.cross(helper, a)
     e1 /= np.linalg.norm(e1)
     return e1, np.cross(a, e1)
+
+
+def _largest(v: np.ndarray) -> complex:
+    return v[np.argmax(np.abs(v))]
 
 
 def _unit(v: np.ndarray, what: str) -> np.ndarray:

@@ -1,7 +1,7 @@
 """The lattice of dipoles: interaction, polarizability, linear system and its solution."""
 
-from .solution import Polarization, solve, solve_dense
 from .linear_system import System, memory_estimate, relative_system, system
+from .solution import Polarization, solve, solve_dense
 
 __all__ = [
     "Polarization",

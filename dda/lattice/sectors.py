@@ -128,9 +128,7 @@ def sectors(system: System, mirrors: tuple[bool, bool, bool] | None = None) -> l
     if not planes:
         rows = np.arange(system.n)[None]
         return [
-            Sector(
-                system, (0, 0, 0), rows, system.alpha_inverse, system.alpha, system.convolution
-            )
+            Sector(system, (0, 0, 0), rows, system.alpha_inverse, system.alpha, system.convolution)
         ]
     images = _images(system, planes)
     own = _restrict(system.alpha_inverse, images[0])

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from typing import Protocol
 
 import numpy as np
 
@@ -72,3 +73,15 @@ class Settling:
         first = self.steps[-1] * (1 - _WINDOW)
         looks = max(_LEAST_LOOKS - 1, sum(s >= first for s in self.steps))
         return np.ptp(np.array(self.values[-looks:]), axis=0)
+
+
+class Goal(Protocol):
+    """What a solution is for: says when a sector is solved well enough.
+
+    `watch` makes the `Settling` for a sector and the light at its cells; `add` is told the
+    sector's last iterate, so that later sectors are judged by their part in the whole.
+    """
+
+    def watch(self, sector, incident: np.ndarray, after_step: Callable | None) -> Settling: ...
+
+    def add(self, watch: Settling) -> None: ...

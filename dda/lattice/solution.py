@@ -7,12 +7,15 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from .krylov import KrylovResult, cocg
+from .krylov import KrylovResult, cocg, gmres
 from .linear_system import System
 from .sectors import Sector, sectors
+from .settling import Goal
 
 # From good to bad; a solution is as good as its worst part.
 _STATUSES = ("converged", "limit", "stalled")
+# A sector that was stopped by its goal, or by whoever watched it, arrived where it should.
+_STATUS_OF = {"stopped": "converged"}
 
 
 @dataclass(frozen=True, eq=False)
@@ -56,6 +59,7 @@ def solve(
     start: np.ndarray | None = None,
     monitor: Callable[[int, np.ndarray, float], bool] | None = None,
     mirrors: tuple[bool, bool, bool] | None = None,
+    goal: Goal | None = None,
 ) -> Polarization:
     """Solve for the dipoles that the light induces.
 
@@ -67,30 +71,49 @@ def solve(
     tolerance : float
         Relative norm of the preconditioned residual to stop at.
     limit : int
-        Most iterations.
+        Most iterations in a mirror sector.
     start : ndarray, shape (n, 3), optional
         First guess of the dipoles.
     monitor : callable, optional
         As in `dda.lattice.krylov.cocg`; the vector it is given belongs to one mirror sector.
     mirrors : three bool, optional
         Mirror planes to use; all that the cells have by default.
+    goal : Goal, optional
+        Stops a sector when what is asked for has settled, whatever the residual; see
+        `dda.response.settled`.
 
     Returns
     -------
     Polarization
+
+    Notes
+    -----
+    Light that is not linearly polarized is solved as two linear parts. Where the conjugate
+    gradients break down, restarted GMRES goes on from their best iterate.
     """
     incident = light.field(system.positions, system.k)
-    parts = [(s, s.fold(incident)) for s in sectors(system, mirrors)]
-    total = np.sqrt(sum(float(np.linalg.norm(b)) ** 2 for _, b in parts))
+    parts = light.linear_parts() if hasattr(light, "linear_parts") else [(1.0, light)]
+    found = sectors(system, mirrors)
     p = np.zeros((system.n, 3), system.dtype)
     results: list[tuple[KrylovResult, float]] = []
-    for sector, b in parts:
-        share = float(np.linalg.norm(b)) / total
-        if share < 1e-12:  # the light has no part of this parity
-            continue
-        result = _solve_sector(sector, b, tolerance, limit, start, monitor)
-        p += sector.unfold(result.x)
-        results.append((result, share))
+    whole = float(np.linalg.norm(incident))
+    for coefficient, part in parts:
+        field_ = (
+            incident if len(parts) == 1 else coefficient * part.field(system.positions, system.k)
+        )
+        for sector in found:
+            b = sector.fold(field_)
+            share = float(np.linalg.norm(b)) / whole
+            if share < 1e-7 * (1 if system.dtype == np.complex128 else 100):
+                continue  # the light has no part of this parity
+            guess = sector.fold(start) if start is not None and len(parts) == 1 else None
+            watch = goal.watch(sector, field_, monitor) if goal else None
+            result = _solve_sector(sector, b, tolerance, limit, guess, watch or monitor)
+            if goal and watch:
+                watch.look(result.iterations, result.x)
+                goal.add(watch)
+            p += sector.unfold(result.x)
+            results.append((result, share))
     return Polarization(
         system,
         light,
@@ -99,19 +122,24 @@ def solve(
         max(r.iterations for r, _ in results),
         sum(r.products for r, _ in results),
         float(np.sqrt(sum((r.residual * share) ** 2 for r, share in results))),
-        max((r.status for r, _ in results), key=_badness),
+        max((_STATUS_OF.get(r.status, r.status) for r, _ in results), key=_badness),
     )
 
 
 def _solve_sector(sector: Sector, b, tolerance, limit, start, monitor) -> KrylovResult:
-    return cocg(
-        sector,
-        b,
-        sector.precondition,
-        start=None if start is None else sector.fold(start),
-        tolerance=tolerance,
-        limit=limit,
-        monitor=monitor,
+    options = {"tolerance": tolerance, "limit": limit, "monitor": monitor}
+    first = cocg(sector, b, sector.precondition, start=start, **options)
+    if first.status != "stalled":
+        return first
+    options["limit"] = max(1, limit - first.iterations)
+    second = gmres(sector, b, sector.precondition, start=first.x, **options)
+    return KrylovResult(
+        second.x,
+        second.residual,
+        first.iterations + second.iterations,
+        first.products + second.products,
+        second.status,
+        np.concatenate([first.history, second.history]),
     )
 
 

@@ -33,13 +33,13 @@ def scattering_amplitude(polarization: Polarization, directions: np.ndarray) -> 
     system = polarization.system
     n = np.ascontiguousarray(directions, float)
     step = system.k * system.cells.spacing
-    total = _radiated(system.index, np.ascontiguousarray(polarization.p, np.complex128), n, step)
+    total = radiated(system.index, np.ascontiguousarray(polarization.p, np.complex128), n, step)
     total *= np.exp(-1j * system.k * (n @ system.cells.origin))[:, None]
     return system.k**2 * (total - n * (n * total).sum(axis=1, keepdims=True))
 
 
 @njit(nogil=True, cache=True, parallel=False)
-def _radiated(index, p, directions, step):  # pragma: no cover - compiled
+def radiated(index, p, directions, step):  # pragma: no cover - compiled
     """Sum of the dipoles with their phases; phases along each axis come from a table."""
     size = index.max() + 1
     out = np.zeros((len(directions), 3), np.complex128)
@@ -55,10 +55,11 @@ def _radiated(index, p, directions, step):  # pragma: no cover - compiled
     return out
 
 
-def sphere_quadrature(order: int) -> tuple[np.ndarray, np.ndarray]:
+def sphere_quadrature(order: int, half_turned: bool = False) -> tuple[np.ndarray, np.ndarray]:
     """Gauss-Legendre points in cos(theta) times the trapezoid rule in phi.
 
-    Exact for spherical harmonics up to degree ``2 order - 1``.
+    Exact for spherical harmonics up to degree ``2 order - 1``. With `half_turned` and an even
+    order no direction lies on a coordinate plane.
 
     Returns
     -------
@@ -67,7 +68,7 @@ def sphere_quadrature(order: int) -> tuple[np.ndarray, np.ndarray]:
         They sum to 4 pi.
     """
     cosine, weight = np.polynomial.legendre.leggauss(order)
-    phi = np.pi / order * np.arange(2 * order)
+    phi = np.pi / order * (np.arange(2 * order) + (0.5 if half_turned else 0))
     sine = np.sqrt(1 - cosine**2)
     x = sine[:, None] * np.cos(phi)
     y = sine[:, None] * np.sin(phi)
