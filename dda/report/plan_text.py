@@ -32,8 +32,8 @@ def plan_text(plan: Plan) -> str:
             ),
             (
                 "",
-                f"(a product takes {1e3 * plan.cost.product_seconds:.3g} ms here, measured now; "
-                f"{sum(plan.cost.products):.0f} expected, known to a factor of two)",
+                f"(a step of the solver takes {1e3 * plan.cost.step_seconds:.3g} ms here, measured "
+                f"now; {sum(plan.cost.steps):.0f} steps expected, known to a factor of two)",
             ),
         ]
     )

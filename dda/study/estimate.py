@@ -1,4 +1,4 @@
-"""How long a run will take: products measured on this machine, times how many are expected."""
+"""How long a run will take: steps measured on this machine, times how many are expected."""
 
 from __future__ import annotations
 
@@ -10,10 +10,12 @@ from statistics import median
 import numpy as np
 
 from dda.lattice import System
+from dda.lattice.sectors import Sector, sectors
+from dda.light import PlaneWave
 
 #: Most iterations of one solve.
 LIMIT = 2000
-#: The number of products is known to about this factor, up and down.
+#: The number of steps is known to about this factor, up and down.
 FACTOR = 2.0
 
 
@@ -25,47 +27,55 @@ class Cost:
     ----------
     setup_seconds : float
         Before the solver starts, at each wavelength.
-    product_seconds : float
-        One product with the matrix of the system, measured.
-    products : tuple of float
-        Expected products at each wavelength, polarizations added up.
+    step_seconds : float
+        One step of the solver, measured.
+    steps : tuple of float
+        Expected steps at each wavelength, polarizations added up.
     """
 
     setup_seconds: float
-    product_seconds: float
-    products: tuple[float, ...]
+    step_seconds: float
+    steps: tuple[float, ...]
 
     @property
     def seconds(self) -> float:
         """The expected wall time of the run."""
-        return len(self.products) * self.setup_seconds + sum(self.products) * self.product_seconds
+        return len(self.steps) * self.setup_seconds + sum(self.steps) * self.step_seconds
 
     @property
     def seconds_between(self) -> tuple[float, float]:
-        """The expected wall time, with the uncertainty of the number of products."""
-        setup = len(self.products) * self.setup_seconds
-        solving = sum(self.products) * self.product_seconds
+        """The expected wall time, with the uncertainty of the number of steps."""
+        setup = len(self.steps) * self.setup_seconds
+        solving = sum(self.steps) * self.step_seconds
         return setup + solving / FACTOR, setup + solving * FACTOR
 
 
-def measure_product(matrix: System, repeats: int = 3) -> float:
-    """Return the seconds that one product with a system's matrix takes here.
+def measure_step(matrix: System, light: PlaneWave, repeats: int = 3) -> float:
+    """Return the seconds that one step of the solver takes here: a product in every sector.
 
-    The first product is not counted: it compiles and plans.
+    Mirror sectors that the light does not reach are not solved and not counted. The first product
+    is not timed: it compiles and plans.
     """
-    rng = np.random.default_rng(1)
-    vector = rng.standard_normal((matrix.n, 3)).astype(matrix.dtype)
-    matrix.matvec(vector)
-    times = []
-    for _ in range(repeats):
-        started = time.perf_counter()
-        matrix.matvec(vector)
-        times.append(time.perf_counter() - started)
-    return median(times)
+    incident = light.field(matrix.positions, matrix.k)
+    total = 0.0
+    for sector in sectors(matrix):
+        vector = sector.fold(incident)
+        if np.linalg.norm(vector) < 1e-12 * np.linalg.norm(incident):
+            continue
+        vector = vector.astype(matrix.dtype)
+        sector.matvec(vector)
+        total += median(_seconds(sector, vector) for _ in range(repeats))
+    return total
 
 
-def expected_products(m: complex, across: float, tolerance: float) -> float:
-    """Return about how many products the solver needs for one polarization.
+def _seconds(sector: Sector, vector: np.ndarray) -> float:
+    started = time.perf_counter()
+    sector.precondition(sector.matvec(vector))
+    return time.perf_counter() - started
+
+
+def expected_steps(m: complex, across: float, tolerance: float) -> float:
+    """Return about how many steps the solver needs for one polarization.
 
     Parameters
     ----------
@@ -84,7 +94,7 @@ def expected_products(m: complex, across: float, tolerance: float) -> float:
 
     Examples
     --------
-    >>> expected_products(1.1, 32, 1e-4) < 20 < expected_products(0.2 + 2j, 32, 1e-4)
+    >>> expected_steps(1.1, 32, 1e-4) < 20 < expected_steps(0.2 + 2j, 32, 1e-4)
     True
     """
     eps = m * m

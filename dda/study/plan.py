@@ -9,7 +9,7 @@ from dataclasses import dataclass
 import shapes
 from dda.lattice import memory_estimate, system
 from dda.lattice.workers import Workers
-from dda.study.estimate import Cost, expected_products, measure_product
+from dda.study.estimate import Cost, expected_steps, measure_step
 from dda.study.geometry import WINDOW, Geometries, Geometry, check_cells, geometry_of
 from dda.study.media import Media, check_media, media_of
 from dda.study.memory import available_memory
@@ -126,7 +126,7 @@ def prepare_shape(study: Study) -> Geometry:
 
 
 def make_plan(study: Study) -> Plan:
-    """Check a study, measure one product and say what a run would take.
+    """Check a study, measure one step of the solver and say what a run would take.
 
     Raises
     ------
@@ -204,12 +204,12 @@ def _cost(prepared: Prepared) -> Cost:
     )
     setup = time.perf_counter() - started
     across = max(prepared.cells.shape)
-    products = tuple(
+    steps = tuple(
         len(lights_of(point))
         * max(
-            expected_products(m, across, point.solver.tolerance)
+            expected_steps(m, across, point.solver.tolerance)
             for m in prepared.media.relative_index(point.wavelength).values()
         )
         for point in prepared.points
     )
-    return Cost(setup, measure_product(matrix), products)
+    return Cost(setup, measure_step(matrix, lights_of(point)[0]), steps)
