@@ -5,9 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 
 import numpy as np
+from scipy.sparse import csr_array
 
-from .mueller import averaged_mueller_matrix
 from .tmatrix import TMatrix
+from .vector_waves import complex_numbers, gradients
 
 
 @dataclass(frozen=True)
@@ -133,7 +134,17 @@ def orientation_average(t: TMatrix) -> OrientationAverage:
 
 
 def _asymmetry(t: TMatrix) -> float:
-    """From the averaged S11, a polynomial of degree 2N in the cosine: Gauss points are exact."""
-    cosine, weight = np.polynomial.legendre.leggauss(t.order + 1)
-    intensity = averaged_mueller_matrix(t, np.rad2deg(np.arccos(cosine)))[:, 0, 0]
-    return float((weight * cosine) @ intensity / (weight @ intensity))
+    """Mean cosine of the scattering angle.
+
+    The mean of the outgoing direction u over a wave field is a matrix V between its amplitudes,
+    and the same matrix is the mean over the incident directions, so that
+    ``<C_sca cos> = (2 pi/k^2) Re sum_i Tr(V_i T V_i T^H)``. A factor u_i in the spectrum of a wave
+    is the derivative -i d/dx_i / k of the wave.
+    """
+    total = 0.0
+    numbers = complex_numbers(t.order)
+    back = t.matrix.conj().T
+    for slope in gradients(t.order + 1):
+        mean = csr_array(sum(n.conj().T @ slope @ n for n in numbers))
+        total -= float(np.sum((mean @ t.matrix) * (mean @ back).T).real)
+    return total / float(np.sum(abs(t.matrix) ** 2))

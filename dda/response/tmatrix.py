@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field, replace
 
 import numpy as np
+from scipy.sparse import csr_array
 
 from ..errors import InputError
 from .vector_waves import order_of, plane_wave_coefficients, spectra, wave_labels
@@ -78,8 +79,8 @@ class TMatrix:
         rotation : array_like, shape (3, 3)
             Orthogonal matrix; with determinant -1 it gives the mirror image of the particle.
         """
-        turn = rotation_matrix(self.order, rotation)
-        return replace(self, matrix=turn @ self.matrix @ turn.conj().T)
+        turn = csr_array(rotation_matrix(self.order, rotation))
+        return replace(self, matrix=turn @ (turn.conj() @ self.matrix.T).T)
 
     def truncated(self, order: int) -> TMatrix:
         """The waves up to an order at most the present one."""

@@ -166,7 +166,7 @@ class _Work:
         count = wave_count(self.order)
         u = real_to_complex(self.order)
         keep = wave_labels(self.order + 1)[:, 1] <= self.order
-        matrix = u.conj() @ self.matrix[keep] @ u.T
+        matrix = (u.conj() @ self.matrix[keep]) @ u.T
         assert matrix.shape == (count, count)
         drift = np.sqrt(
             sum((w.count * s.drift) ** 2 for w, s in zip(self.waves, self.solved, strict=True))

@@ -20,6 +20,7 @@ from functools import lru_cache
 
 import numpy as np
 from numba import njit
+from scipy.sparse import block_diag, csr_array, diags_array, hstack, lil_array
 
 MAGNETIC, ELECTRIC = 0, 1  # the two kinds: M waves and N waves
 
@@ -70,8 +71,7 @@ def regular_waves(order: int, positions: np.ndarray, k: float) -> np.ndarray:
            [0., 1., 0.]])
     """
     scalar = scalar_waves(order + 1, positions, k)
-    numbers = real_numbers(order)
-    return (scalar @ numbers.reshape(len(numbers), -1)).reshape(len(scalar), 3, -1)
+    return np.stack([scalar @ numbers for numbers in real_numbers(order)], axis=1)
 
 
 def fields_of(coefficients: np.ndarray, positions: np.ndarray, k: float) -> np.ndarray:
@@ -90,7 +90,7 @@ def fields_of(coefficients: np.ndarray, positions: np.ndarray, k: float) -> np.n
     ndarray, shape (c, n, 3)
     """
     order = order_of(coefficients.shape[1])
-    numbers = np.einsum("sal,cl->sca", real_numbers(order), coefficients)
+    numbers = np.stack([n @ coefficients.T for n in real_numbers(order)], axis=2)
     flat = numbers.reshape(len(numbers), -1)
     out = np.empty((len(positions), *numbers.shape[1:]), flat.dtype)
     for part in _parts(len(positions)):
@@ -118,7 +118,8 @@ def moments_of(vectors: np.ndarray, positions: np.ndarray, k: float, order: int)
     for part in _parts(len(positions)):
         scalar = scalar_waves(order + 1, positions[part], k)
         total += scalar.T @ vectors[:, part].transpose(1, 0, 2).reshape(-1, count * 3)
-    return np.einsum("sca,sal->cl", total.reshape(-1, count, 3), real_numbers(order))
+    total = total.reshape(-1, count, 3)
+    return sum((n.T @ total[:, :, a]).T for a, n in enumerate(real_numbers(order)))
 
 
 def spectra(order: int, directions: np.ndarray) -> np.ndarray:
@@ -139,9 +140,9 @@ def spectra(order: int, directions: np.ndarray) -> np.ndarray:
     """
     angular = real_harmonics(order + 1, np.atleast_2d(np.asarray(directions, float)))
     q = np.repeat(np.arange(order + 2), 2 * np.arange(order + 2) + 1)
-    numbers = real_numbers(order)
-    real = ((angular * (-1j) ** q) @ numbers.reshape(len(numbers), -1)).reshape(len(angular), 3, -1)
-    return real @ real_to_complex(order).T
+    turned = angular * (-1j) ** q
+    change = real_to_complex(order).T
+    return np.stack([(turned @ n) @ change for n in real_numbers(order)], axis=1)
 
 
 def plane_wave_coefficients(order: int, direction, polarization) -> np.ndarray:
@@ -183,81 +184,82 @@ def first_order(size_parameter: float) -> int:
 
 
 @lru_cache(maxsize=32)
-def real_numbers(order: int) -> np.ndarray:
-    """The real waves in real scalar waves, shape ((N+2)^2, 3, 2 N (N+2)); do not change it."""
-    numbers = _complex_numbers(order)
-    scalar = _real_in_complex(order + 1, start=0)  # rows: complex harmonics in real ones
-    turned = np.einsum("ts,tal->sal", scalar, numbers)
-    real = turned @ real_to_complex(order).conj()
-    assert abs(real.imag).max() < 1e-12
-    out = np.ascontiguousarray(real.real)
-    out.setflags(write=False)
-    return out
+def real_numbers(order: int) -> tuple[csr_array, csr_array, csr_array]:
+    """x, y, z components of the real waves in real scalar waves, ((N+2)^2, 2 N (N+2)) each."""
+    scalar = _real_in_complex(order + 1, start=0)
+    change = _real_in_complex(order, start=1)
+    vector = block_diag([change, change], format="csr").conj()
+    out = []
+    for numbers in complex_numbers(order):
+        real = scalar.T @ numbers @ vector
+        assert abs(real.imag).max() < 1e-12
+        out.append(csr_array(real.real))
+    return out[0], out[1], out[2]
 
 
 @lru_cache(maxsize=32)
-def real_to_complex(order: int) -> np.ndarray:
+def real_to_complex(order: int) -> csr_array:
     """Unitary U with ``complex wave_l = sum_r U[l, r] real wave_r``, shape (2 N(N+2),) * 2.
 
     Amplitudes a of complex waves are ``U.T a`` in real ones; a matrix T between amplitudes of real
     waves is ``conj(U) T U.T`` between those of complex ones.
     """
     block = _real_in_complex(order, start=1)
-    out = np.kron(np.eye(2), block)
-    out.setflags(write=False)
-    return out
+    return csr_array(block_diag([block, block], format="csr"))
 
 
-def _real_in_complex(order: int, start: int) -> np.ndarray:
+@lru_cache(maxsize=32)
+def complex_numbers(order: int) -> tuple[csr_array, csr_array, csr_array]:
+    """x, y, z components of the vector waves in the scalar waves z_q Y_qs."""
+    n = np.repeat(np.arange(1, order + 1), 2 * np.arange(1, order + 1) + 1)
+    columns = slice(1, (order + 1) ** 2)
+    scale = diags_array(-1j / np.sqrt(n * (n + 1.0)))
+    # M = -i L psi / sqrt(n(n+1)), N = curl M / k
+    magnetic = [csr_array(lift[:, columns] @ scale) for lift in _angular_momentum(order + 1)]
+    slope = gradients(order + 1)
+    out = []
+    for a in range(3):
+        b, c = (a + 1) % 3, (a + 2) % 3
+        electric = slope[b] @ magnetic[c] - slope[c] @ magnetic[b]
+        out.append(csr_array(hstack([magnetic[a], electric])))
+    return out[0], out[1], out[2]
+
+
+def _real_in_complex(order: int, start: int) -> csr_array:
     """Y_nm in real harmonics, n = start..order."""
     size = (order + 1) ** 2 - start**2
-    out = np.zeros((size, size), complex)
+    out = lil_array((size, size), dtype=complex)
     half = np.sqrt(0.5)
     for n in range(start, order + 1):
         middle = n * (n + 1) - start**2
         out[middle, middle] = 1
         for m in range(1, n + 1):
             sign = (-1) ** m
-            out[middle + m, [middle + m, middle - m]] = [sign * half, 1j * sign * half]
-            out[middle - m, [middle + m, middle - m]] = [half, -1j * half]
-    return out
+            out[middle + m, middle + m], out[middle + m, middle - m] = sign * half, 1j * sign * half
+            out[middle - m, middle + m], out[middle - m, middle - m] = half, -1j * half
+    return csr_array(out)
 
 
-def _complex_numbers(order: int) -> np.ndarray:
-    """The complex vector waves in the scalar waves z_q Y_qs."""
-    size = (order + 2) ** 2
-    count = order * (order + 2)
-    lift = _angular_momentum(order)  # (3, size, size), L on scalar waves
-    slope = _gradient(order)  # (3, size, size), grad/k on scalar waves up to `order`
-    out = np.zeros((size, 3, 2, count), complex)
-    for n in range(1, order + 1):
-        for m in range(-n, n + 1):
-            column = n * (n + 1) + m
-            magnetic = -1j / np.sqrt(n * (n + 1)) * lift[:, :, column]
-            out[:, :, MAGNETIC, column - 1] = magnetic.T
-            for a in range(3):
-                b, c = (a + 1) % 3, (a + 2) % 3
-                out[:, a, ELECTRIC, column - 1] = slope[b] @ magnetic[c] - slope[c] @ magnetic[b]
-    return out.reshape(size, 3, 2 * count)
+def _angular_momentum(order: int) -> tuple[csr_array, csr_array, csr_array]:
+    """L on scalar waves up to an order."""
+    q = np.arange(order + 1)
+    n = np.repeat(q, 2 * q + 1)
+    m = np.arange(len(n)) - n * (n + 1)
+    up = diags_array(np.sqrt((n - m) * (n + m + 1.0))[:-1], offsets=-1)
+    return (
+        csr_array((up + up.T) / 2),
+        csr_array((up - up.T) / 2j),
+        csr_array(diags_array(m.astype(float))),
+    )
 
 
-def _angular_momentum(order: int) -> np.ndarray:
-    size = (order + 2) ** 2
-    up, z = np.zeros((size, size)), np.zeros((size, size))
-    for n in range(order + 2):
-        for m in range(-n, n + 1):
-            here = n * (n + 1) + m
-            z[here, here] = m
-            if m < n:
-                up[here + 1, here] = np.sqrt((n - m) * (n + m + 1))
-    down = up.T
-    return np.stack([(up + down) / 2, (up - down) / 2j, z])
+def gradients(order: int) -> tuple[csr_array, csr_array, csr_array]:
+    """Derivatives along x, y, z of scalar waves up to an order, in units of k.
 
-
-def _gradient(order: int) -> np.ndarray:
-    """Derivatives of scalar waves, in units of k (Edmonds 1957, section 5.7)."""
-    size = (order + 2) ** 2
-    plus, minus, z = (np.zeros((size, size)) for _ in range(3))
+    Edmonds (1957), section 5.7; parts of higher order are left out.
+    """
+    size = (order + 1) ** 2
+    plus, minus, z = (lil_array((size, size), dtype=complex) for _ in range(3))
     for n in range(order + 1):
         below, above = (2 * n - 1) * (2 * n + 1), (2 * n + 1) * (2 * n + 3)
         for m in range(-n, n + 1):
@@ -265,14 +267,15 @@ def _gradient(order: int) -> np.ndarray:
             lower, upper = (n - 1) * n + m, (n + 1) * (n + 2) + m
             if abs(m) < n:
                 z[lower, here] = np.sqrt((n * n - m * m) / below)
-            z[upper, here] = -np.sqrt(((n + 1) ** 2 - m * m) / above)
             if m + 1 <= n - 1:
                 plus[lower + 1, here] = np.sqrt((n - m) * (n - m - 1) / below)
-            plus[upper + 1, here] = np.sqrt((n + m + 1) * (n + m + 2) / above)
             if m - 1 >= -(n - 1):
                 minus[lower - 1, here] = -np.sqrt((n + m) * (n + m - 1) / below)
-            minus[upper - 1, here] = -np.sqrt((n - m + 1) * (n - m + 2) / above)
-    return np.stack([(plus + minus) / 2, (plus - minus) / 2j, z.astype(complex)])
+            if n < order:
+                z[upper, here] = -np.sqrt(((n + 1) ** 2 - m * m) / above)
+                plus[upper + 1, here] = np.sqrt((n + m + 1) * (n + m + 2) / above)
+                minus[upper - 1, here] = -np.sqrt((n - m + 1) * (n - m + 2) / above)
+    return csr_array((plus + minus) / 2), csr_array((plus - minus) / 2j), csr_array(z)
 
 
 # -- scalar waves ------------------------------------------------------------------------------

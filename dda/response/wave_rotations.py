@@ -61,7 +61,8 @@ def rotation_matrix(order: int, matrix: np.ndarray) -> np.ndarray:
 def real_rotation_matrix(order: int, matrix: np.ndarray) -> np.ndarray:
     """The same between amplitudes of real waves: real and orthogonal."""
     u = real_to_complex(order)
-    return np.ascontiguousarray((u.T @ rotation_matrix(order, matrix) @ u.conj()).real)
+    turned = u.T @ rotation_matrix(order, matrix)
+    return np.ascontiguousarray((turned @ u.conj()).real)
 
 
 def euler_angles(matrix: np.ndarray) -> tuple[float, float, float]:

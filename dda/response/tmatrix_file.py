@@ -1,0 +1,97 @@
+"""T-matrices in HDF5 files that say what they hold."""
+
+from __future__ import annotations
+
+import os
+from pathlib import Path
+
+import numpy as np
+
+from ..errors import InputError
+from .tmatrix import TMatrix
+
+FORMAT = "motelight T-matrix 1"
+
+_NOTES = {
+    "convention": (
+        "outgoing amplitudes = matrix @ regular amplitudes; time dependence exp(-i w t); vector "
+        "spherical waves M = curl(r z_n Y_nm)/sqrt(n(n+1)) and N = curl(M)/k with orthonormal Y_nm "
+        "(Condon-Shortley phase), z = j regular, z = h(1) outgoing; C_sca = sum |outgoing|^2/k^2; "
+        "for a sphere the diagonal is minus the Mie coefficients b_n (M) and a_n (N)"
+    ),
+    "averages": (
+        "over orientations C_ext = -(2 pi/k^2) Re trace, C_sca = (2 pi/k^2) sum |matrix|^2"
+    ),
+}
+# name in the file: unit and meaning
+_NUMBERS = {
+    "wavelength": ("nm", "in vacuum"),
+    "n_host": ("1", "refractive index of the host"),
+    "radius": ("nm", "of a sphere around the origin that holds the particle"),
+    "r_eff": ("nm", "radius of the sphere of the particle's volume"),
+    "order_error": ("nm^2", "of the averaged cross sections, from multipoles left out"),
+    "solver_error": ("nm^2", "of the averaged cross sections, from the iterative solution"),
+    "products": ("1", "products with the interaction matrix"),
+}
+_KINDS = ("magnetic (M)", "electric (N)")
+
+
+def save_t_matrix(t: TMatrix, path: str | Path) -> None:
+    """Write a T-matrix to an HDF5 file, replacing it as a whole if it exists.
+
+    Parameters
+    ----------
+    t : TMatrix
+    path : str or Path
+    """
+    import h5py
+
+    path = Path(path)
+    draft = path.with_name(path.name + ".new")
+    with h5py.File(draft, "w") as file:
+        file.attrs["format"] = FORMAT
+        file.attrs["status"] = t.status
+        for name, text in _NOTES.items():
+            file.attrs[name] = text
+        data = file.create_dataset("matrix", data=t.matrix)
+        data.attrs["unit"] = "1"
+        kind, n, m = t.labels.T
+        names = np.array(_KINDS, dtype=object)[kind]
+        file.create_dataset("wave_kind", data=names, dtype=h5py.string_dtype())
+        file.create_dataset("wave_order_n", data=n)
+        file.create_dataset("wave_degree_m", data=m)
+        place = file.create_dataset("origin", data=t.origin)
+        place.attrs.update(unit="nm", meaning="centre of the waves in the particle's coordinates")
+        for name, (unit, meaning) in _NUMBERS.items():
+            number = file.create_dataset(name, data=float(getattr(t, name)))
+            number.attrs.update(unit=unit, meaning=meaning)
+    os.replace(draft, path)
+
+
+def load_t_matrix(path: str | Path) -> TMatrix:
+    """Read a T-matrix from a file of `save_t_matrix`.
+
+    Raises
+    ------
+    InputError
+        If there is no such file or it holds something else.
+    """
+    import h5py
+
+    path = Path(path)
+    if not path.is_file():
+        raise InputError(f"there is no file {path}")
+    try:
+        with h5py.File(path, "r") as file:
+            found = file.attrs.get("format", "none")
+            if found != FORMAT:
+                raise InputError(f"{path} is not a T-matrix file: format {found}, not {FORMAT}")
+            numbers = {name: float(file[name][()]) for name in _NUMBERS}
+            return TMatrix(
+                matrix=file["matrix"][()],
+                origin=file["origin"][()],
+                status=str(file.attrs["status"]),
+                **numbers,
+            )
+    except (OSError, KeyError) as error:
+        raise InputError(f"{path} cannot be read as a T-matrix file: {error}") from error
