@@ -10,6 +10,9 @@ from scipy.sparse import csr_array
 from .tmatrix import TMatrix
 from .vector_waves import complex_numbers, gradients
 
+# Absorption below this part of extinction is asked for to the tolerance times this part only.
+LEAST_ABSORPTION = 0.02
+
 
 @dataclass(frozen=True)
 class OrientationAverage:

@@ -12,7 +12,7 @@ import numpy as np
 
 from ..errors import InputError
 from ..lattice.linear_system import System
-from .averages import OrientationAverage
+from .averages import LEAST_ABSORPTION, OrientationAverage
 from .one_direction import OneDirection, one_direction, radiation_pressure
 from .symmetry import find_sectors
 from .vector_waves import real_harmonics
@@ -114,8 +114,9 @@ def quadrature_average(
     rule: str = "lebedev",
     tolerance: float = 1e-3,
     degree: int | None = None,
-    solver_tolerance: float = 1e-4,
+    solver_tolerance: float | None = None,
     symmetry: bool = True,
+    limit: int = 3000,
     monitor=None,
 ) -> OrientationAverage:
     """Orientation average by light from many directions, with two polarizations each.
@@ -128,17 +129,19 @@ def quadrature_average(
         Rules are refined until the averages of C_ext and C_abs change by less, relatively.
     degree : int, optional
         Stop at the rule of at least this degree instead.
-    solver_tolerance : float
-        Of `dda.solve`.
+    solver_tolerance : float, optional
+        Largest solver error allowed for each direction, relative; half of `tolerance` by default.
     symmetry : bool
         Whether directions that a symmetry of the cells turns into each other are solved once.
+    limit : int
+        Most iterations of a solve.
     monitor : callable, optional
         ``monitor(directions solved)`` after each.
 
     Returns
     -------
     OrientationAverage
-        Its errors are the changes from the last rule but one, with the solver's tolerance.
+        Its errors are the changes from the last rule but one and the solver's mean error.
 
     Raises
     ------
@@ -155,7 +158,7 @@ def quadrature_average(
     """
     if rule not in ("lebedev", "design"):
         raise InputError(f'rule {rule!r} is not known; use "lebedev" or "design"')
-    solved = _Directions(system, solver_tolerance, symmetry, monitor)
+    solved = _Directions(system, solver_tolerance or tolerance / 2, symmetry, limit, monitor)
     before = None
     degrees = LEBEDEV_DEGREES if rule == "lebedev" else DESIGN_DEGREES
     for step in degrees:
@@ -167,11 +170,12 @@ def quadrature_average(
         values = weights @ np.array([solved.response(a) for a in directions])
         if before is not None:
             change = abs(values - before)
-            small = change[0] < tolerance * values[0] and change[1] < tolerance * values[1]
+            absorbed = max(values[1], LEAST_ABSORPTION * values[0])
+            small = change[0] < tolerance * values[0] and change[1] < tolerance * absorbed
             if step >= degree if degree is not None else small:
                 break
         before = values
-    change = np.hypot(change, solver_tolerance * values[0])
+    error = np.hypot(change[[0, 1, 3]], values[6:])
     return OrientationAverage(
         c_ext=float(values[0]),
         c_abs=float(values[1]),
@@ -179,9 +183,9 @@ def quadrature_average(
         asymmetry=float(values[2] / values[3]),
         cd_ext=float(values[4]),
         cd_abs=float(values[5]),
-        c_ext_error=float(change[0]),
-        c_abs_error=float(change[1]),
-        c_sca_error=float(change[3]),
+        c_ext_error=float(error[0]),
+        c_abs_error=float(error[1]),
+        c_sca_error=float(error[2]),
         area=float(np.pi * system.r_eff**2),
         way="quadrature",
         order=len(weights),
@@ -193,21 +197,25 @@ def quadrature_average(
 class _Directions:
     """Responses by direction, each solved once."""
 
-    def __init__(self, system: System, tolerance: float, symmetry: bool, monitor):
-        self.system, self.tolerance, self.monitor = system, tolerance, monitor
+    def __init__(self, system: System, tolerance: float, symmetry: bool, limit: int, monitor):
+        self.system, self.tolerance = system, tolerance
+        self.limit, self.monitor = limit, monitor
         self.group = find_sectors(system, symmetry).group
         self.known: dict[tuple, np.ndarray] = {}
         self.products, self.status = 0.0, "converged"
         self.share = 2.0 ** -sum(system.cells.mirrors)  # a product of a mirror sector
 
     def response(self, direction: np.ndarray) -> np.ndarray:
-        """C_ext, C_abs, C_sca <cos>, C_sca unpolarized, then C_ext and C_abs left less right."""
+        """C_ext, C_abs, C_sca <cos> and C_sca unpolarized, C_ext and C_abs left less right, and
+        the errors of C_ext, C_abs and C_sca.
+        """
         for g in self.group:
             found = self.known.get(_key(g @ direction))
             if found is not None:
                 # a mirror image answers to right circular light as the original to left
-                return np.concatenate([found[:4], np.linalg.det(g) * found[4:]])
-        both = one_direction(self.system, direction, tolerance=self.tolerance)
+                sign = np.where(np.isin(np.arange(9), (4, 5)), np.linalg.det(g), 1)
+                return sign * found
+        both = one_direction(self.system, direction, tolerance=self.tolerance, limit=self.limit)
         self.products += self.share * both.products
         for part in (both.first, both.second):
             if part.status != "converged":
@@ -228,7 +236,7 @@ def _unpolarized(both: OneDirection) -> np.ndarray:
         along = pressure.c_sca * (pressure.asymmetry @ both.direction)
         rows.append([c_ext, c_ext - pressure.c_sca, along, pressure.c_sca])
     left, right = np.array(rows)
-    return np.concatenate([(left + right) / 2, (left - right)[:2]])
+    return np.concatenate([(left + right) / 2, (left - right)[:2], both.error])
 
 
 def _key(direction: np.ndarray) -> tuple:

@@ -7,11 +7,12 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from ..lattice.linear_system import System
-from ..lattice.solution import Polarization, solve
+from ..lattice.solution import Polarization
 from ..light import PlaneWave, plane_wave, transverse
 from .far_field import quadrature_order, scattering_amplitude, sphere_quadrature
 from .mueller import amplitude_matrix, mueller_matrix, scattering_plane
 from .sections import CrossSections, cross_sections
+from .settled import settle
 
 
 @dataclass(frozen=True, eq=False)
@@ -22,10 +23,13 @@ class OneDirection:
     ----------
     first, second : Polarization
         For light polarized along e1 and e2 = direction x e1.
+    error : ndarray, shape (3,)
+        Mean of the solver's errors of C_ext, C_abs and C_sca, nm^2.
     """
 
     first: Polarization
     second: Polarization
+    error: np.ndarray
 
     @property
     def direction(self) -> np.ndarray:
@@ -118,7 +122,7 @@ class OneDirection:
 
 
 def one_direction(
-    system: System, direction=(0, 0, 1), *, tolerance: float = 1e-4, limit: int = 2000
+    system: System, direction=(0, 0, 1), *, tolerance: float = 1e-3, limit: int = 3000
 ) -> OneDirection:
     """Solve for the two polarizations of one direction.
 
@@ -126,8 +130,10 @@ def one_direction(
     ----------
     system : System
     direction : array_like, shape (3,)
-    tolerance, limit
-        Of `dda.solve`.
+    tolerance : float
+        Largest solver error allowed, relative, on C_ext and on C_abs.
+    limit : int
+        Most iterations.
 
     Examples
     --------
@@ -140,9 +146,9 @@ def one_direction(
     """
     e1, e2 = transverse(plane_wave(direction, _any_transverse(direction)).direction)
     first, second = (
-        solve(system, plane_wave(direction, e), tolerance=tolerance, limit=limit) for e in (e1, e2)
+        settle(system, plane_wave(direction, e), tolerance=tolerance, limit=limit) for e in (e1, e2)
     )
-    return OneDirection(first, second)
+    return OneDirection(first.polarization, second.polarization, (first.error + second.error) / 2)
 
 
 def _any_transverse(direction) -> np.ndarray:

@@ -14,6 +14,7 @@ import numpy as np
 
 from ..errors import InputError
 from ..lattice.linear_system import System
+from .averages import LEAST_ABSORPTION
 from .columns import Column, Solved, solve_columns
 from .symmetry import Sectors, find_sectors
 from .tmatrix import TMatrix
@@ -29,8 +30,8 @@ from .wave_rotations import real_rotation_matrix
 
 LARGEST_ORDER = 24
 
-# Absorption below this part of extinction is known only to the tolerance times this part.
-_LEAST_ABSORPTION = 0.02
+# Part of the tolerance that one wave may take; three electric dipoles mostly make the average.
+_SHARE = 0.15
 
 
 def t_matrix(
@@ -168,9 +169,7 @@ class _Work:
         keep = wave_labels(self.order + 1)[:, 1] <= self.order
         matrix = (u.conj() @ self.matrix[keep]) @ u.T
         assert matrix.shape == (count, count)
-        drift = np.sqrt(
-            sum((w.count * s.drift) ** 2 for w, s in zip(self.waves, self.solved, strict=True))
-        )
+        drift = sum(w.count * s.drift for w, s in zip(self.waves, self.solved, strict=True))
         worst = [s.status for s in self.solved if s.status != "converged"]
         return TMatrix(
             matrix,
@@ -197,7 +196,7 @@ class _Work:
             t = self.factor * value
             extinction -= self.waves[j].count * t.real
             absorption -= self.waves[j].count * (t.real + abs(t) ** 2)
-        return max(absorption, _LEAST_ABSORPTION * extinction, 0.0)
+        return max(absorption, LEAST_ABSORPTION * extinction, 0.0)
 
     def _enough(self, before: int):
         """Stop a column when what it may still change is a small part of the averages."""
@@ -205,8 +204,8 @@ class _Work:
         def rule(number: int, value: complex, drift: float) -> bool:
             j = before + number
             self.values[j] = value
-            change = self.waves[j].count * abs(self.factor) * drift
-            return change < 0.3 * self.tolerance * self._strength()
+            change = abs(self.factor) * drift
+            return change < _SHARE * self.tolerance * self._strength()
 
         return rule
 
