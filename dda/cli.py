@@ -180,12 +180,10 @@ def _complaints(folder: RunFolder) -> list[str]:
         lines.append(f"no answer at {where} nm: {failed[0].message}")
     if doubtful:
         where = ", ".join(f"{row.wavelength_nm:g}" for row in doubtful)
-        worst = max(row.residual for row in doubtful)
         lines.append(
-            f"the solver did not converge at {where} nm (residual up to {worst:.1e}): these rows "
-            "are marked in the table and ringed in the figure, do not rely on them. What can "
-            "help: other cells, or a larger [solver] tolerance if the message column says that "
-            "the residual came close"
+            f"the solver did not converge at {where} nm: {doubtful[0].message} at "
+            f"{doubtful[0].wavelength_nm:g} nm. These rows are marked in the table and ringed in "
+            "the figure; do not rely on them"
         )
     return lines
 

@@ -179,14 +179,14 @@ def test_finished_wavelengths_are_kept_when_one_fails(study, capsys, monkeypatch
     from dda.errors import ComputationError
     from dda.study import runner
 
-    solve = runner.solve
+    settle = runner.settle
 
     def failing(matrix, light, **options):
         if matrix.wavelength == 520:
             raise ComputationError("it broke down")
-        return solve(matrix, light, **options)
+        return settle(matrix, light, **options)
 
-    monkeypatch.setattr(runner, "solve", failing)
+    monkeypatch.setattr(runner, "settle", failing)
     assert main(["run", study(), "--out", "out"]) == 1
     rows = _rows("out")
     assert [row["status"] for row in rows] == ["converged", "failed", "converged"]
@@ -198,8 +198,8 @@ def test_finished_wavelengths_are_kept_when_one_fails(study, capsys, monkeypatch
 def test_an_unconverged_wavelength_says_so(study, capsys, monkeypatch):
     from dda.study import runner
 
-    solve = runner.solve
-    monkeypatch.setattr(runner, "solve", lambda m, w, **o: solve(m, w, **{**o, "limit": 2}))
+    settle = runner.settle
+    monkeypatch.setattr(runner, "settle", lambda m, w, **o: settle(m, w, **{**o, "limit": 2}))
     assert main(["run", study(), "--out", "out"]) == 1
     assert {row["status"] for row in _rows("out")}.isdisjoint({"converged"})
     assert "did not converge at 480, 520, 560 nm" in capsys.readouterr().err
@@ -211,7 +211,7 @@ def test_a_mistake_of_the_program_is_no_traceback(study, capsys, monkeypatch):
     def broken(*_, **__):
         raise KeyError("nothing a user did")
 
-    monkeypatch.setattr(runner, "solve", broken)
+    monkeypatch.setattr(runner, "settle", broken)
     assert main(["run", study(), "--out", "out"]) == 1
     said = capsys.readouterr().err
     assert "a mistake in the program" in said

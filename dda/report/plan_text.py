@@ -33,7 +33,7 @@ def plan_text(plan: Plan) -> str:
             (
                 "",
                 f"(a step of the solver takes {1e3 * plan.cost.step_seconds:.3g} ms here, measured "
-                f"now; {sum(plan.cost.steps):.0f} steps expected, known to a factor of two)",
+                f"now; {sum(plan.cost.steps):.0f} steps expected, known to a factor of three)",
             ),
         ]
     )

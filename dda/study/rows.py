@@ -29,6 +29,8 @@ class Row:
     status : str
         "converged" only if the solver says so for every polarization; else what it says
         ("stalled", "limit"), or "failed" when there is no answer.
+    c_ext_solver_error_nm2, c_abs_solver_error_nm2, c_sca_solver_error_nm2 : float
+        Estimated error of the cross sections from the solver alone, not from the cells.
     balance : float
         (C_abs + C_sca - C_ext) / C_ext, each computed on its own: 0 when energy is conserved.
     seconds : float
@@ -49,6 +51,9 @@ class Row:
     iterations: int = 0
     residual: float = math.nan
     status: str = "failed"
+    c_ext_solver_error_nm2: float = math.nan
+    c_abs_solver_error_nm2: float = math.nan
+    c_sca_solver_error_nm2: float = math.nan
     balance: float = math.nan
     seconds: float = math.nan
     message: str = ""

@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+import math
 import time
 from collections.abc import Callable, Iterable, Iterator
 
 import numpy as np
 
 from dda.errors import ComputationError
-from dda.lattice import Polarization, solve, system
+from dda.lattice import system
 from dda.lattice.workers import Workers
 from dda.light import PlaneWave, plane_wave, transverse
-from dda.response import cross_sections
+from dda.response import Settled, settle
+from dda.study.estimate import expected_steps
 from dda.study.geometry import Geometries, Geometry
 from dda.study.media import media_of
 from dda.study.points import Point
@@ -66,13 +68,15 @@ def _row(point: Point, geometry: Geometry, watch: Watch) -> Row:
         return _failed(point, geometry, started, "out of memory")
     except (ComputationError, ArithmeticError, np.linalg.LinAlgError) as error:
         return _failed(point, geometry, started, str(error))
-    responses = [cross_sections(solution) for solution in solutions]
+    sections = [solution.sections for solution in solutions]
     c_ext, c_abs, c_sca = (
-        float(np.mean([getattr(r, name) for r in responses]))
+        float(np.mean([getattr(each, name) for each in sections]))
         for name in ("c_ext", "c_abs", "c_sca")
     )
-    area = responses[0].area
-    status = max((s.status for s in solutions), key=_badness)
+    errors = np.mean([solution.error for solution in solutions], axis=0)
+    area = sections[0].area
+    polarizations = [solution.polarization for solution in solutions]
+    status = max((p.status for p in polarizations), key=_badness)
     return Row(
         wavelength_nm=point.wavelength,
         c_ext_nm2=c_ext,
@@ -81,18 +85,21 @@ def _row(point: Point, geometry: Geometry, watch: Watch) -> Row:
         q_ext=c_ext / area,
         q_abs=c_abs / area,
         q_sca=c_sca / area,
-        cells=solutions[0].system.n,
+        cells=polarizations[0].system.n,
         spacing_nm=geometry.cells.spacing,
-        iterations=sum(s.iterations for s in solutions),
-        residual=max(s.residual for s in solutions),
+        iterations=sum(p.iterations for p in polarizations),
+        residual=max(p.residual for p in polarizations),
         status=status,
-        balance=float(np.mean([r.balance for r in responses])),
+        c_ext_solver_error_nm2=float(errors[0]),
+        c_abs_solver_error_nm2=float(errors[1]),
+        c_sca_solver_error_nm2=float(errors[2]),
+        balance=float(np.mean([each.balance for each in sections])),
         seconds=time.perf_counter() - started,
-        message="" if status == "converged" else _advice(solutions, point),
+        message="" if status == "converged" else _advice(solutions),
     )
 
 
-def _solutions(point: Point, geometry: Geometry, watch: Watch) -> list[Polarization]:
+def _solutions(point: Point, geometry: Geometry, watch: Watch) -> list[Settled]:
     label = f"{point.wavelength:g} nm"
     watch(f"{label}: cells", 0.0)
     cells = geometry.cells
@@ -107,22 +114,21 @@ def _solutions(point: Point, geometry: Geometry, watch: Watch) -> list[Polarizat
         workers=Workers(point.solver.threads),
     )
     lights = lights_of(point)
-    solutions = []
-    for number, light in enumerate(lights):
-        monitor = _monitor(label, number / len(lights), len(lights), point, watch)
-        solutions.append(solve(matrix, light, tolerance=point.solver.tolerance, monitor=monitor))
-    return solutions
+    indices = media.relative_index(point.wavelength).values()
+    steps = max(expected_steps(m, max(cells.shape), point.solver.tolerance) for m in indices)
+    monitor = _monitor(label, steps * len(lights), watch)
+    return [settle(matrix, x, tolerance=point.solver.tolerance, monitor=monitor) for x in lights]
 
 
-def _monitor(
-    label: str, done: float, solves: int, point: Point, watch: Watch
-) -> Callable[[int, np.ndarray, float], bool]:
-    """Return what the solver calls after every step; residuals fall about exponentially."""
-    target = np.log10(point.solver.tolerance)
+def _monitor(label: str, steps: float, watch: Watch) -> Callable[[int, np.ndarray, float], bool]:
+    """Return what the solver calls after every step, in every mirror sector."""
+    taken = 0
 
-    def after_step(step: int, _: np.ndarray, residual: float) -> bool:
-        part = float(np.clip(np.log10(max(residual, 1e-300)) / target, 0, 1))
-        watch(f"{label}: step {step}, residual {residual:.1e}", done + part / solves)
+    def after_step(_: int, __: np.ndarray, residual: float) -> bool:
+        nonlocal taken
+        taken += 1
+        # How many steps there will be is known roughly: the bar slows down instead of overflowing.
+        watch(f"{label}: step {taken}, residual {residual:.1e}", 1 - math.exp(-taken / steps))
         return False
 
     return after_step
@@ -141,9 +147,11 @@ def _badness(status: str) -> int:
     return _STATUSES.index(status) if status in _STATUSES else len(_STATUSES)
 
 
-def _advice(solutions: list[Polarization], point: Point) -> str:
-    worst = max(solutions, key=lambda s: s.residual)
+def _advice(solutions: list[Settled]) -> str:
+    worst = max(solutions, key=lambda each: each.polarization.residual)
+    c_ext, c_abs = worst.sections.c_ext, worst.sections.c_abs
+    ext, absorbed = 100 * worst.error[0] / c_ext, 100 * worst.error[1] / abs(c_abs)
     return (
-        f"residual {worst.residual:.1e} after {worst.iterations} steps, "
-        f"{point.solver.tolerance:.0e} asked for"
+        f"after {worst.polarization.iterations} steps the solver leaves C_ext uncertain by "
+        f"{ext:.2g} %, C_abs by {absorbed:.2g} %"
     )

@@ -251,8 +251,7 @@ class AccuracyTable(Table):
 class SolverTable(Table):
     """``[solver]``: how the linear system is solved; every key has a default.
 
-    The default tolerance leaves an error of a few 1e-4 in the cross sections of gold, well below
-    that of the cells.
+    ``tolerance`` is the largest relative error that the solver may leave in C_ext and C_abs.
     """
 
     tolerance: Annotated[float, Field(strict=True, gt=0, lt=1, allow_inf_nan=False)] = 1e-3
