@@ -11,9 +11,10 @@ import numpy as np
 from ..errors import InputError
 from .near_field import NearField
 
-# Closer than this many coarse spacings to a surface the two fields differ mostly by the lattice's
-# roughness, which does not fall as a power of the spacing: extrapolating would only magnify it.
-_SMOOTH = 3.0 - 1e-6
+# Closer than this many coarse spacings to a surface, outside and inside, the two fields differ
+# mostly by the lattice's roughness, which does not fall as a power of the spacing: extrapolating
+# would only magnify it.
+_SMOOTH_OUTSIDE, _SMOOTH_INSIDE = 3.0 - 1e-6, 2.0 - 1e-6
 
 
 @dataclass(frozen=True, eq=False)
@@ -23,8 +24,8 @@ class RefinedField:
     Attributes
     ----------
     e2 : ndarray, shape (n,)
-        Best value: extrapolated to zero spacing three coarse spacings or more from a surface,
-        that of the finest spacing closer by.
+        Best value: extrapolated to zero spacing three coarse spacings or more outside a surface
+        and two inside, that of the finest spacing closer by.
     e2_error : ndarray, shape (n,)
         Its error bar.
     trusted : ndarray of bool, shape (n,)
@@ -58,9 +59,10 @@ def refined(fields: Sequence[NearField]) -> RefinedField:
     -----
     Away from surfaces the error falls as d^2: the values are extrapolated along a least-squares
     line in d^2 and the error bar is the size of the correction. Near surfaces it is the largest
-    difference from the finest value. Since a difference can vanish by chance, no bar is
-    narrower than a half (outside), one (inside) or one and a quarter (near a surface) of the root
-    mean square relative one of its kind of points.
+    difference from the finest value, widened by a half and more if the spacings are close. Since
+    a difference can vanish by chance, no bar is narrower than the root mean square relative one
+    of its kind of points (away or near, outside or inside), and one near a surface is a quarter
+    wider than that away from it on the same side.
 
     Examples
     --------
@@ -83,16 +85,22 @@ def refined(fields: Sequence[NearField]) -> RefinedField:
     fine = values[-1]
     scale = np.maximum(fine, 1e-12)
     line = np.polynomial.polynomial.polyfit(spacing**2, values, 1)[0]
-    away = np.abs(fields[0].height) >= _SMOOTH * spacing[0]
+    inside = fields[-1].material >= 0
+    smooth = np.where(inside, _SMOOTH_INSIDE, _SMOOTH_OUTSIDE)
+    away = np.abs(fields[0].height) >= smooth * spacing[0]
     # a line may overshoot below zero where the field almost vanishes
     extrapolated = np.clip(line, 0.25 * fine, 4 * fine)
-    step = np.where(away, np.abs(extrapolated - fine), np.abs(values[:-1] - fine).max(axis=0))
-    error = step.copy()
-    inside = fields[-1].material >= 0
-    for kind, least in ((away & ~inside, 0.5), (away & inside, 1.0), (~away, 1.25)):
-        if kind.any():
-            typical = float(np.sqrt(np.mean(np.minimum(step[kind] / scale[kind], 1) ** 2)))
-            error[kind] = np.maximum(error[kind], least * typical * scale[kind])
+    widened = 1.5 * max(1.0, 1 / ((spacing[0] / spacing[-1]) ** 2 - 1))
+    roughness = widened * np.abs(values[:-1] - fine).max(axis=0)
+    error = np.where(away, np.abs(extrapolated - fine), roughness)
+    for side in (inside, ~inside):
+        least = 0.0
+        for kind in (side & away, side & ~away):
+            least *= 1.25
+            if kind.any():
+                relative = np.minimum(error[kind] / scale[kind], 1)
+                least = max(least, float(np.sqrt(np.mean(relative**2))))
+                error[kind] = np.maximum(error[kind], least * scale[kind])
     same = np.array([f.material == fields[-1].material for f in fields]).all(axis=0)
     return RefinedField(np.where(away, extrapolated, fine), error, fields[-1].trusted & same)
 

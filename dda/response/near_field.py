@@ -13,30 +13,11 @@ from ..lattice.linear_system import System
 from ..lattice.solution import Polarization
 from ..lattice.workers import Workers
 from .outer_distance import outer_distance
-from .smeared import Progress, SmearedField, Surroundings
-from .two_sided import (
-    DEEP,
-    INNER_LINE,
-    OUTER_LINE,
-    REACH,
-    SHORT_LINE,
-    blur,
-    continued,
-    flat_along,
-    inner_values,
-    outer_values,
-    outward,
-)
+from .smeared import Progress, SmearedField
+from .two_sided import Places, blur, inside_values, outside_values
 
-#: Outside, fields at least this many spacings from a flat surface are held to their error bars.
-TRUSTED_OUTSIDE = 1.0
-#: The same inside, and everywhere near edges and narrow gaps.
-TRUSTED_INSIDE = 2.0
-
-# A blurred fraction this close to 1 is all one material: the lattice alone makes 0.5 % of ripple.
-_TRACE = 0.02
-_ROUNDING = 1e-6
 _BEYOND = 3.0  # spacings; what lies farther from the surface need not be told apart
+_AT_ONCE = 20_000  # points whose normals are followed at a time, which bounds the memory
 
 
 @dataclass(frozen=True, eq=False)
@@ -147,42 +128,36 @@ def near_field(
     points = checked_points(points)
     system, light = polarization.system, polarization.light
     sampler = sampler or SmearedField(polarization, workers)
-    window = system.cells.window_width if _windowed(system) else 0.0
-    near = sampler.around(points)
-    height, material = _sides(system, points, near, particle)
-    tasks = _Tasks(progress, len(points))
+    height, material = _sides(system, points, sampler, particle)
+    inside, outside = np.flatnonzero(material >= 0), np.flatnonzero(material < 0)
+    e, h = np.zeros(points.shape, complex), np.zeros(points.shape, complex)
+    trusted = np.zeros(len(points), bool)
 
     def incident(at: np.ndarray) -> np.ndarray:
         return light.field(at, system.k)  # type: ignore[attr-defined]
 
-    filled = near.fraction.sum(axis=1)
-    inside = material >= 0
-    own = np.where(inside, near.fraction[np.arange(len(points)), material], 1 - filled)
-    deep = inside & (own > 1 - _TRACE)
-    clear = ~inside & ~(near.structure != 0).any(axis=1)
-    wanted = np.ones(len(points), bool) if magnetic else ~deep
-    e, h = np.zeros(points.shape, complex), np.zeros(points.shape, complex)
-    e[wanted], h[wanted] = sampler.scattered(points[wanted], magnetic, tasks.of(wanted))
-    e += incident(points)
-    eps = np.append(system.permittivity, 1.0)[material]
-    e[deep] = near.density[deep] / (own * (eps - 1))[deep, None]
-    trusted = deep | clear
-    rows = np.flatnonzero(~deep & ~clear)
-    if len(rows):
-        e[rows], trusted[rows] = _sharpened(
-            sampler, incident, points[rows], e[rows], near, rows, height[rows], material[rows],
-            eps[rows], window,
-        )  # fmt: skip
-    tasks.finish()
-    e_incident = incident(points)
-    h_incident = None
-    if magnetic:
-        h_incident = _magnetic(light, points, system.k)
-        h += h_incident
+    sums = [outside, inside] if magnetic else [outside]
+    told = _shares(progress, [len(rows) for rows in sums])
+    for rows, tell in zip(sums, told, strict=True):
+        e[rows], h[rows] = sampler.scattered(points[rows], magnetic, tell)
+    e[outside] += incident(points[outside])
+    for rows, of in ((outside, outside_values), (inside, inside_values)):
+        for part in np.array_split(rows, 1 + len(rows) // _AT_ONCE):
+            eps = np.append(system.permittivity, 1.0)[material[part]]
+            place = Places(points[part], height[part] / system.cells.spacing, eps)
+            e[part], trusted[part] = of(sampler, incident, place, e[part])
+    h_incident = _magnetic(light, points, system.k) if magnetic else None
     return NearField(
-        points, e, e_incident, h if magnetic else None, h_incident, material, height, trusted,
+        points,
+        e,
+        incident(points),
+        h + h_incident if h_incident is not None else None,
+        h_incident,
+        material,
+        height,
+        trusted,
         system.cells.spacing,
-    )  # fmt: skip
+    )
 
 
 def checked_points(points: np.ndarray) -> np.ndarray:
@@ -199,72 +174,20 @@ def checked_points(points: np.ndarray) -> np.ndarray:
 
 
 def _sides(
-    system: System, points: np.ndarray, near: Surroundings, particle: Particle | None
+    system: System, points: np.ndarray, sampler: SmearedField, particle: Particle | None
 ) -> tuple[np.ndarray, np.ndarray]:
     """Height over the surface in nm and material of every point."""
     d = system.cells.spacing
-    filled = near.fraction.sum(axis=1)
+    fraction = sampler.around(points).fraction
+    filled = fraction.sum(axis=1)
     height = d * np.clip(blur(system.cells.window_width).height(filled), -_BEYOND, _BEYOND)
     if particle is not None:
         measured = outer_distance(particle, points)
         if measured is not None:
             height = -measured
-    material = near.fraction.argmax(axis=1).astype(np.int16)
-    material[height >= 0] = -1
+    material = fraction.argmax(axis=1).astype(np.int16)
+    material[(height >= 0) | (filled == 0)] = -1
     return height, material
-
-
-def _sharpened(
-    sampler: SmearedField,
-    incident,
-    points: np.ndarray,
-    e: np.ndarray,
-    around: Surroundings,
-    rows: np.ndarray,
-    height: np.ndarray,
-    material: np.ndarray,
-    eps: np.ndarray,
-    window: float,
-) -> tuple[np.ndarray, np.ndarray]:
-    """E of points whose ball reaches over a surface, and whether to trust it."""
-    near = Surroundings(around.density[rows], around.fraction[rows], around.structure[rows])
-    d = sampler.system.cells.spacing
-    u = height / d
-    normal = outward(sampler, points, near)
-    e = continued(e, near.density, normal, eps)
-    # between two materials inside the particle continuity alone is used
-    single = (near.fraction > 0.02).sum(axis=1) <= 1
-    if window <= 0:
-        return e, np.abs(u) >= TRUSTED_INSIDE - _ROUNDING
-    trusted = np.abs(u) >= TRUSTED_INSIDE - _ROUNDING
-    foot = points - height[:, None] * normal
-    outside = material < 0
-    left = single & outside & (u < REACH)
-    for line in (OUTER_LINE, SHORT_LINE):
-        chosen = np.flatnonzero(left)
-        chosen = chosen[flat_along(sampler, foot[chosen], normal[chosen], line, window)]
-        if len(chosen):
-            e[chosen] = outer_values(
-                sampler, incident, foot[chosen], normal[chosen], u[chosen], line, window
-            )
-            trusted[chosen] = u[chosen] >= TRUSTED_OUTSIDE - _ROUNDING
-            left[chosen] = False
-    within = np.flatnonzero(single & ~outside)
-    filled = near.fraction.sum(axis=1)
-    e[within] = near.density[within] / (filled * (eps - 1))[within, None]
-    chosen = within[u[within] > -DEEP]
-    chosen = chosen[flat_along(sampler, foot[chosen], normal[chosen], INNER_LINE, window)]
-    if len(chosen):
-        e[chosen] = inner_values(
-            sampler, eps[chosen], foot[chosen], normal[chosen], u[chosen], INNER_LINE, window
-        )
-    return e, trusted
-
-
-def _windowed(system: System) -> bool:
-    """Whether the surface cells hold what the window holds, which the unblurring counts on."""
-    occupied = int((system.cells.window.sum(axis=1) > 0.02).sum())
-    return system.n == occupied and len(system.alpha_inverse.where) > 0
 
 
 def _magnetic(light, points: np.ndarray, k: float) -> np.ndarray:
@@ -275,19 +198,13 @@ def _magnetic(light, points: np.ndarray, k: float) -> np.ndarray:
     return light.magnetic(points, k)
 
 
-class _Tasks:
-    """Progress of a run whose last tenth is the sharpening."""
+def _shares(progress: Progress | None, sizes: list[int]) -> list[Progress | None]:
+    """Callbacks for parts of a run of so many points each."""
+    if progress is None:
+        return [None] * len(sizes)
+    total, told = sum(sizes), progress
 
-    def __init__(self, told: Progress | None, total: int):
-        self._told, self._total = told, total
+    def after(first: int) -> Progress:
+        return lambda done, _: told(first + done, total)
 
-    def of(self, chosen: np.ndarray) -> Progress | None:
-        told = self._told
-        if told is None:
-            return None
-        count = max(1, int(chosen.sum()))
-        return lambda done, _: told(int(0.9 * self._total * done / count), self._total)
-
-    def finish(self) -> None:
-        if self._told is not None:
-            self._told(self._total, self._total)
+    return [after(int(first)) for first in np.cumsum([0, *sizes])[:-1]]

@@ -104,8 +104,8 @@ class SmearedField:
             told(done, len(points))
         return e, h
 
-    def around(self, points: np.ndarray) -> Surroundings:
-        """Averages over the cells around `points` (n, 3) in nm."""
+    def around(self, points: np.ndarray, smear: float = SMEAR) -> Surroundings:
+        """Averages over balls of radius `smear` (spacings) around `points` (n, 3) in nm."""
         points = np.ascontiguousarray(points, float).reshape(-1, 3)
         n = len(points)
         density = np.zeros((n, 3), np.complex128)
@@ -116,7 +116,7 @@ class SmearedField:
         def share(a: int, b: int) -> None:
             add_surroundings(
                 points, cells.origin, cells.spacing, self._row, self._p, self._window,
-                self._tensor, self.radius, density, fraction, structure, a, b,
+                self._tensor, smear * cells.spacing, density, fraction, structure, a, b,
             )  # fmt: skip
 
         self.workers.run(share, self.workers.split(n, grain=1024))

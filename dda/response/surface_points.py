@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from scipy.spatial import cKDTree
@@ -34,6 +34,8 @@ class SurfacePoints:
         Over the particle's surface, nm.
     step : float
         About the distance between neighbours, nm.
+    corners : ndarray, shape (n, 4, 3)
+        Of the quadrilateral around each point, nm, for pictures.
     """
 
     points: np.ndarray
@@ -41,6 +43,7 @@ class SurfacePoints:
     areas: np.ndarray
     height: float
     step: float
+    corners: np.ndarray = field(repr=False)
 
 
 def surface_points(particle: Particle, step: float, height: float = 0.0) -> SurfacePoints:
@@ -95,7 +98,14 @@ def surface_points(particle: Particle, step: float, height: float = 0.0) -> Surf
     kept = areas > 0
     if height > 0:
         kept &= _clearance(particle, middle, vertices) >= 0.9 * height
-    return SurfacePoints(middle[kept], normals[kept], areas[kept], float(height), float(step))
+    return SurfacePoints(
+        middle[kept],
+        normals[kept],
+        areas[kept],
+        float(height),
+        float(step),
+        risen[quads[kept]],
+    )
 
 
 def _surface_net(particle: Particle, step: float) -> tuple[np.ndarray, np.ndarray]:
