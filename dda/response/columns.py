@@ -48,7 +48,7 @@ class Solved:
     value : complex
         ``E^T p`` corrected by ``p^T (E - A p)``: its error is of second order in the remainder.
     drift : float
-        How far `value` wandered over the last quarter of the steps: an error bar for it.
+        How far `value` wandered over the last third of the steps: an error bar for it.
     residual : float
         Norm of the remainder, preconditioned and relative.
     steps : int
@@ -231,7 +231,7 @@ class _Run:
 
     @property
     def drift(self) -> float:
-        back = max(_LEAST_DELAY, self.steps // 4)
+        back = max(_LEAST_DELAY, self.steps // 3)
         if self.steps < back:
             return np.inf
         return float(np.max(np.abs(np.array(self.values[-back - 1 : -1]) - self.values[-1])))
