@@ -7,9 +7,10 @@ from typing import Protocol
 
 import numpy as np
 
-# Quantities are looked at every so many steps, and their spread is taken over this part of all
+# Quantities are looked at every so many steps (twice as often at first), and their spread is taken over this part of all
 # steps so far: a slow method must hold still for longer than a quick one.
 _STRIDE = 4
+_EARLY = 24
 _WINDOW = 0.3
 _LEAST_LOOKS = 6
 
@@ -48,7 +49,7 @@ class Settling:
     def __call__(self, step: int, x: np.ndarray, residual: float) -> bool:
         """Whether to stop."""
         stop = bool(self._after_step and self._after_step(step, x, residual))
-        if step % _STRIDE == 0:
+        if step % (_STRIDE if step > _EARLY else _STRIDE // 2) == 0:
             self.look(step, x)
             stop = stop or self.settled
         return stop

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -57,6 +57,7 @@ def solve(
     tolerance: float = 1e-4,
     limit: int = 2000,
     start: np.ndarray | None = None,
+    previous: Sequence[np.ndarray] = (),
     monitor: Callable[[int, np.ndarray, float], bool] | None = None,
     mirrors: tuple[bool, bool, bool] | None = None,
     goal: Goal | None = None,
@@ -74,6 +75,9 @@ def solve(
         Most iterations in a mirror sector.
     start : ndarray, shape (n, 3), optional
         First guess of the dipoles.
+    previous : sequence of ndarray, shape (n, 3)
+        Dipoles of similar systems on the same cells, at neighbouring wavelengths: the first guess
+        is their combination with the smallest residual. Costs a product each.
     monitor : callable, optional
         As in `dda.lattice.krylov.cocg`; the vector it is given belongs to one mirror sector.
     mirrors : three bool, optional
@@ -97,6 +101,7 @@ def solve(
     p = np.zeros((system.n, 3), system.dtype)
     results: list[tuple[KrylovResult, float]] = []
     whole = float(np.linalg.norm(incident))
+    extra = 0
     for coefficient, part in parts:
         field_ = (
             incident if len(parts) == 1 else coefficient * part.field(system.positions, system.k)
@@ -107,6 +112,9 @@ def solve(
             if share < 1e-7 * (1 if system.dtype == np.complex128 else 100):
                 continue  # the light has no part of this parity
             guess = sector.fold(start) if start is not None and len(parts) == 1 else None
+            if previous and guess is None:
+                guess, spent = best_combination(sector, b, [sector.fold(v) for v in previous])
+                extra += spent
             watch = goal.watch(sector, field_, monitor) if goal else None
             result = _solve_sector(sector, b, tolerance, limit, guess, watch or monitor)
             if goal and watch:
@@ -120,10 +128,40 @@ def solve(
         p,
         incident,
         max(r.iterations for r, _ in results),
-        sum(r.products for r, _ in results),
+        extra + sum(r.products for r, _ in results),
         float(np.sqrt(sum((r.residual * share) ** 2 for r, share in results))),
         max((_STATUS_OF.get(r.status, r.status) for r, _ in results), key=_badness),
     )
+
+
+def best_combination(
+    sector: Sector, b: np.ndarray, vectors: Sequence[np.ndarray]
+) -> tuple[np.ndarray | None, int]:
+    """Combine vectors so that the preconditioned residual is least.
+
+    Parameters
+    ----------
+    sector : Sector
+    b : ndarray, shape (3n,)
+    vectors : sequence of ndarray, shape (3n,)
+
+    Returns
+    -------
+    combination : ndarray or None
+        None when all vectors vanish in the sector.
+    products : int
+        Products that it took.
+    """
+    scale = max((float(np.linalg.norm(v)) for v in vectors), default=0.0)
+    used = [v for v in vectors if np.linalg.norm(v) > 1e-9 * scale]
+    if not used:
+        return None, 0
+    images = np.stack([sector.precondition(sector.matvec(v)) for v in used], axis=1)
+    weights = np.linalg.lstsq(images, sector.precondition(b), rcond=1e-10)[0]
+    out = np.zeros_like(used[0])
+    for weight, v in zip(weights, used, strict=True):
+        out += sector.dtype.type(weight) * v
+    return out, len(used)
 
 
 def _solve_sector(sector: Sector, b, tolerance, limit, start, monitor) -> KrylovResult:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -41,6 +41,7 @@ def settle(
     residual: float = 1e-6,
     limit: int = 3000,
     start: np.ndarray | None = None,
+    previous: Sequence[np.ndarray] = (),
     monitor: Callable[[int, np.ndarray, float], bool] | None = None,
 ) -> Settled:
     """Solve until C_ext and C_abs change by less than `tolerance` of their values.
@@ -55,7 +56,7 @@ def settle(
         A residual this small ends the solve as well.
     limit : int
         Most iterations in a mirror sector.
-    start, monitor
+    start, previous, monitor
         As in `dda.solve`.
 
     Returns
@@ -74,6 +75,7 @@ def settle(
         tolerance=residual,
         limit=limit,
         start=start,
+        previous=previous,
         monitor=monitor,
         goal=goal,
     )
