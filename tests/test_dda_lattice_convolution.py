@@ -55,8 +55,9 @@ def test_against_the_sum_over_pairs(shape, fft, precision):
     assert ours.dtype == (np.complex128 if precision == "double" else np.complex64)
 
 
-def test_point_dipoles_too():
-    table, index, p = problem((4, 5, 3), kind="point")
+@pytest.mark.parametrize("kind", ["point", "fcd-corners"])
+def test_other_kernels_too(kind):
+    table, index, p = problem((4, 5, 3), kind=kind)
     ours = convolved((4, 5, 3), table, index, p)
     assert ours == pytest.approx(by_pairs(table, index, p), rel=1e-12, abs=1e-15)
 

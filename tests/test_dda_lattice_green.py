@@ -95,28 +95,49 @@ def test_imaginary_part_is_untouched_by_the_filter():
     radiation reaction (2/3) k^3, to order (k d)^2/5."""
     steps = np.array([[1, 0, 0], [2, 1, 0], [3, 3, 3]])
     point, fcd = (tensor(radial_table(kind, D, K, 27), steps) for kind in ("point", "fcd"))
+    corners = tensor(radial_table("fcd-corners", D, K, 27), steps)
     assert fcd.imag == pytest.approx(point.imag, rel=1e-10)
+    assert corners.imag == pytest.approx(point.imag, rel=1e-10)
     assert fcd[0, 1, 1].imag == pytest.approx(2 / 3 * K**3, rel=(K * D) ** 2 / 4)
 
 
-def test_static_filtered_tensor_in_the_band():
-    """For k d -> 0 the lattice's Fourier sum of d^3 G is 4 pi/3 - 4 pi qq/q^2 inside the band.
+@pytest.fixture(scope="module")
+def lattice_sum():
+    """Fourier sum of d^3 G over a ball of cells, for k d -> 0, as a function of kernel and q d.
 
-    The lattice carries exactly what the filter lets through, so no image of the band overlaps: the
-    sum over a finite ball of cells misses what lies beyond, smoothed here by a Gaussian taper which
-    blurs q by 2/(taper); the directional part tells wrong kernels (point dipoles) apart.
+    The lattice carries what the filter lets through, so no image of the band overlaps. The sum
+    misses what lies beyond the ball, smoothed by a Gaussian taper, which blurs q by 0.11.
     """
     reach, taper = 30, 9.0
     line = np.arange(-reach, reach + 1)
     steps = np.stack(np.meshgrid(line, line, line, indexing="ij"), axis=-1).reshape(-1, 3)
-    square = (steps**2).sum(axis=1)
-    weight = np.exp(-square / (2 * taper**2))
-    table = radial_table("fcd", 1.0, 1e-4, 3 * reach**2)
-    g = tensor(table, steps).real * weight[:, None, None]
-    for q in (np.array([1.2, 0, 0]), np.array([1.0, 1.0, 0.5]), np.array([0.3, -1.1, 1.6])):
-        ours = np.einsum("n,nab->ab", np.cos(steps @ q), g)
-        expected = 4 * np.pi / 3 * np.eye(3) - 4 * np.pi * np.outer(q, q) / (q @ q)
-        assert abs(ours - expected).max() < 0.02 * 4 * np.pi
+    weight = np.exp(-((steps**2).sum(axis=1)) / (2 * taper**2))
+    tables = {
+        kind: tensor(radial_table(kind, 1.0, 1e-4, 3 * reach**2), steps).real
+        for kind in ("fcd", "fcd-corners")
+    }
+
+    def total(kind, q):
+        own = -8 * np.pi / 3 * (1 - np.pi / 6) if kind == "fcd-corners" else 0.0
+        waves = np.cos(steps @ np.asarray(q)) * weight
+        return np.einsum("n,nab->ab", waves, tables[kind]) + own * np.eye(3)
+
+    return total
+
+
+@pytest.mark.parametrize("kind", ["fcd", "fcd-corners"])
+@pytest.mark.parametrize("q", [(1.2, 0, 0), (1.0, 1.0, 0.5), (0.3, -1.1, 1.6)])
+def test_static_filtered_tensor_in_the_band(lattice_sum, kind, q):
+    """4 pi/3 - 4 pi qq/q^2, the exact electrostatic interaction; the taper leaves 2 % of 4 pi."""
+    expected = 4 * np.pi / 3 * np.eye(3) - 4 * np.pi * np.outer(q, q) / np.dot(q, q)
+    assert abs(lattice_sum(kind, q) - expected).max() < 0.02 * 4 * np.pi
+
+
+@pytest.mark.parametrize(("kind", "value"), [("fcd", 0.0), ("fcd-corners", -8 * np.pi / 3)])
+@pytest.mark.parametrize("q", [(np.pi, np.pi, np.pi), (np.pi, np.pi, 2.0)])
+def test_static_filtered_tensor_in_the_corners_of_the_zone(lattice_sum, kind, value, q):
+    """Beyond the sphere of radius pi/d nothing, or what longitudinal waves get: 4 pi/3 - 4 pi."""
+    assert abs(lattice_sum(kind, q) - value * np.eye(3)).max() < 0.02 * 4 * np.pi
 
 
 def test_octant_holds_the_tensors_components():

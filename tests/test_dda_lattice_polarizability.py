@@ -50,7 +50,7 @@ def test_filtered_dipoles_by_the_integral_of_the_filtered_tensor():
     assert (1 / static(eps) - ours) * D**3 == pytest.approx(self_field, rel=1e-12)
 
 
-@pytest.mark.parametrize("kind", ["fcd", "ldr", "rr"])
+@pytest.mark.parametrize("kind", ["fcd", "fcd-corners", "ldr", "rr"])
 def test_lossless_cells_lose_by_radiation_alone(kind):
     """Im(alpha^-1) = -(2/3) k^3 where eps is real (optical theorem of a dipole)."""
     eps = np.array([1.3, 2.25, 12.0, -5.0], complex)

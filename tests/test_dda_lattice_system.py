@@ -61,7 +61,7 @@ def test_matrix_loses_energy(system):
 
 
 @pytest.mark.parametrize("surface", ["window", "cell", "whole"])
-@pytest.mark.parametrize("polarizability", ["fcd", "ldr", "rr"])
+@pytest.mark.parametrize("polarizability", ["fcd-corners", "fcd", "ldr", "rr"])
 def test_iteration_against_dense_solution(body, surface, polarizability):
     options = {"surface": surface, "polarizability": polarizability, "light": LIGHT}
     system = dda.system(body, 560, "water", **options)

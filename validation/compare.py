@@ -60,6 +60,7 @@ def run(
     host: float = 1.33,
     light: dda.PlaneWave | None = None,
     tolerance: float = 1e-4,
+    limit: int | None = None,
     **options,
 ) -> Run:
     """Voxelize, solve and take cross sections with the program's defaults.
@@ -77,6 +78,8 @@ def run(
         Along z, polarized along x by default.
     tolerance : float
         Of the solver.
+    limit : int, optional
+        Of the solver's iterations, where comparison alone is not worth a long wait.
     **options
         Of `dda.system`.
     """
@@ -85,7 +88,8 @@ def run(
     system = dda.system(
         shapes.voxelize(particle, cells=cells), wavelength, host, light=light, **options
     )
-    polarization = dda.solve(system, light, tolerance=tolerance)
+    patience = {} if limit is None else {"limit": limit}
+    polarization = dda.solve(system, light, tolerance=tolerance, **patience)
     response = dda.cross_sections(polarization)
     return Run(response, polarization, cells, time.perf_counter() - begin)
 

@@ -28,8 +28,11 @@ def cubes(quick: bool) -> Table:
     text = """
 C_ext / C_abs in nm² of a gold cube, light along a cube axis, host 1.33. There is no exact solution;
 "distance" is how far the default surface (window) is from its own straight line in d² at d = 0, and
-the staircase (whole cells) stands beside it. Allowed: 8 % with 16 cells, 4 % with 24, 3 % with
-more. The trial is what a first version of the method gave, for orientation.
+the staircase (whole cells) stands beside it. Allowed: from 8 % with 16 cells to 3 % with 28 and
+more, and half as much again for the smaller rounding, whose radius holds half the cells. The trial
+is what a first version of the method gave, for orientation. The values depend on how the table of
+gold is interpolated: with straight lines in n and k, C_abs at 640 nm is 5 % higher than with the
+smooth curve used here.
 """
     columns = (
         "edge / rounding / wavelength, nm", "cells across", "whole", "trial, whole", "window",
@@ -44,14 +47,14 @@ more. The trial is what a first version of the method gave, for orientation.
         limit = extrapolated(list(steps), values)
         case = f"{edge} / {rounding} / {wavelength}"
         for n, value in zip(steps, values, strict=True):
-            staircase = run(particle, wavelength, n, surface="whole").response
+            staircase = run(particle, wavelength, n, surface="whole", limit=400).response
             distance = value / limit - 1
-            allowed = 8 if n < 24 else 4 if n < 28 else 3
+            allowed = (8 if n < 24 else 4 if n < 28 else 3) * (1 if rounding > 4 else 1.5)
             before = trial.get(n, ("-", "-"))
             whole = _two([staircase.c_ext, staircase.c_abs])
             rows.append([
                 case, f"{n}", whole, before[0], _two(value), before[1],
-                " / ".join(percent(e) for e in distance), f"{allowed}", solved[n].products,
+                " / ".join(percent(e) for e in distance), f"{allowed:g}", solved[n].products,
                 f"{solved[n].seconds:.1f}", verdict(100 * max(abs(distance)) <= allowed),
             ])  # fmt: skip
         rows.append([case, "d → 0", "-", "-", _two(limit), *["-"] * 6])

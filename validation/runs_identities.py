@@ -30,7 +30,7 @@ def identities(quick: bool) -> Table:
     text = """
 The body without symmetry is an ellipsoid of silicon stuck to a sphere of gold, 560 nm, host 1.33,
 solved to a residual of 1e-9. What is exact in the discrete method is held to 1e-6; what holds only
-as the cells become small is held to the accuracy of the cells.
+as the cells become small is held to 5 %: the gold sphere has 13 cells across.
 """
     rows = []
     for check in CHECKS[:: 3 if quick else 1]:
@@ -115,7 +115,7 @@ def rotations(cells: int) -> Iterator[list[str]]:
     for angle, axis, allowed, why in (
         (90, (0, 0, 1), 1e-6, "lattice onto itself"),
         (120, (1, 1, 1), 1e-6, "lattice onto itself"),
-        (30, (1, -2, 2), 0.02, "lattice differs"),
+        (30, (1, -2, 2), 0.05, "lattice differs"),
     ):
         turn = rotation(angle, axis)
         wave = dda.plane_wave(turn @ light.direction, turn @ light.polarization)

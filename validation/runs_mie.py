@@ -112,7 +112,8 @@ The same sphere with 16 to 33 cells across, host 1.33. The surface is the defaul
 fraction of each cell alone (cell), or none (whole, the plain staircase). The latter two jump about
 from one spacing to the next; they stand here for comparison, without a verdict. "d → 0" is the
 least-squares straight line in d² through the window's rows. The trial is what a first version of
-the method gave, for orientation.
+the method gave, for orientation. Products are those of all mirror sectors together, of which each
+costs an eighth of a product with the whole.
 """
     columns = (
         "sphere", "source", "surface", "cells across", "error C_ext / C_abs, %", "trial, %",
@@ -126,7 +127,7 @@ the method gave, for orientation.
         particle = shapes.sphere(diameter, material)
         beside = [("whole", 32), ("cell", 16), ("cell", 24), ("cell", 32)]
         for surface, across in beside[: 0 if quick else None]:
-            solved = run(particle, wavelength, across, surface=surface)
+            solved = run(particle, wavelength, across, surface=surface, limit=400)
             known = trial.get(f"{surface} {across}", "-")
             rows.append([*head, *_refined(solved, surface, reference, known, "-"), "-"])
         values = {}
