@@ -57,7 +57,7 @@ def dipole_near_sphere(
 
     Examples
     --------
-    >>> radial, tangential = dipole_near_sphere(40, 1e5, 600, -9.4 + 1.4j, 1.33)
+    >>> radial, tangential = dipole_near_sphere(40, 1e4, 600, -9.4 + 1.4j, 1.33)
     >>> round(radial.total, 6), round(tangential.radiative, 4)
     (1.0, 1.0)
     """
