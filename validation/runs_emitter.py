@@ -24,8 +24,9 @@ def emitters(quick: bool) -> Table:
     text = """
 Total and radiative decay rate of a point dipole over a sphere, over that in the host, and its
 quantum yield; 16 and 24 cells across, and "extrapolated" the program's value of both: the straight
-line in d², or the finer value where the two differ by more than a tenth. Allowed: 10 % of the total rate, 2 % of the radiative one, at 8 cells of the finer spacing or more; closer by
-there is no verdict on the total: absorption there happens in waves too short for the cells.
+line in d², or the finer value where the two differ by more than a tenth. Allowed: 2 % of the
+radiative rate, and 10 % of the total one at 8 cells of the finer spacing or more; closer by
+absorption happens in waves too short for the cells.
 """
     columns = (
         "sphere, dipole", "source", "height, nm (cells)", "total: reference", "error 16 / 24, %",
