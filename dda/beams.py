@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numba import njit
@@ -56,6 +56,13 @@ class GaussianBeam:
         """Magnetic field, in units of that of a plane wave of unit amplitude, (n, 3)."""
         directions, amplitudes, _ = self.spectrum(k, self._reach(positions))
         return _sum_waves(positions - self.focus, k * directions, np.cross(directions, amplitudes))
+
+    def linear_parts(self) -> list[tuple[complex, GaussianBeam]]:
+        """Linearly polarized beams that add up to this one, with their coefficients."""
+        return [
+            (factor, replace(self, polarization=part))
+            for factor, part in _real_parts(self.polarization)
+        ]
 
     def spectrum(self, k: float, reach: float) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         """The plane waves that make up the beam within `reach` nm of the focus.
@@ -187,6 +194,10 @@ class PointDipole:
         wave = k**2 * np.exp(1j * k * r) / r * (1 + 1j / (k * r))
         return wave[:, None] * np.cross(unit, self.moment)
 
+    def linear_parts(self) -> list[tuple[complex, PointDipole]]:
+        """Dipoles with real moments that add up to this one, with their coefficients."""
+        return [(factor, replace(self, moment=part)) for factor, part in _real_parts(self.moment)]
+
     def _away(self, positions: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         offset = np.asarray(positions, float) - self.position
         r = np.linalg.norm(offset, axis=1)
@@ -219,6 +230,19 @@ def point_dipole(position, moment=(0, 0, 1)) -> PointDipole:
     if p.shape != (3,) or not np.isfinite(p).all() or not p.any():
         raise InputError(f"moment must be three finite numbers, not all zero; got {moment}")
     return PointDipole(_place(position, "position"), p)
+
+
+def _real_parts(vector: np.ndarray) -> list[tuple[complex, np.ndarray]]:
+    """Real unit vectors and the coefficients with which they add up to a complex vector.
+
+    Solvers for complex symmetric systems may break down on light that turns.
+    """
+    parts = []
+    for factor, part in ((1.0, vector.real), (1j, vector.imag)):
+        length = float(np.linalg.norm(part))
+        if length > 1e-12 * float(np.linalg.norm(vector)):
+            parts.append((complex(factor * length), part.astype(complex) / length))
+    return parts
 
 
 def _place(value, what: str) -> np.ndarray:

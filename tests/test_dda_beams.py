@@ -64,6 +64,25 @@ def test_field_at_the_focus_is_the_polarization():
     assert beam.field(np.zeros((0, 3)), K).shape == (0, 3)
 
 
+@pytest.mark.parametrize(
+    "light",
+    [
+        gaussian_beam((1, 2, -1), "left", waist=250),
+        gaussian_beam(waist=300),
+        point_dipole((5, -3, 2), (1, 2j, 0.5)),
+        point_dipole((5, -3, 2), (0, 1j, 0)),
+    ],
+)
+def test_linear_parts_add_up(light):
+    points = np.array([[40.0, 10, -60], [0, 90, 20]])
+    parts = light.linear_parts()
+    total = sum(factor * part.field(points, K) for factor, part in parts)
+    assert np.allclose(total, light.field(points, K), atol=1e-12)
+    for _, part in parts:
+        vector = getattr(part, "moment", getattr(part, "polarization", None))
+        assert np.all(vector.imag == 0)
+
+
 def test_far_field_of_a_dipole():
     dipole = point_dipole((0, 0, 0), (0, 0, 1))
     r = 1e6
