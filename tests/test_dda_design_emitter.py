@@ -8,9 +8,9 @@ import shapes
 from dda.beams import point_dipole
 from dda.design.emitter import (
     DecayRates,
+    averaged_rates,
     decay_rates,
-    emitter,
-    emitter_averaged,
+    emitter_rates,
     refined_rates,
 )
 from dda.errors import InputError
@@ -38,7 +38,7 @@ def exact():
 
 @pytest.mark.parametrize(("moment", "which"), [((0, 0, 1), 0), ((1, 0, 0), 1)])
 def test_rates_near_a_gold_sphere(systems, exact, moment, which):
-    found = [emitter(s, (0, 0, DIAMETER / 2 + HEIGHT), moment) for s in systems]
+    found = [emitter_rates(s, (0, 0, DIAMETER / 2 + HEIGHT), moment) for s in systems]
     true = exact[which]
     # seven cells away: absorption, in short waves, is some 2 % too large and extrapolates
     assert found[1].radiative == pytest.approx(true.radiative, rel=0.01)
@@ -51,15 +51,15 @@ def test_rates_near_a_gold_sphere(systems, exact, moment, which):
 
 
 def test_average_is_that_of_three_axes(systems, exact):
-    found = emitter_averaged(systems[1], (0, DIAMETER / 2 + HEIGHT, 0))
+    found = averaged_rates(systems[1], (0, DIAMETER / 2 + HEIGHT, 0))
     mean = (exact[0].total + 2 * exact[1].total) / 3
     assert found.total == pytest.approx(mean, rel=0.05)
 
 
 def test_complex_moment_is_a_sum_of_its_parts(systems):
     place = (0, 0, DIAMETER / 2 + HEIGHT)
-    turning = emitter(systems[0], place, (1, 1j, 0))
-    along = emitter(systems[0], place, (1, 0, 0))
+    turning = emitter_rates(systems[0], place, (1, 1j, 0))
+    along = emitter_rates(systems[0], place, (1, 0, 0))
     # around the axis a circular dipole decays like a linear one; solver tolerance
     assert turning.total == pytest.approx(along.total, rel=1e-3)
     assert turning.radiative == pytest.approx(along.radiative, rel=1e-3)
@@ -75,7 +75,7 @@ def test_intrinsic_losses_are_shared(systems):
 
 def test_mistakes_are_named(systems):
     with pytest.raises(InputError, match="told from"):
-        emitter(systems[0], (0, 0, DIAMETER / 2 + 2), (0, 0, 1))
+        emitter_rates(systems[0], (0, 0, DIAMETER / 2 + 2), (0, 0, 1))
     with pytest.raises(InputError, match="PlaneWave"):
         decay_rates(dda.solve(systems[0], dda.plane_wave()))
     with pytest.raises(InputError, match="different spacings"):

@@ -7,7 +7,7 @@ import dda
 import shapes
 from dda.design.heat import CAUTION, absorbed_power, power_density
 from dda.materials import find
-from dda.response.near_field import near_field
+from dda.response.near_field import fields_at
 from validation.mie import sphere
 
 INTENSITY = 2e9
@@ -33,7 +33,7 @@ def test_cells_add_up_to_c_abs(solved):
 def test_density_at_points_is_that_of_mie(solved):
     eps = complex(find("gold").permittivity(np.array([530.0]))[0])
     points = np.array([[0, 0, 0], [10.0, 0, 0], [0, 12, 0], [0, 0, -14], [0, 0, 25]])
-    field = near_field(solved, points, particle=shapes.sphere(40, "gold"))
+    field = fields_at(solved, points, particle=shapes.sphere(40, "gold"))
     found = power_density(field, solved, INTENSITY)
     e2 = (np.abs(sphere(40, 530, eps, 1.33).fields(points)[0]) ** 2).sum(axis=1)
     # W/m^3: w eps0 Im(eps)/2 |E|^2 with I = n eps0 c |E0|^2/2

@@ -5,10 +5,10 @@ import pytest
 
 import dda
 import shapes
-from dda.design.sers import sers, sers_averaged, stokes_wavelength, turned_mean
+from dda.design.sers import sers_averaged, sers_on_surface, stokes_wavelength, turned_mean
 from dda.errors import InputError
 from dda.materials import find
-from dda.response.surface_points import surface_points
+from dda.response.surface_points import cover_surface
 from validation.mie import sphere
 from validation.runs_near_field import e2
 
@@ -25,7 +25,7 @@ def systems():
 
 @pytest.fixture(scope="module")
 def shell():
-    return surface_points(PARTICLE, step=5.0, height=3.0)
+    return cover_surface(PARTICLE, step=5.0, height=3.0)
 
 
 @pytest.fixture(scope="module")
@@ -48,7 +48,7 @@ def test_stokes_wavelength_from_wave_numbers():
 
 def test_surface_mean_and_maximum(systems, shell, exact):
     solved = [dda.solve(s, dda.plane_wave()) for s in systems]
-    found = sers(*solved, shell.points, shell.areas, particle=PARTICLE)
+    found = sers_on_surface(*solved, shell.points, shell.areas, particle=PARTICLE)
     # fourth power of a field that is off by 1 % with 16 cells
     assert found.mean == pytest.approx(np.average(exact, weights=shell.areas), rel=0.05)
     assert found.maximum == pytest.approx(exact.max(), rel=0.08)

@@ -3,14 +3,14 @@
 import numpy as np
 import pytest
 
-from dda.response.blur import blur, unblurred, unblurring
+from dda.response.blur import blur_of, unblurred, unblurring
 from dda.response.smeared_sums import held_part
 
 WIDTH, SMEAR = 2.2, 1.75
 
 
 def test_filled_fraction_of_a_half_space():
-    found = blur(WIDTH)
+    found = blur_of(WIDTH)
     heights = np.linspace(-3, 3, 25)
     filled = found.filled(heights)
     assert np.all(np.diff(filled) <= 1e-12)
@@ -20,7 +20,7 @@ def test_filled_fraction_of_a_half_space():
 
 
 def test_variance_is_that_of_both_balls():
-    found = blur(WIDTH)
+    found = blur_of(WIDTH)
     # <x^2>: ball of radius a: a^2/5; density (1 - r^2/a^2)^3: a^2/11
     expected = (WIDTH / 2) ** 2 / 5 + SMEAR**2 / 11
     assert found.kernel @ found.x**2 == pytest.approx(expected, rel=1e-4)
@@ -40,7 +40,7 @@ def test_kernel_is_that_of_random_points_in_both_balls():
     smear = smear[rng.uniform(size=len(smear)) < (1 - (smear**2).sum(axis=1)) ** 3] * SMEAR
     count = min(len(window), len(smear))
     both = window[:count] + smear[:count]
-    found = blur(WIDTH)
+    found = blur_of(WIDTH)
     for height in (-1.0, 0.3, 1.2):
         # 30 000 points leave a noise of 0.3 %
         assert np.mean(both[:, 2] < -height) == pytest.approx(float(found.filled(height)), abs=0.01)
@@ -72,7 +72,7 @@ def test_unblurring_returns_the_field_that_was_blurred():
 
 def test_inner_model_sees_nothing_of_the_outside():
     line = tuple(np.arange(-5, -0.99, 0.5))
-    found = blur(WIDTH)
+    found = blur_of(WIDTH)
     # 2 + 0.25 s inside, nothing outside, blurred exactly along the kernel
     values = [
         float((np.where(h - found.x < 0, 2 + 0.25 * (h - found.x), 0)) @ found.kernel) for h in line

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from dda.errors import InputError
-from dda.response.hot_spots import extent_above, field_numbers, hot_spots
+from dda.response.hot_spots import extent_above, field_numbers, find_hot_spots
 from dda.response.near_points import box
 
 
@@ -33,7 +33,7 @@ def test_two_spots_in_a_volume_with_their_shares():
     region = box((20, 10, 10), step=0.5)
     strong, weak = (np.sum((region.points - [x, 0, 0]) ** 2, axis=1) for x in (5, -5))
     e2 = 100 * np.exp(-strong / 2) + 50 * np.exp(-weak / 2)
-    found = hot_spots(region.points, e2, region.cell, region.step, threshold=10)
+    found = find_hot_spots(region.points, e2, region.cell, region.step, threshold=10)
     assert found.count == 2
     assert found.spots[0].place.tolist() == pytest.approx([5, 0, 0])
     assert found.spots[1].peak == pytest.approx(50, rel=1e-6)
@@ -49,13 +49,13 @@ def test_two_spots_in_a_volume_with_their_shares():
 
 def test_default_threshold_is_half_the_maximum():
     points = np.arange(5.0)[:, None] * [1, 0, 0]
-    found = hot_spots(points, np.array([10.0, 5.1, 4.9, 1, 6]), np.ones(5), step=1.0)
+    found = find_hot_spots(points, np.array([10.0, 5.1, 4.9, 1, 6]), np.ones(5), step=1.0)
     assert found.threshold == 5
     assert [s.points for s in found.spots] == [2, 1]
 
 
 def test_no_field_above_the_threshold():
-    found = hot_spots(np.zeros((2, 3)), np.ones(2), np.ones(2), step=1.0, threshold=5)
+    found = find_hot_spots(np.zeros((2, 3)), np.ones(2), np.ones(2), step=1.0, threshold=5)
     assert found.count == 0
     assert found.extent == 0
 
@@ -66,4 +66,4 @@ def test_senseless_input_is_refused():
     with pytest.raises(InputError, match="finite"):
         field_numbers(np.zeros((1, 3)), np.array([np.nan]), np.ones(1))
     with pytest.raises(InputError, match="step"):
-        hot_spots(np.zeros((1, 3)), np.ones(1), np.ones(1), step=0)
+        find_hot_spots(np.zeros((1, 3)), np.ones(1), np.ones(1), step=0)

@@ -10,7 +10,7 @@ from dda.errors import InputError
 from dda.materials import find
 from dda.response import smeared
 from dda.response.near_error import refined
-from dda.response.near_field import near_field
+from dda.response.near_field import fields_at
 from dda.response.smeared import SmearedField
 from validation.mie import sphere
 from validation.runs_near_field import directions, e2
@@ -53,7 +53,7 @@ def around(height: float, count: int = 100) -> np.ndarray:
 )
 def test_e2_of_gold_sphere_is_that_of_mie(fine, exact, cells, allowed):
     points = around(cells * fine.system.cells.spacing)
-    ours = near_field(fine, points, particle=PARTICLE)
+    ours = fields_at(fine, points, particle=PARTICLE)
     true = e2(exact.fields(points)[0])
     assert np.abs(ours.e2 / true - 1).max() < allowed
     assert ours.trusted.all() == (cells >= 1 or cells <= -2)
@@ -62,7 +62,7 @@ def test_e2_of_gold_sphere_is_that_of_mie(fine, exact, cells, allowed):
 
 def test_components_and_phase_agree_with_mie(fine, exact):
     points = around(3 * fine.system.cells.spacing)
-    ours = near_field(fine, points, particle=PARTICLE, magnetic=True)
+    ours = fields_at(fine, points, particle=PARTICLE, magnetic=True)
     e, h = exact.fields(points)
     # 1 % of the field's size: the error of 20 cells is some 0.3 %
     assert np.abs(ours.e - e).max() < 0.01 * np.abs(e).max()
@@ -73,7 +73,7 @@ def test_components_and_phase_agree_with_mie(fine, exact):
 
 def test_magnetic_field_inside(fine, exact):
     points = around(-4 * fine.system.cells.spacing)
-    ours = near_field(fine, points, particle=PARTICLE, magnetic=True)
+    ours = fields_at(fine, points, particle=PARTICLE, magnetic=True)
     # H inside comes from the same sums; the error of the dipoles is 2 % here
     assert np.abs(ours.h - exact.fields(points)[1]).max() < 0.03
 
@@ -81,7 +81,7 @@ def test_magnetic_field_inside(fine, exact):
 def test_without_the_particle_the_cells_tell_the_side(fine):
     d = fine.system.cells.spacing
     for cells in (-1.5, -0.5, 0.5, 1.5):
-        found = near_field(fine, around(cells * d))
+        found = fields_at(fine, around(cells * d))
         assert (found.material == (-1 if cells > 0 else 0)).all()
         if abs(cells) < 1:
             # blur by curvature shifts the height by half d/R, a twentieth of a cell here
@@ -114,8 +114,8 @@ def test_far_points_are_summed_directly(fine, monkeypatch):
 
 def test_fields_of_mirror_points_are_mirrored(fine):
     points = around(1.0, 40)
-    e = near_field(fine, points, particle=PARTICLE).e
-    mirrored = near_field(fine, points * [-1, 1, 1], particle=PARTICLE).e
+    e = fields_at(fine, points, particle=PARTICLE).e
+    mirrored = fields_at(fine, points * [-1, 1, 1], particle=PARTICLE).e
     # polarized along x the normal component is even, the others odd; rounding and solver noise
     assert np.allclose(mirrored, e * [1, -1, -1], atol=1e-3 * np.abs(e).max())
 
@@ -123,7 +123,7 @@ def test_fields_of_mirror_points_are_mirrored(fine):
 def test_error_bars_hold(coarse, fine, exact):
     d = fine.system.cells.spacing
     points = np.concatenate([around(c * d) for c in (1, 1.5, 2, 3, 6, -2.5, -4, -6)])
-    best = refined([near_field(s, points, particle=PARTICLE) for s in (fine, coarse)])
+    best = refined([fields_at(s, points, particle=PARTICLE) for s in (fine, coarse)])
     off = np.abs(best.e2 - e2(exact.fields(points)[0])) / best.e2_error
     assert best.trusted.all()
     assert (off < 1).mean() > 0.9
@@ -135,16 +135,16 @@ def test_error_bars_hold(coarse, fine, exact):
 
 def test_error_bar_of_a_point_inside_the_window_is_marked(coarse, fine):
     points = around(0.3 * fine.system.cells.spacing, 20)
-    best = refined([near_field(s, points, particle=PARTICLE) for s in (coarse, fine)])
+    best = refined([fields_at(s, points, particle=PARTICLE) for s in (coarse, fine)])
     assert not best.trusted.any()
 
 
 def test_error_bars_refuse_what_cannot_be_compared(coarse, fine):
-    one = near_field(fine, around(5.0, 10))
+    one = fields_at(fine, around(5.0, 10))
     with pytest.raises(InputError, match="two spacings"):
         refined([one])
     with pytest.raises(InputError, match="same points"):
-        refined([one, near_field(coarse, around(6.0, 10))])
+        refined([one, fields_at(coarse, around(6.0, 10))])
     with pytest.raises(InputError, match="too close"):
         refined([one, one])
 
@@ -153,7 +153,7 @@ def test_error_bars_refuse_what_cannot_be_compared(coarse, fine):
 def test_other_surfaces_are_trusted_less(surface, exact):
     plain = solved(14, surface=surface)
     d = plain.system.cells.spacing
-    near, far = (near_field(plain, around(c * d, 30), particle=PARTICLE) for c in (1, 3))
+    near, far = (fields_at(plain, around(c * d, 30), particle=PARTICLE) for c in (1, 3))
     assert not near.trusted.any()
     assert far.trusted.all()
 
@@ -166,7 +166,7 @@ def test_core_and_shell_have_their_own_fields():
     system = dda.system(shapes.voxelize(particle, cells=24), 600, HOST)
     light = dda.plane_wave()
     points = np.concatenate([directions(40) * r for r in (5.0, 22.5, 36.0)])
-    found = near_field(dda.solve(system, light), points, particle=particle)
+    found = fields_at(dda.solve(system, light), points, particle=particle)
     eps = [
         complex(find(m).permittivity(np.array([600.0]))[0]) for m in ("silica", "titania-rutile")
     ]
@@ -186,8 +186,8 @@ def test_beam_as_light(fine):
     beam = gaussian_beam(waist=600.0)
     polarization = dda.solve(fine.system, beam)
     points = around(4.0, 20)
-    wide = near_field(polarization, points, particle=PARTICLE, magnetic=True)
-    plane = near_field(fine, points, particle=PARTICLE, magnetic=True)
+    wide = fields_at(polarization, points, particle=PARTICLE, magnetic=True)
+    plane = fields_at(fine, points, particle=PARTICLE, magnetic=True)
     # a waist of 15 diameters is nearly a plane wave at the focus
     assert np.abs(wide.e - plane.e).max() < 0.03 * np.abs(plane.e).max()
     assert wide.h is not None
@@ -196,6 +196,6 @@ def test_beam_as_light(fine):
 
 def test_bad_points_are_refused(fine):
     with pytest.raises(InputError, match="shape"):
-        near_field(fine, np.zeros((3, 2)))
+        fields_at(fine, np.zeros((3, 2)))
     with pytest.raises(InputError, match="point 1"):
-        near_field(fine, np.array([[0.0, 0, 0], [0, np.nan, 0]]))
+        fields_at(fine, np.array([[0.0, 0, 0], [0, np.nan, 0]]))

@@ -6,12 +6,12 @@ import pytest
 import shapes
 from dda.errors import InputError
 from dda.response.outer_distance import outer_distance
-from dda.response.surface_points import surface_points
+from dda.response.surface_points import cover_surface
 
 
 @pytest.mark.parametrize("height", [0.0, 1.0, 6.0])
 def test_area_and_height_of_a_sphere(height):
-    found = surface_points(shapes.sphere(30), step=1.0, height=height)
+    found = cover_surface(shapes.sphere(30), step=1.0, height=height)
     radius = np.linalg.norm(found.points, axis=1)
     assert np.allclose(radius, 15 + height, atol=1e-4)
     # chords of 1 nm on a radius of 15: 0.1 %
@@ -24,7 +24,7 @@ def test_area_and_height_of_a_sphere(height):
 def test_area_of_a_rounded_cube_grows_as_steiner_says():
     edge, rounding, height = 30.0, 6.0, 2.0
     cube = shapes.cube(edge, rounding)
-    found = surface_points(cube, step=0.75, height=height)
+    found = cover_surface(cube, step=0.75, height=height)
     # Steiner: faces, quarter cylinders along the edges, a sphere at the corners
     flat, radius = edge - 2 * rounding, rounding + height
     exact = 6 * flat**2 + 6 * np.pi * radius * flat + 4 * np.pi * radius**2
@@ -34,7 +34,7 @@ def test_area_of_a_rounded_cube_grows_as_steiner_says():
 def test_no_points_where_a_gap_is_too_narrow():
     one = shapes.sphere(20)
     pair = shapes.Particle(one.moved((-11, 0, 0)).parts + one.moved((11, 0, 0)).parts)
-    open_, closed = (surface_points(pair, step=0.5, height=h) for h in (0.5, 2.0))
+    open_, closed = (cover_surface(pair, step=0.5, height=h) for h in (0.5, 2.0))
     assert (np.abs(open_.points[:, 0]) < 0.6).any()
     # at the narrowest place, 2 nm wide, nothing lies 2 nm from both spheres
     waist = np.abs(closed.points[:, 0]) < 1
@@ -47,7 +47,7 @@ def test_voxel_images_have_a_surface_as_well():
     ball = (x[:, None, None] ** 2 + x[:, None] ** 2 + x**2) < 10**2
     particle = shapes.from_image(ball.astype(np.uint8), voxel=1.0, materials={1: "gold"})
     assert outer_distance(particle, np.zeros((1, 3))) is None
-    found = surface_points(particle, step=1.0, height=2.0)
+    found = cover_surface(particle, step=1.0, height=2.0)
     centre = np.add(*particle.bounds) / 2
     radius = np.linalg.norm(found.points - centre, axis=1)
     # a staircase of 1 nm voxels, smoothed: half a nm
@@ -57,8 +57,8 @@ def test_voxel_images_have_a_surface_as_well():
 
 def test_bad_steps_and_heights_are_refused():
     with pytest.raises(InputError, match="step"):
-        surface_points(shapes.sphere(20), step=0.0)
+        cover_surface(shapes.sphere(20), step=0.0)
     with pytest.raises(InputError, match="height"):
-        surface_points(shapes.sphere(20), step=1.0, height=-1.0)
+        cover_surface(shapes.sphere(20), step=1.0, height=-1.0)
     with pytest.raises(InputError, match="larger steps"):
-        surface_points(shapes.sphere(20), step=1e-3)
+        cover_surface(shapes.sphere(20), step=1e-3)

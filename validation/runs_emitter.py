@@ -6,10 +6,10 @@ import numpy as np
 
 import dda
 import shapes
-from dda.design.emitter import emitter, refined_rates
+from dda.design.emitter import emitter_rates, refined_rates
 from dda.design.heat import absorbed_power
-from dda.design.sers import sers, stokes_wavelength
-from dda.response.surface_points import surface_points
+from dda.design.sers import sers_on_surface, stokes_wavelength
+from dda.response.surface_points import cover_surface
 from validation.compare import percent, permittivity
 from validation.dipole_sphere import dipole_near_sphere
 from validation.results import Table, group, number, verdict
@@ -52,7 +52,7 @@ absorption happens in waves too short for the cells.
                 ("radial", (0, 0, 1), exact[0]),
                 ("tangential", (1, 0, 0), exact[1]),
             ):
-                found = [emitter(s, place, moment) for s in systems]
+                found = [emitter_rates(s, place, moment) for s in systems]
                 best, bar = refined_rates(found, spacings)
                 total = [r.total / true.total - 1 for r in (*found, best)]
                 radiative = [r.radiative / true.radiative - 1 for r in (*found, best)]
@@ -96,8 +96,10 @@ power of a field). Last columns: absorbed power over the cells against C_abs of 
         spacing = solved[0].system.cells.spacing
         heat = absorbed_power(solved[0], 1e9).total / (exact[0].c_abs * 1e9 * 1e-18) - 1
         for cells in (0.5, 1.0, 2.0):
-            shell = surface_points(particle, spacing, cells * spacing)
-            found = sers(solved[0], solved[1], shell.points, shell.areas, particle=particle)
+            shell = cover_surface(particle, spacing, cells * spacing)
+            found = sers_on_surface(
+                solved[0], solved[1], shell.points, shell.areas, particle=particle
+            )
             true = np.prod([e2(s.fields(shell.points)[0]) for s in exact], axis=0)
             mean = found.mean / np.average(true, weights=shell.areas) - 1
             largest = found.maximum / true.max() - 1

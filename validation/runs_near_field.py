@@ -12,7 +12,7 @@ import dda
 import shapes
 from dda.lattice.solution import Polarization
 from dda.response.near_error import refined
-from dda.response.near_field import near_field
+from dda.response.near_field import fields_at
 from dda.response.smeared import SmearedField
 from dda.response.two_sided import continued
 from validation.compare import percent, permittivity
@@ -60,7 +60,7 @@ program marks the points as unknown there is no verdict.
         heights = [h for h, _ in HEIGHTS]
         points = np.concatenate([directions(300) * (diameter / 2 + h * spacing) for h in heights])
         true = e2(exact.fields(points)[0])
-        best = refined([near_field(s, points, particle=particle) for s in solved])
+        best = refined([fields_at(s, points, particle=particle) for s in solved])
         ended = " + ".join(
             f"{s.products}" + ("" if s.status == "converged" else f" ({s.status})") for s in solved
         )
@@ -112,7 +112,7 @@ program's way, which fits solutions of Laplace's equation along the normal to th
             solved, points, normal, h, r
         )
     particle = shapes.sphere(80, "gold")
-    tried["unblurred"] = lambda points, h: near_field(solved, points, particle=particle).e
+    tried["unblurred"] = lambda points, h: fields_at(solved, points, particle=particle).e
     rows = []
     for name, way in tried.items():
         cells = []
@@ -145,7 +145,7 @@ the gap and beside it, with 2, 3 and 4 cells across the gap. Allowed: 10 %.
         for cells in (2,) if quick else (2, 3, 4):
             lattice = shapes.voxelize(particle, spacing=2 / cells)
             solved = dda.solve(dda.system(lattice, wavelength, HOST), dda.plane_wave())
-            found = near_field(solved, places, particle=particle).e2
+            found = fields_at(solved, places, particle=particle).e2
             for place, ours, reference in zip(places, found, true, strict=True):
                 middle = place[0] == 0
                 rows.append(

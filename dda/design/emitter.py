@@ -117,7 +117,7 @@ def decay_rates(polarization: Polarization) -> DecayRates:
     return DecayRates(total, _radiated(polarization, light), lost / unit)
 
 
-def emitter(
+def emitter_rates(
     system: System, position, moment=(0, 0, 1), *, tolerance: float = 1e-4, limit: int = 2000
 ) -> DecayRates:
     """Solve for a dipole at `position` (nm) along `moment` and return its decay rates.
@@ -141,12 +141,13 @@ def emitter(
     return decay_rates(solve(system, light, tolerance=tolerance, limit=limit))
 
 
-def emitter_averaged(
+def averaged_rates(
     system: System, position, *, tolerance: float = 1e-4, limit: int = 2000
 ) -> DecayRates:
     """Decay rates averaged over all directions of the dipole; three solves."""
     found = [
-        emitter(system, position, axis, tolerance=tolerance, limit=limit) for axis in np.eye(3)
+        emitter_rates(system, position, axis, tolerance=tolerance, limit=limit)
+        for axis in np.eye(3)
     ]
     return DecayRates(
         float(np.mean([r.total for r in found])),

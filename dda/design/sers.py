@@ -14,7 +14,7 @@ from ..lattice.linear_system import System
 from ..lattice.solution import Polarization, solve
 from ..light import plane_wave, transverse
 from ..response.far_field import sphere_quadrature
-from ..response.near_field import near_field
+from ..response.near_field import fields_at
 
 # Angles of the polarization that average products of four field components exactly.
 _TURNS = np.deg2rad([0.0, 60.0, 120.0])
@@ -86,7 +86,7 @@ class Sers:
     trusted: np.ndarray
 
 
-def sers(
+def sers_on_surface(
     laser: Polarization,
     stokes: Polarization,
     points: np.ndarray,
@@ -101,18 +101,18 @@ def sers(
     laser, stokes : Polarization
         Solved for the same light at the two wavelengths.
     points : ndarray, shape (n, 3)
-        nm, e.g. of `dda.response.surface_points.surface_points`.
+        nm, e.g. of `dda.response.surface_points.cover_surface`.
     areas : ndarray, shape (n,)
         Area that each point stands for, nm^2.
     particle : shapes.Particle, optional
-        As in `near_field`.
+        As in `fields_at`.
 
     Returns
     -------
     Sers
     """
-    at_laser = near_field(laser, points, particle=particle)
-    at_stokes = near_field(stokes, points, particle=particle)
+    at_laser = fields_at(laser, points, particle=particle)
+    at_stokes = fields_at(stokes, points, particle=particle)
     factor = sers_factor(at_laser.e2, at_stokes.e2)
     return summed_up(factor, points, areas, at_laser.trusted & at_stokes.trusted)
 
@@ -148,7 +148,7 @@ def sers_averaged(
     weights : ndarray, shape (m,), optional
         Of the directions; equal by default if directions are given.
     particle, tolerance, limit
-        As in `near_field` and `dda.solve`.
+        As in `fields_at` and `dda.solve`.
     progress : callable, optional
         Called with the number of solves done and of all.
 
@@ -177,7 +177,7 @@ def sers_averaged(
             for polarization in transverse(direction):
                 light = plane_wave(direction, polarization)
                 solved = solve(system, light, tolerance=tolerance, limit=limit)
-                found = near_field(solved, points, particle=particle)
+                found = fields_at(solved, points, particle=particle)
                 trusted &= found.trusted
                 pair.append(found.e)
                 done += 1

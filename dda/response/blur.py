@@ -34,7 +34,7 @@ class Blur:
     def height(self, filled: np.ndarray) -> np.ndarray:
         """Height in spacings at which a half space has the blurred fraction `filled`.
 
-        >>> blur(2.2).height(blur(2.2).filled(np.array([-1.0, 0.5]))).round(6).tolist()
+        >>> blur_of(2.2).height(blur_of(2.2).filled(np.array([-1.0, 0.5]))).round(6).tolist()
         [-1.0, 0.5]
         """
         heights = np.linspace(-3, 3, 1201)
@@ -42,7 +42,7 @@ class Blur:
 
 
 @lru_cache(maxsize=8)
-def blur(window: float, smear: float = SMEAR) -> Blur:
+def blur_of(window: float, smear: float = SMEAR) -> Blur:
     """Blur by a ball window of diameter `window` and the smearing ball of radius `smear`.
 
     Both in spacings. With ``window = 0`` the smearing alone.
@@ -90,7 +90,7 @@ def unblurring(model: str, line: tuple[float, ...], window: float) -> np.ndarray
     -------
     ndarray, shape (terms, len(line))
     """
-    kernel = blur(window)
+    kernel = blur_of(window)
     heights = np.array(line)[:, None] - kernel.x
     columns = []
     for side, power in _MODELS[model]:

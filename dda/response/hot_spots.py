@@ -147,7 +147,7 @@ class HotSpots:
         return len(self.spots)
 
 
-def hot_spots(
+def find_hot_spots(
     points: np.ndarray,
     e2: np.ndarray,
     weights: np.ndarray,
@@ -178,7 +178,7 @@ def hot_spots(
     >>> x = np.arange(10.0)
     >>> points = np.stack([x, 0 * x, 0 * x], axis=1)
     >>> e2 = np.array([9.0, 8, 1, 1, 1, 1, 1, 10, 1, 1])
-    >>> found = hot_spots(points, e2, np.ones(10), step=1.0)
+    >>> found = find_hot_spots(points, e2, np.ones(10), step=1.0)
     >>> found.count, found.extent, found.spots[0].place.tolist()
     (2, 3.0, [0.0, 0.0, 0.0])
     """

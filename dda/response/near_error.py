@@ -68,12 +68,12 @@ def refined(fields: Sequence[NearField]) -> RefinedField:
     --------
     >>> import dda, shapes
     >>> import numpy as np
-    >>> from dda.response.near_field import near_field
+    >>> from dda.response.near_field import fields_at
     >>> sphere, fields = shapes.sphere(diameter=40, material="gold"), []
     >>> for n in (10, 14):
     ...     system = dda.system(shapes.voxelize(sphere, cells=n), wavelength=530)
     ...     solved = dda.solve(system, dda.plane_wave())
-    ...     fields.append(near_field(solved, np.array([[40.0, 0, 0]]), particle=sphere))
+    ...     fields.append(fields_at(solved, np.array([[40.0, 0, 0]]), particle=sphere))
     >>> best = refined(fields)
     >>> bool(best.trusted[0] and best.e2_error[0] < 0.02 * best.e2[0])
     True

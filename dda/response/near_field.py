@@ -14,7 +14,7 @@ from ..lattice.solution import Polarization
 from ..lattice.workers import Workers
 from .outer_distance import outer_distance
 from .smeared import Progress, SmearedField
-from .two_sided import Places, blur, inside_values, outside_values
+from .two_sided import Places, blur_of, inside_values, outside_values
 
 _BEYOND = 3.0  # spacings; what lies farther from the surface need not be told apart
 _AT_ONCE = 20_000  # points whose normals are followed at a time, which bounds the memory
@@ -70,7 +70,7 @@ class NearField:
         return None if self.h is None or self.h_incident is None else self.h - self.h_incident
 
 
-def near_field(
+def fields_at(
     polarization: Polarization,
     points: np.ndarray,
     *,
@@ -121,7 +121,7 @@ def near_field(
     >>> import numpy as np
     >>> cells = shapes.voxelize(shapes.sphere(diameter=40, material="gold"), cells=12)
     >>> solved = dda.solve(dda.system(cells, wavelength=530), dda.plane_wave())
-    >>> found = near_field(solved, np.array([[25.0, 0, 0], [0, 0, 0]]))
+    >>> found = fields_at(solved, np.array([[25.0, 0, 0], [0, 0, 0]]))
     >>> found.material.tolist(), bool(found.e2[0] > 5 > found.e2[1])
     ([-1, 0], True)
     """
@@ -180,7 +180,7 @@ def _sides(
     d = system.cells.spacing
     fraction = sampler.around(points).fraction
     filled = fraction.sum(axis=1)
-    height = d * np.clip(blur(system.cells.window_width).height(filled), -_BEYOND, _BEYOND)
+    height = d * np.clip(blur_of(system.cells.window_width).height(filled), -_BEYOND, _BEYOND)
     if particle is not None:
         measured = outer_distance(particle, points)
         if measured is not None:

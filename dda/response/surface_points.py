@@ -46,7 +46,7 @@ class SurfacePoints:
     corners: np.ndarray = field(repr=False)
 
 
-def surface_points(particle: Particle, step: float, height: float = 0.0) -> SurfacePoints:
+def cover_surface(particle: Particle, step: float, height: float = 0.0) -> SurfacePoints:
     """Cover the surface that lies `height` outside the particle.
 
     Parameters
@@ -78,7 +78,7 @@ def surface_points(particle: Particle, step: float, height: float = 0.0) -> Surf
     Examples
     --------
     >>> import shapes
-    >>> shell = surface_points(shapes.sphere(diameter=20), step=1.0, height=2.0)
+    >>> shell = cover_surface(shapes.sphere(diameter=20), step=1.0, height=2.0)
     >>> round(float(shell.areas.sum()) / (4 * np.pi * 12**2), 2)
     1.0
     """

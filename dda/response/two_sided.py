@@ -18,7 +18,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..lattice.linear_system import System
-from .blur import blur, unblurred, unblurring
+from .blur import blur_of, unblurred, unblurring
 from .smeared import SmearedField, Surroundings
 
 #: Outside, fields at least this many spacings from a flat surface are held to their error bars.
@@ -201,7 +201,7 @@ def flat_along(
     window: float,
 ) -> np.ndarray:
     """Whether the filling along the normals is that of a plane, (n,) bool."""
-    expected = blur(window).filled(np.array(line))
+    expected = blur_of(window).filled(np.array(line))
     flat = np.ones(len(foot), bool)
     for height, filled in zip(line, expected, strict=True):
         there = field.around(foot + height * field.system.cells.spacing * normal)
