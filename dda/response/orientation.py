@@ -70,7 +70,7 @@ def tumbling(
     >>> cells = shapes.voxelize(shapes.sphere(diameter=30, material="gold"), cells=8)
     >>> result = tumbling(dda.system(cells, wavelength=530))
     >>> result.average.status, result.t_matrix.order
-    ('converged', 2)
+    ('converged', 3)
     """
     if way not in WAYS:
         raise InputError(f"orientation average by {way!r} is not known; use {' or '.join(WAYS)}")

@@ -70,7 +70,9 @@ def t_matrix(
     Returns
     -------
     TMatrix
-        About the centre of the box of cells.
+        About the centre of the box of cells. When the order is chosen here, one order more is
+        there than was solved for: how it answers to the others comes from their dipoles, how they
+        answer to it from reciprocity, and how it answers to itself is left out.
 
     Raises
     ------
@@ -87,7 +89,7 @@ def t_matrix(
     >>> cells = shapes.voxelize(shapes.sphere(diameter=30, material="gold"), cells=8)
     >>> t = t_matrix(dda.system(cells, wavelength=530))
     >>> t.order, t.reciprocity() < 1e-3
-    (2, True)
+    (3, True)
     """
     if order is not None and not 1 <= order <= LARGEST_ORDER:
         raise InputError(f"multipole order {order} is not from 1 to {LARGEST_ORDER}")
@@ -97,7 +99,7 @@ def t_matrix(
     while order is None and work.tail > tolerance * work.scale and present < LARGEST_ORDER:
         present += 1
         work.extend(present)
-    return work.result()
+    return work.result(extended=order is None)
 
 
 @dataclass(frozen=True, eq=False)
@@ -162,13 +164,17 @@ class _Work:
         self.matrix = self._assemble()
         self.tail = self._tail()
 
-    def result(self) -> TMatrix:
+    def result(self, extended: bool) -> TMatrix:
         system = self.system
-        count = wave_count(self.order)
-        u = real_to_complex(self.order)
-        keep = wave_labels(self.order + 1)[:, 1] <= self.order
-        matrix = (u.conj() @ self.matrix[keep]) @ u.T
-        assert matrix.shape == (count, count)
+        solved = wave_labels(self.order + 1)[:, 1] <= self.order
+        if extended:
+            real = np.zeros((len(solved),) * 2, complex)
+            real[:, solved] = self.matrix
+            real[np.ix_(solved, ~solved)] = self.matrix[~solved].T
+        else:
+            real = self.matrix[solved]
+        u = real_to_complex(self.order + extended)
+        matrix = (u.conj() @ real) @ u.T
         drift = sum(w.count * s.drift for w, s in zip(self.waves, self.solved, strict=True))
         worst = [s.status for s in self.solved if s.status != "converged"]
         return TMatrix(
@@ -320,7 +326,6 @@ class _Work:
         beyond = self.matrix[~below]
         shared = abs(beyond) ** 2 / np.maximum(abs(diagonal), 1e-300)
         total = max(shares[-1] * ratio, float(shared.max(axis=1).sum()))
-        total += float((abs(beyond) ** 2).sum())
         return 2 * np.pi / self.system.k**2 * total
 
 
