@@ -86,7 +86,7 @@ def test_polarization_in_every_form(written, value):
         ("cells = 32", "cels = 32", ["line 14", "accuracy.cels", 'did you mean "cells"?']),
         ("cells = 32", 'cells = "32"', ["line 14", "accuracy.cells", 'not "32"']),
         ("cells = 32", "cells = 32.5", ["accuracy.cells", "whole number"]),
-        ("cells = 32", "cells = 32\nspacing = 2.0", ["line 13", "one of the two"]),
+        ("cells = 32", "cells = 32\nspacing = 2.0", ["line 13", "one of the three"]),
         ("cells = 32", "spacing = -2.0", ["line 14", "above zero", "-2.0"]),
         ("[accuracy]\ncells = 32\n", "", ["accuracy", "missing"]),
         ("[accuracy]", "[acuracy]", ["line 13", 'did you mean "accuracy"?']),

@@ -81,8 +81,9 @@ def extrapolate(
     -----
     A straight line in d^2 through the finest levels, weighted. Its error is the largest of: what
     the scatter around the line makes of the intercept, what leaving out the coarsest or the
-    finest level changes, and a part of the extrapolated step itself, which covers an order
-    other than two. With two levels it is the whole step.
+    finest level changes, a part of the extrapolated step itself, and, where another order fits
+    the levels far better than two does (bodies with sharp edges), what that order would change.
+    With two levels it is the whole step.
 
     References
     ----------
@@ -106,16 +107,15 @@ def extrapolate(
         value, _ = _line(d, y, s + floor)
         step = abs(value - y[-1])
         return Estimate(value, step + floor, _carried(d, s), y[-1], 2 * step + floor, np.nan)
-    value, slope = _line(d, y, s + floor)
-    scatter = y - value - slope * d**_ORDER
-    # Scatter that grows with d^2 counts at the finest spacing's size.
-    typical = float(np.sqrt(np.sum((scatter * (d[-1] / d) ** _ORDER) ** 2) / (len(d) - 2)))
+    value, _ = _line(d, y, s + floor)
+    typical = _scatter(d, y, s + floor)
     leave = max(
         abs(_line(d[1:], y[1:], s[1:] + floor)[0] - value),
         abs(_line(d[:-1], y[:-1], s[:-1] + floor)[0] - value) * 0.5,
     )
     step = abs(value - y[-1])
-    error = max(_SCATTER * typical, _LEAVE * leave, _STEP * step) + floor
+    other = _other_order(d, y, s + floor, typical, value)
+    error = max(_SCATTER * typical, _LEAVE * leave, _STEP * step, other) + floor
     return Estimate(
         value, error, _carried(d, s), y[-1], max(step, typical) + error, _observed_order(d, y)
     )
@@ -128,16 +128,41 @@ _LEAVE = 2.0
 _STEP = 0.5
 _LEAST = 0.6
 
+# Orders that are tried beside two; fewer levels than `_LEAST_TO_TELL` fit nearly any of them.
+_OTHER_ORDERS = (1.0, 1.25, 1.5, 2.5, 3.0, 4.0)
+_LEAST_TO_TELL = 4
+_CLEARLY = 0.25
 
-def _line(d: np.ndarray, y: np.ndarray, s: np.ndarray) -> tuple[float, float]:
+
+def _line(
+    d: np.ndarray, y: np.ndarray, s: np.ndarray, order: float = _ORDER
+) -> tuple[float, float]:
     """Weighted straight line in d^order: its value at zero and its slope."""
-    x = d**_ORDER
+    x = d**order
     irregular = 0.1 * np.ptp(y) * (d / d[0]) ** _ORDER
     w = 1 / np.maximum(s**2 + irregular**2, 1e-300)
     w /= w.max()
     xm, ym = np.average(x, weights=w), np.average(y, weights=w)
     slope = np.sum(w * (x - xm) * (y - ym)) / np.sum(w * (x - xm) ** 2)
     return float(ym - slope * xm), float(slope)
+
+
+def _scatter(d: np.ndarray, y: np.ndarray, s: np.ndarray, order: float = _ORDER) -> float:
+    """Distance of the levels from their line; what grows as d^2 counts at the finest's size."""
+    value, slope = _line(d, y, s, order)
+    off = (y - value - slope * d**order) * (d[-1] / d) ** _ORDER
+    return float(np.sqrt(np.sum(off**2) / (len(d) - 2)))
+
+
+def _other_order(
+    d: np.ndarray, y: np.ndarray, s: np.ndarray, typical: float, value: float
+) -> float:
+    """Change of the value if the levels lie on another power of d and clearly not on d^2."""
+    if len(d) < _LEAST_TO_TELL:
+        return 0.0
+    fits = [(_scatter(d, y, s, p), p) for p in _OTHER_ORDERS]
+    best, order = min(fits)
+    return abs(_line(d, y, s, order)[0] - value) if best < _CLEARLY * typical else 0.0
 
 
 def _carried(d: np.ndarray, s: np.ndarray) -> float:

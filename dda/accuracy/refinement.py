@@ -147,22 +147,33 @@ def refine_to(
     return combined(levels, size, stopped)
 
 
-def refine_at(solve: Callable[[int], Level], across: int, size: float) -> Refined:
+def refine_at(
+    solve: Callable[[float], Level],
+    across: float,
+    size: float,
+    *,
+    coarser: Sequence[float] | None = None,
+) -> Refined:
     """Solve at a given fineness and at two coarser ones that tell its error.
 
     Parameters
     ----------
     solve, size
         As in `refine_to`.
-    across : int
+    across : float
         Cells across asked for.
+    coarser : sequence of float, optional
+        Cells across of the coarser levels, coarse to fine; about a half and 0.71 of `across` by
+        default.
 
     Returns
     -------
     Refined
         The values at the spacing asked for, not extrapolated.
     """
-    coarser = sorted({n for n in (round(across * 0.5), round(across * 0.71)) if 4 <= n < across})
+    if coarser is None:
+        coarser = sorted({math.floor(across * f) for f in (0.5, 0.71)})
+        coarser = [n for n in coarser if 4 <= n < across]
     levels = [solve(n) for n in coarser] + [solve(across)]
     finest = levels[-1]
     if len(levels) == 1:

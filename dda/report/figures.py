@@ -23,7 +23,8 @@ CURVES = {
 def draw_spectrum(path: Path, rows: Sequence[Row], title: str) -> None:
     """Draw the cross sections over the wavelength into a PNG file.
 
-    Points that did not converge are ringed; failed ones leave a gap in the curves.
+    The bands are the error bars. Points that did not converge are ringed; failed ones leave a
+    gap in the curves.
 
     Parameters
     ----------
@@ -42,6 +43,10 @@ def draw_spectrum(path: Path, rows: Sequence[Row], title: str) -> None:
         values = [getattr(row, column) for row in rows]
         shape = marker if marked else None
         axes.plot(wavelength, values, dash, color=colour, marker=shape, ms=3, lw=1.6, label=name)
+        errors = [getattr(row, column.replace("_nm2", "_error_nm2")) for row in rows]
+        low = [v - e for v, e in zip(values, errors, strict=True)]
+        high = [v + e for v, e in zip(values, errors, strict=True)]
+        axes.fill_between(wavelength, low, high, color=colour, alpha=0.2, lw=0)
     _ring_doubtful(axes, rows)
     _mark_peak(axes, rows)
     axes.set_xlabel("vacuum wavelength (nm)")

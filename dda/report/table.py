@@ -38,11 +38,22 @@ def write_csv(path: Path, rows: Sequence[Row]) -> None:
 def spectrum_text(rows: Sequence[Row]) -> str:
     """Return the table that is printed at the end of a run, and the peaks under it."""
     columns = ("wavelength", "C_ext", "C_abs", "C_sca", "Q_ext", "status")
-    lines = ["".join(f"{name:>12}" for name in columns)]
-    lines.append("".join(f"{unit:>12}" for unit in ("nm", "nm^2", "nm^2", "nm^2", "", "")))
+    units = ("nm", "nm^2", "nm^2", "nm^2", "", "")
+    wide = (12, 20, 20, 20, 10, 12)
+    lines = [
+        "".join(f"{text:>{w}}" for text, w in zip(line, wide, strict=True))
+        for line in (columns, units)
+    ]
     for row in _thinned(rows):
-        numbers = (row.wavelength_nm, row.c_ext_nm2, row.c_abs_nm2, row.c_sca_nm2, row.q_ext)
-        lines.append("".join(f"{_short(x):>12}" for x in numbers) + f"{row.status:>12}")
+        cells = (
+            _short(row.wavelength_nm),
+            _with_error(row.c_ext_nm2, row.c_ext_error_nm2),
+            _with_error(row.c_abs_nm2, row.c_abs_error_nm2),
+            _with_error(row.c_sca_nm2, row.c_sca_error_nm2),
+            _short(row.q_ext),
+            row.status,
+        )
+        lines.append("".join(f"{text:>{w}}" for text, w in zip(cells, wide, strict=True)))
     answered = [row for row in rows if row.answered]
     if len(answered) > 2:
         lines.append("")
@@ -99,6 +110,17 @@ def _cell(value: float | int | str) -> str:
     if isinstance(value, float):
         return f"{value:.9g}" if math.isfinite(value) else ""
     return str(value)
+
+
+def _with_error(value: float, error: float) -> str:
+    """A value and its error bar in percent.
+
+    >>> _with_error(1234.5, 12.0)
+    '1234 ± 0.97 %'
+    """
+    if not math.isfinite(error) or not value:
+        return _short(value)
+    return f"{_short(value)} ± {100 * error / abs(value):.2g} %"
 
 
 def _short(value: float) -> str:

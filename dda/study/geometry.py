@@ -3,18 +3,21 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
 
 import shapes
+from dda.accuracy import LADDER
 from dda.lattice import memory_estimate
 from dda.study.memory import USABLE_SHARE, available_memory, bytes_text, finest_spacing
 from dda.study.mistakes import Mistake
 from dda.study.particle import build_particle
 from dda.study.points import Point
 
+# Lattices of one particle whose cells are kept for the next wavelength.
+_LEVELS_KEPT = 8
 #: Width in cells of the window that shares out surface cells; thinner features are smeared.
 WINDOW = 2.2
 
@@ -35,6 +38,35 @@ class Geometry:
     particle: shapes.Particle
     spacing: float
     precision: str
+
+    @property
+    def size(self) -> float:
+        """Largest extent of the particle, nm."""
+        return float(self.extent.max())
+
+    def ladder(self) -> tuple[int, ...]:
+        """Cells across from which refinement may choose: none that closes a gap or a thin part."""
+        finest_needed = [self.size / d for d in self._details()]
+        rungs = tuple(n for n in LADDER if all(n >= needed for needed in finest_needed))
+        # A particle finer than all rungs: three of its own.
+        least = max(finest_needed, default=0)
+        return rungs if len(rungs) >= 3 else tuple(math.ceil(least * f) for f in (1, 1.25, 1.6, 2))
+
+    def coarser(self) -> tuple[float, ...]:
+        """Cells across of two coarser lattices that tell the error of this one."""
+        across = self.size / self.spacing
+        least = max((self.size / d for d in self._details()), default=0)
+        usual = [math.floor(across * f) for f in (0.5, 0.71)]
+        kept = [n for n in usual if n >= max(4, least)]
+        if len(kept) < 2:
+            low = min(max(4.0, least), 0.8 * across)
+            kept = [math.ceil(low), math.ceil((low + across) / 2)]
+        return tuple(float(n) for n in sorted(set(kept)) if n < 0.95 * across)
+
+    def _details(self) -> list[float]:
+        """Spacings that the gap and the thinnest part ask for at least, nm."""
+        thin, gap = self.particle.thinnest, self.particle.gap
+        return [v / n for v, n in ((thin, 3.0), (gap, 1.5)) if v]
 
     @property
     def extent(self) -> np.ndarray:
@@ -62,6 +94,18 @@ class Geometries:
     def __init__(self) -> None:
         self._key: str | None = None
         self._geometry: Geometry | None = None
+        self._levels: dict[tuple[int, float], Geometry] = {}
+
+    def level(self, geometry: Geometry, across: float) -> Geometry:
+        """Return the same particle on another lattice; those of the last ones are kept."""
+        key = (id(geometry.particle), round(across, 6))
+        if abs(across - geometry.size / geometry.spacing) < 1e-9 * across:
+            return geometry
+        if key not in self._levels:
+            while len(self._levels) >= _LEVELS_KEPT:
+                self._levels.pop(next(iter(self._levels)))
+            self._levels[key] = replace(geometry, spacing=geometry.size / across)
+        return self._levels[key]
 
     def of(self, point: Point) -> Geometry:
         """Return the geometry of a point, made and checked if it is not the last one again."""
@@ -82,16 +126,31 @@ def geometry_of(point: Point) -> Geometry:
     particle = build_particle(point.particle, point.folder)
     low, high = particle.bounds
     largest = float((np.asarray(high) - np.asarray(low)).max())
-    if point.accuracy.spacing is not None:
-        spacing, key = point.accuracy.spacing, "spacing"
+    key = accuracy_key(point)
+    if key == "target":
+        whole = Geometry(particle, largest, point.solver.precision)
+        spacing = largest / whole.ladder()[0]
     else:
-        assert point.accuracy.cells is not None
-        spacing, key = largest / point.accuracy.cells, "cells"
+        value = getattr(point.accuracy, key)
+        spacing = value if key == "spacing" else largest / value
     geometry = Geometry(particle, spacing, point.solver.precision)
     _check_size(geometry, key, largest)
     _check_gap(geometry, largest)
-    _check_memory(geometry, key, largest)
+    _check_memory(geometry, key, largest, usable_memory(point))
     return geometry
+
+
+def accuracy_key(point: Point) -> str:
+    """Return which of target, cells and spacing the study gives."""
+    table = point.accuracy
+    return next(k for k in ("target", "cells", "spacing") if getattr(table, k) is not None)
+
+
+def usable_memory(point: Point) -> int:
+    """Return the bytes that a solve of this point may take."""
+    usable = int(USABLE_SHARE * available_memory())
+    gib = point.limits.memory_gib
+    return usable if gib is None else min(usable, int(gib * 2**30))
 
 
 def check_cells(geometry: Geometry, point: Point) -> shapes.Cells:
@@ -101,7 +160,7 @@ def check_cells(geometry: Geometry, point: Point) -> shapes.Cells:
     ------
     Mistake
     """
-    key = "spacing" if point.accuracy.spacing is not None else "cells"
+    key = accuracy_key(point)
     try:
         cells = geometry.cells
     except shapes.ShapeError as error:
@@ -136,14 +195,13 @@ def _check_gap(geometry: Geometry, largest: float) -> None:
         )
 
 
-def _check_memory(geometry: Geometry, key: str, largest: float) -> None:
-    need, there = geometry.memory(), available_memory()
-    usable = int(USABLE_SHARE * there)
+def _check_memory(geometry: Geometry, key: str, largest: float, usable: int) -> None:
+    need = geometry.memory()
     if need > usable:
         fits = finest_spacing(geometry.memory, usable, geometry.spacing)
         raise Mistake(
             ("accuracy", key),
             f"cells of {geometry.spacing:.3g} nm would need {bytes_text(need)} of memory, "
-            f"{bytes_text(there)} are available; a spacing of {fits:.3g} nm "
+            f"{bytes_text(usable)} may be used; a spacing of {fits:.3g} nm "
             f"({math.floor(largest / fits)} cells across) would fit",
         )

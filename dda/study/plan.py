@@ -11,12 +11,12 @@ from dda.lattice import memory_estimate, system
 from dda.lattice.workers import Workers
 from dda.study.estimate import Cost, expected_steps, measure_step
 from dda.study.geometry import WINDOW, Geometries, Geometry, check_cells, geometry_of
+from dda.study.levels import lights_of
 from dda.study.media import Media, check_media, media_of
 from dda.study.memory import available_memory
 from dda.study.mistakes import Mistake
 from dda.study.points import Point, points_of
 from dda.study.reader import Study
-from dda.study.runner import lights_of
 
 #: |m| k d up to which the cells resolve the wave inside the particle well, and at all
 #: (Draine & Flatau 1994 ask for 1, and for less where the accuracy matters).

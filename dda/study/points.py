@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import Any
 
 from dda.study.reader import Study
-from dda.study.schema import AccuracyTable, HostTable, ParticleTable, SolverTable
+from dda.study.schema import AccuracyTable, HostTable, LimitsTable, ParticleTable, SolverTable
 
 Polarization = str | tuple[complex, complex, complex]
 
@@ -19,7 +19,7 @@ class Point:
 
     Attributes
     ----------
-    particle, host, accuracy, solver
+    particle, host, accuracy, solver, limits
         The tables of the study that hold for this point.
     materials : dict
         The user's own materials, as written.
@@ -36,6 +36,7 @@ class Point:
     host: HostTable
     accuracy: AccuracyTable
     solver: SolverTable
+    limits: LimitsTable
     materials: dict[str, dict[str, Any]]
     wavelength: float
     direction: tuple[float, float, float]
@@ -62,6 +63,7 @@ def points_of(study: Study) -> tuple[Point, ...]:
             host=tables.host,
             accuracy=tables.accuracy,
             solver=tables.solver,
+            limits=tables.limits,
             materials=tables.materials,
             wavelength=wavelength,
             direction=tables.light.direction,

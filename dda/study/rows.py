@@ -27,10 +27,17 @@ class Row:
     residual : float
         |b - A x| / |b| at the end, the largest of the polarizations solved.
     status : str
-        "converged" only if the solver says so for every polarization; else what it says
-        ("stalled", "limit"), or "failed" when there is no answer.
+        "converged" only if the solver says so for every polarization and spacing; else what it
+        says ("stalled", "limit"); "coarse" when a target was asked for and not reached; "failed"
+        when there is no answer.
+    c_ext_error_nm2, c_abs_error_nm2, c_sca_error_nm2 : float
+        Estimated error of the cross sections: the two parts that follow, added.
+    c_ext_spacing_error_nm2, c_abs_spacing_error_nm2, c_sca_spacing_error_nm2 : float
+        The part that comes from the cells.
     c_ext_solver_error_nm2, c_abs_solver_error_nm2, c_sca_solver_error_nm2 : float
-        Estimated error of the cross sections from the solver alone, not from the cells.
+        The part that comes from the solver.
+    levels : int
+        Spacings that were solved.
     balance : float
         (C_abs + C_sca - C_ext) / C_ext, each computed on its own: 0 when energy is conserved.
     seconds : float
@@ -51,16 +58,23 @@ class Row:
     iterations: int = 0
     residual: float = math.nan
     status: str = "failed"
+    c_ext_error_nm2: float = math.nan
+    c_abs_error_nm2: float = math.nan
+    c_sca_error_nm2: float = math.nan
+    c_ext_spacing_error_nm2: float = math.nan
+    c_abs_spacing_error_nm2: float = math.nan
+    c_sca_spacing_error_nm2: float = math.nan
     c_ext_solver_error_nm2: float = math.nan
     c_abs_solver_error_nm2: float = math.nan
     c_sca_solver_error_nm2: float = math.nan
+    levels: int = 0
     balance: float = math.nan
     seconds: float = math.nan
     message: str = ""
 
     @property
     def converged(self) -> bool:
-        """Whether the solver reached its tolerance."""
+        """Whether the solver, and the target if there is one, was reached."""
         return self.status == "converged"
 
     @property

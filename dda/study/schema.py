@@ -233,19 +233,31 @@ class LightTable(Table):
 
 
 class AccuracyTable(Table):
-    """``[accuracy]``: how fine the cells are."""
+    """``[accuracy]``: the error to reach, or how fine the cells are.
 
+    ``target`` is relative, on C_ext and C_abs at each wavelength.
+    """
+
+    target: Annotated[float, Field(strict=True, ge=1e-4, le=0.5, allow_inf_nan=False)] | None = None
     cells: Annotated[int, Field(strict=True, ge=1, le=10_000)] | None = None
     spacing: Positive | None = None
 
     @model_validator(mode="after")
-    def _one_of_two(self) -> AccuracyTable:
-        if (self.cells is None) == (self.spacing is None):
+    def _one_of_three(self) -> AccuracyTable:
+        given = [v for v in (self.target, self.cells, self.spacing) if v is not None]
+        if len(given) != 1:
             raise ValueError(
-                "give either cells = 32 (across the largest extent) or spacing = 2.0 (nm), "
-                "one of the two"
+                "give either target = 0.02 (relative error of C_ext and C_abs), cells = 32 (across "
+                "the largest extent) or spacing = 2.0 (nm), one of the three"
             )
         return self
+
+
+class LimitsTable(Table):
+    """``[limits]``: what refinement may take; the error that was reached is stated."""
+
+    memory_gib: Positive | None = None
+    minutes: Positive | None = None
 
 
 class SolverTable(Table):
@@ -269,4 +281,5 @@ class StudyTables(Table):
     light: LightTable
     accuracy: AccuracyTable
     solver: SolverTable = SolverTable()
+    limits: LimitsTable = LimitsTable()
     materials: dict[str, dict[str, Any]] = {}

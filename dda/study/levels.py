@@ -1,0 +1,186 @@
+"""One point at several spacings: what refinement solves, and what it keeps for the next point."""
+
+from __future__ import annotations
+
+import math
+import time
+from collections.abc import Callable, Iterable
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from dda.accuracy import Level, Refined, refine_at, refine_to
+from dda.lattice import system
+from dda.lattice.workers import Workers
+from dda.light import PlaneWave, plane_wave, transverse
+from dda.response import Settled, settle
+from dda.study.estimate import expected_steps
+from dda.study.geometry import Geometries, Geometry, usable_memory
+from dda.study.media import media_of
+from dda.study.points import Point
+
+#: Called with a message and the part of the current point that is done, 0 to 1.
+Watch = Callable[[str, float], None]
+#: Order of the statuses from good to bad, as far as they are known; others are worse.
+_STATUSES = ("converged", "limit", "stalled")
+# Solutions kept for first guesses at the next wavelength, and the cells up to which they are
+# worth their memory.
+_KEPT, _LARGEST_KEPT = 5, 500_000
+
+
+@dataclass
+class Memory:
+    """What neighbouring points share: cells, and solutions as first guesses.
+
+    Attributes
+    ----------
+    geometries : Geometries
+    solutions : dict
+        The last dipoles by lattice and light.
+    """
+
+    geometries: Geometries
+    solutions: dict[tuple, list[np.ndarray]] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, eq=False)
+class Answer:
+    """A refined point.
+
+    Attributes
+    ----------
+    refined : Refined
+    area : float
+        pi r_eff^2, nm^2.
+    balance : float
+        Of the finest level, averaged over the polarizations.
+    cells : int
+        Of the finest level.
+    """
+
+    refined: Refined
+    area: float
+    balance: float
+    cells: int
+
+
+def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf) -> Answer:
+    """Solve a point at the spacings that its accuracy asks for.
+
+    Parameters
+    ----------
+    point : Point
+    memory : Memory
+    watch : callable
+    seconds : float
+        What refinement to a target may take.
+    """
+    geometry = memory.geometries.of(point)
+    last: list[list[Settled]] = []
+
+    def solve(across: float) -> Level:
+        started = time.perf_counter()
+        level = memory.geometries.level(geometry, across)
+        solved = _solutions(point, level, memory, watch)
+        last[:] = [solved]
+        return _level(level, solved, time.perf_counter() - started)
+
+    target = point.accuracy.target
+    if target is None:
+        across = geometry.size / geometry.spacing
+        refined = refine_at(solve, across, geometry.size, coarser=geometry.coarser())
+    else:
+        usable = usable_memory(point)
+        refined = refine_to(
+            solve,
+            target,
+            geometry.size,
+            ladder=geometry.ladder(),
+            fits=lambda across: geometry.memory(geometry.size / across) <= usable,
+            seconds=seconds,
+        )
+    sections = [each.sections for each in last[0]]
+    balance = float(np.mean([each.balance for each in sections]))
+    return Answer(refined, sections[0].area, balance, refined.levels[-1].cells)
+
+
+def lights_of(point: Point) -> tuple[PlaneWave, ...]:
+    """Return the plane waves to solve for; their cross sections are averaged."""
+    if point.polarization == "unpolarized":
+        first, second = transverse(np.asarray(point.direction, float))
+        return plane_wave(point.direction, first), plane_wave(point.direction, second)
+    return (plane_wave(point.direction, point.polarization),)
+
+
+def worst(statuses: Iterable[str]) -> str:
+    """Return the worst of some statuses of the solver."""
+    return max(statuses, key=lambda s: _STATUSES.index(s) if s in _STATUSES else len(_STATUSES))
+
+
+def _solutions(point: Point, geometry: Geometry, memory: Memory, watch: Watch) -> list[Settled]:
+    label = f"{point.wavelength:g} nm, {geometry.size / geometry.spacing:.0f} cells across"
+    watch(f"{label}: cells", 0.0)
+    cells = geometry.cells
+    media = media_of(point, cells.materials)
+    watch(f"{label}: interactions", 0.0)
+    matrix = system(
+        cells,
+        wavelength=point.wavelength,
+        host=media.host,
+        materials=dict(media.particle),
+        precision=point.solver.precision,
+        workers=Workers(point.solver.threads),
+    )
+    lights = lights_of(point)
+    indices = media.relative_index(point.wavelength).values()
+    tolerance = tolerance_of(point)
+    steps = max(expected_steps(m, max(cells.shape), tolerance) for m in indices)
+    monitor = _monitor(label, steps * len(lights), watch)
+    out = []
+    for number, light in enumerate(lights):
+        key = (id(cells), str(point.direction), str(point.polarization), number, matrix.n)
+        previous = memory.solutions.get(key, [])
+        settled = settle(matrix, light, tolerance=tolerance, previous=previous, monitor=monitor)
+        if matrix.n <= _LARGEST_KEPT:
+            memory.solutions[key] = [settled.polarization.p, *previous[: _KEPT - 1]]
+        out.append(settled)
+    return out
+
+
+def tolerance_of(point: Point) -> float:
+    """Return the relative error the solver may leave: a tenth of the target at most."""
+    target = point.accuracy.target
+    return point.solver.tolerance if target is None else min(point.solver.tolerance, target / 10)
+
+
+def _level(geometry: Geometry, solved: list[Settled], seconds: float) -> Level:
+    def mean(values: Iterable) -> tuple[float, float, float]:
+        ext, absorbed, scattered = np.mean(list(values), axis=0)
+        return float(ext), float(absorbed), float(scattered)
+
+    polarizations = [each.polarization for each in solved]
+    return Level(
+        spacing=geometry.spacing,
+        sections=mean((s.sections.c_ext, s.sections.c_abs, s.sections.c_sca) for s in solved),
+        solver_error=mean(s.error for s in solved),
+        cells=polarizations[0].system.n,
+        iterations=sum(p.iterations for p in polarizations),
+        products=sum(p.products for p in polarizations),
+        residual=max(p.residual for p in polarizations),
+        status=worst(p.status for p in polarizations),
+        seconds=seconds,
+    )
+
+
+def _monitor(label: str, steps: float, watch: Watch) -> Callable[[int, np.ndarray, float], bool]:
+    """Return what the solver calls after every step, in every mirror sector."""
+    taken = 0
+
+    def after_step(_: int, __: np.ndarray, residual: float) -> bool:
+        nonlocal taken
+        taken += 1
+        # How many steps there will be is known roughly: the bar slows down instead of overflowing.
+        watch(f"{label}: step {taken}, residual {residual:.1e}", 1 - math.exp(-taken / steps))
+        return False
+
+    return after_step
