@@ -39,9 +39,9 @@ class PlaneWave:
         Methods for complex symmetric systems break down on right-hand sides with ``b.b = 0``,
         which circular light has exactly.
         """
-        turned = self.polarization * np.exp(-1j * np.angle(_largest(self.polarization)))
+        turn = complex(np.exp(1j * np.angle(_largest(self.polarization))))
+        turned = self.polarization / turn
         real, imaginary = turned.real, turned.imag
-        turn = complex(_largest(self.polarization) / _largest(turned))
         if np.linalg.norm(imaginary) < 1e-12:
             return [(turn, PlaneWave(self.direction, real.astype(complex)))]
         return [
