@@ -173,11 +173,20 @@ def _cautions(prepared: Prepared) -> list[str]:
 def _complaints(folder: RunFolder) -> list[str]:
     """Return a line for the failed wavelengths and one for those that did not converge."""
     failed = [row for row in folder.rows if not row.answered]
-    doubtful = [row for row in folder.rows if row.answered and not row.converged]
+    coarse = [row for row in folder.rows if row.status == "coarse"]
+    doubtful = [
+        row for row in folder.rows if row.answered and not row.converged and row not in coarse
+    ]
     lines = []
     if failed:
         where = ", ".join(f"{row.wavelength_nm:g}" for row in failed)
         lines.append(f"no answer at {where} nm: {failed[0].message}")
+    if coarse:
+        where = ", ".join(f"{row.wavelength_nm:g}" for row in coarse)
+        lines.append(
+            f"the target was not reached at {where} nm; at {coarse[0].wavelength_nm:g} nm "
+            f"{coarse[0].message}. The error bars hold all the same"
+        )
     if doubtful:
         where = ", ".join(f"{row.wavelength_nm:g}" for row in doubtful)
         lines.append(

@@ -177,16 +177,16 @@ def test_a_folder_that_cannot_be_written_is_refused_before_the_run(study, capsys
 
 def test_finished_wavelengths_are_kept_when_one_fails(study, capsys, monkeypatch):
     from dda.errors import ComputationError
-    from dda.study import runner
+    from dda.study import levels
 
-    settle = runner.settle
+    settle = levels.settle
 
     def failing(matrix, light, **options):
         if matrix.wavelength == 520:
             raise ComputationError("it broke down")
         return settle(matrix, light, **options)
 
-    monkeypatch.setattr(runner, "settle", failing)
+    monkeypatch.setattr(levels, "settle", failing)
     assert main(["run", study(), "--out", "out"]) == 1
     rows = _rows("out")
     assert [row["status"] for row in rows] == ["converged", "failed", "converged"]
@@ -196,28 +196,62 @@ def test_finished_wavelengths_are_kept_when_one_fails(study, capsys, monkeypatch
 
 
 def test_an_unconverged_wavelength_says_so(study, capsys, monkeypatch):
-    from dda.study import runner
+    from dda.study import levels
 
-    settle = runner.settle
-    monkeypatch.setattr(runner, "settle", lambda m, w, **o: settle(m, w, **{**o, "limit": 2}))
+    settle = levels.settle
+    monkeypatch.setattr(levels, "settle", lambda m, w, **o: settle(m, w, **{**o, "limit": 2}))
     assert main(["run", study(), "--out", "out"]) == 1
     assert {row["status"] for row in _rows("out")}.isdisjoint({"converged"})
     assert "did not converge at 480, 520, 560 nm" in capsys.readouterr().err
 
 
 def test_a_mistake_of_the_program_is_no_traceback(study, capsys, monkeypatch):
-    from dda.study import runner
+    from dda.study import levels
 
     def broken(*_, **__):
         raise KeyError("nothing a user did")
 
-    monkeypatch.setattr(runner, "settle", broken)
+    monkeypatch.setattr(levels, "settle", broken)
     assert main(["run", study(), "--out", "out"]) == 1
     said = capsys.readouterr().err
     assert "a mistake in the program" in said
     assert "KeyError" in said
     with pytest.raises(KeyError):
         main(["--debug", "run", study(), "--out", "out"])
+
+
+def test_a_target_is_reached_and_stated(study, capsys):
+    name = study(("cells = 8", "target = 0.05"))
+    assert main(["run", name, "--out", "out"]) == 0
+    for row in _rows("out"):
+        assert row["status"] == "converged"
+        assert int(row["levels"]) >= 3
+        for part in ("ext", "abs"):
+            error = float(row[f"c_{part}_error_nm2"])
+            assert 0 < error <= 0.05 * float(row[f"c_{part}_nm2"])
+            parts = (float(row[f"c_{part}_{kind}_error_nm2"]) for kind in ("spacing", "solver"))
+            assert error == pytest.approx(sum(parts), rel=1e-6)
+    assert "±" in capsys.readouterr().out
+
+
+@pytest.mark.parametrize(
+    ("limit", "said"), [("minutes = 1e-6", "in the time"), ("memory_gib = 0.004", "in the memory")]
+)
+def test_limits_stop_refinement_and_say_so(study, capsys, limit, said):
+    name = study(("cells = 8", f"target = 0.0005\n[limits]\n{limit}"))
+    assert main(["run", name, "--out", "out"]) == 1
+    rows = _rows("out")
+    assert {row["status"] for row in rows} == {"coarse"}
+    assert all(float(row["c_ext_error_nm2"]) > 0 for row in rows)
+    assert said in rows[0]["message"]
+    assert "target was not reached at 480, 520, 560 nm" in capsys.readouterr().err
+
+
+def test_given_cells_carry_an_error_bar(study):
+    assert main(["run", study(), "--out", "out"]) == 0
+    for row in _rows("out"):
+        assert float(row["c_ext_spacing_error_nm2"]) > 0
+        assert float(row["c_ext_error_nm2"]) < 0.5 * float(row["c_ext_nm2"])
 
 
 def test_interrupting_keeps_what_is_finished(study):
