@@ -124,6 +124,11 @@ def sectors(system: System, mirrors: tuple[bool, bool, bool] | None = None) -> l
     """
     cells = system.cells
     used = cells.mirrors if mirrors is None else mirrors
+    if any(asked and not there for asked, there in zip(used, cells.mirrors, strict=True)):
+        raise ValueError(
+            f"the cells are not symmetric under the mirrors asked for, {tuple(used)}: "
+            f"they have {cells.mirrors}"
+        )
     planes = [a for a in range(3) if used[a]]
     if not planes:
         rows = np.arange(system.n)[None]
@@ -165,10 +170,7 @@ def _images(system: System, planes: list[int]) -> np.ndarray:
             if flipped:
                 image[:, axis] = shape[axis] - 1 - image[:, axis]
         rows.append(row_of[tuple(image.T)])
-    images = np.array(rows)
-    if images.min() < 0:
-        raise ValueError("the cells are not symmetric under the mirrors asked for")
-    return images
+    return np.array(rows)
 
 
 def _restrict(tensor: CellTensor, rows: np.ndarray) -> CellTensor:

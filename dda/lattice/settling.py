@@ -7,8 +7,9 @@ from typing import Protocol
 
 import numpy as np
 
-# Quantities are looked at every so many steps (twice as often at first), and their spread is taken over this part of all
-# steps so far: a slow method must hold still for longer than a quick one.
+# Quantities are looked at every so many steps (twice as often at first), and their spread is
+# taken over this part of all steps so far: a slow method must hold still for longer than a quick
+# one.
 _STRIDE = 4
 _EARLY = 24
 _WINDOW = 0.3
