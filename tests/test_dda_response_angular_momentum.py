@@ -52,7 +52,8 @@ def test_irreducible_tensors_turn_without_mixing_ranks():
     rng = np.random.default_rng(5)
     t = rng.normal(size=(wave_count(order),) * 2) + 1j * rng.normal(size=(wave_count(order),) * 2)
     c, s = np.cos(0.7), np.sin(0.7)
-    turn = np.array([[c, -s, 0], [s, c, 0], [0, 0, 1.0]]) @ np.array([[1, 0, 0], [0, s, c], [0, -c, s]])
+    about_z, about_x = [[c, -s, 0], [s, c, 0], [0, 0, 1]], [[1, 0, 0], [0, s, c], [0, -c, s]]
+    turn = np.array(about_z) @ np.array(about_x)
     d = rotation_matrix(order, turn)
     before, after = irreducible(t, order), irreducible(d @ t @ d.conj().T, order)
     for one, two in zip(before, after, strict=True):
