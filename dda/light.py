@@ -45,7 +45,10 @@ class PlaneWave:
         if np.linalg.norm(imaginary) < 1e-12:
             return [(turn, PlaneWave(self.direction, real.astype(complex)))]
         return [
-            (turn * factor * np.linalg.norm(part), PlaneWave(self.direction, _unit(part + 0j, "")))
+            (
+                complex(turn * factor * np.linalg.norm(part)),
+                PlaneWave(self.direction, _unit(part + 0j, "polarization")),
+            )
             for factor, part in ((1, real), (1j, imaginary))
         ]
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import os
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
@@ -35,7 +36,7 @@ class Workers:
         """Cut ``range(n)`` into at most one part per thread."""
         parts = max(1, min(self.threads, n // grain))
         edges = [n * i // parts for i in range(parts + 1)]
-        return list(zip(edges[:-1], edges[1:], strict=True))
+        return list(itertools.pairwise(edges))
 
     def run(self, function: Callable, parts: list[tuple[int, int]]) -> list:
         """Call ``function(start, stop)`` for every part and return the values in order."""

@@ -80,12 +80,10 @@ def settle(
         goal=goal,
     )
     sections = cross_sections(polarization)
-    ext, absorbed, scattered = goal.error
-    if not np.all(np.isfinite(goal.error)):
-        # Solved in fewer steps than the estimate needs: the residual bounds it.
-        bound = 10 * polarization.residual * abs(sections.c_ext)
-        ext, absorbed, scattered = (v if np.isfinite(v) else bound for v in goal.error)
-    return Settled(polarization, sections, np.array([ext, absorbed, scattered]))
+    # Solved in fewer steps than the estimate needs: the residual bounds it.
+    bound = 10 * polarization.residual * abs(sections.c_ext)
+    error = np.where(np.isfinite(goal.error), goal.error, bound)
+    return Settled(polarization, sections, error)
 
 
 class SectionsGoal:
