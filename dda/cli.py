@@ -148,6 +148,7 @@ def _solve(prepared: Prepared, folder: RunFolder) -> bool:
     from dda.report.progress import ProgressBar
     from dda.study.runner import run_points
 
+    folder.begin()
     try:
         with ProgressBar(len(prepared.points)) as bar:
             for row in run_points(prepared.points, bar.watch, prepared.geometries):

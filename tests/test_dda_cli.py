@@ -67,7 +67,7 @@ def test_run_writes_a_spectrum_a_picture_and_a_copy(study, capsys):
     assert Path("results/one/study.toml").read_text() == STUDY
     assert Path("results/one/spectrum.png").read_bytes().startswith(b"\x89PNG")
     printed = capsys.readouterr()
-    assert "peak of extinction at 5" in printed.out
+    assert "extinction  peak at 5" in printed.out
     assert printed.err == ""
 
 

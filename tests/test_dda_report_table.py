@@ -77,7 +77,7 @@ def test_the_printed_table_is_short_and_keeps_what_matters():
     assert len(lines) < 25
     assert any("466" in line and "stalled" in line for line in lines)
     assert any(line.split()[:1] == ["550"] for line in lines)
-    assert "peak of extinction at 550.0 nm" in text
+    assert "extinction  peak at 550.0 nm" in text
     assert "full width at half maximum 80." in text
 
 
@@ -85,7 +85,7 @@ def test_a_peak_without_a_width_says_which_side_is_known():
     assert "red side 20.0 nm" in peak_sentence(Peak(500.0, 1.0, None, 520.0))
     assert "blue side 20.0 nm" in peak_sentence(Peak(500.0, 1.0, 480.0, None))
     assert "wider than the spectrum" in peak_sentence(Peak(500.0, 1.0, None, None))
-    assert "no maximum" in peak_sentence(None)
+    assert "no peak" in peak_sentence(None)
 
 
 def test_a_row_without_numbers_is_not_answered():

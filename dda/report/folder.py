@@ -23,7 +23,7 @@ REST = 1.0
 class RunFolder:
     """Collects rows and keeps the files of a run up to date.
 
-    Nothing is written before the first row. Every file is written aside and renamed, so that it
+    No file is written before the first row. Every file is written aside and renamed, so that it
     is whole whenever one looks.
     """
 
@@ -53,33 +53,40 @@ class RunFolder:
         if not existing.is_dir() or not os.access(existing, os.W_OK | os.X_OK):
             raise InputError(f"{self.path}: cannot be written here; give another --out")
 
+    def begin(self) -> None:
+        """Make the folder, so that it is known now whether that is possible.
+
+        Raises
+        ------
+        InputError
+        """
+        try:
+            self.path.mkdir(parents=True, exist_ok=True)
+        except OSError as error:
+            raise InputError(f"{self.path}: cannot be made: {error.strerror}") from error
+
     def add(self, row: Row) -> None:
         """Keep a row; the table on disk follows within a moment."""
         if not self.rows:
-            self._begin()
+            self._put_aside()
+            write_aside(self.path / STUDY, self.study.text.encode())
         self.rows.append(row)
         self._behind = True
         if time.monotonic() - self._written > REST:
             self._write_table()
 
     def close(self) -> None:
-        """Write what is not yet written; without a row, nothing."""
+        """Write what is not yet written; without a row nothing, and an empty folder goes."""
         if not self.rows:
+            if self.path.is_dir() and not any(self.path.iterdir()):
+                self.path.rmdir()
             return
         if self._behind:
             self._write_table()
         draw_spectrum(self.path / PICTURE, self.rows, self.study.name)
 
-    def _begin(self) -> None:
-        """Make the folder; results of another study in it are put aside, not overwritten."""
-        try:
-            self.path.mkdir(parents=True, exist_ok=True)
-        except OSError as error:
-            raise InputError(f"{self.path}: cannot be made: {error.strerror}") from error
-        self._put_aside()
-        write_aside(self.path / STUDY, self.study.text.encode())
-
     def _put_aside(self) -> None:
+        """Move the results of another study out of the way: nothing of them is overwritten."""
         before = self.path / STUDY
         if not (self.path / TABLE).exists():
             return

@@ -18,6 +18,8 @@ def plan_text(plan: Plan) -> str:
     """Return what ``dda plan`` prints."""
     prepared = plan.prepared
     low, high = plan.cost.seconds_between
+    target = prepared.points[0].accuracy.target
+    least = "" if target is None else " for the first three spacings, more for finer ones"
     lines = [*study_lines(prepared), ""]
     lines += _aligned(
         [
@@ -28,7 +30,7 @@ def plan_text(plan: Plan) -> str:
             (
                 "time",
                 f"about {duration_text(plan.cost.seconds)}, between {duration_text(low)} and "
-                f"{duration_text(high)}",
+                f"{duration_text(high)}{least}",
             ),
             (
                 "",
@@ -49,13 +51,12 @@ def plan_text(plan: Plan) -> str:
 
 def study_lines(prepared: Prepared) -> list[str]:
     """Return the study, its particle and its cells in a few lines."""
-    points, cells = prepared.points, prepared.cells
+    points = prepared.points
     first, last = points[0].wavelength, points[-1].wavelength
     span = f"{first:g} nm" if len(points) == 1 else f"{first:g} to {last:g} nm"
     sources = [(name, material.source) for name, material in prepared.media.particle.items()] + [
         (f"host {prepared.media.host.name}", prepared.media.host.source)
     ]
-    nx, ny, nz = cells.shape
     return [
         prepared.study.name,
         *_aligned(
@@ -65,7 +66,7 @@ def study_lines(prepared: Prepared) -> list[str]:
                 ("wavelengths", f"{len(points)}, {span}"),
                 ("polarization", _polarization(prepared)),
                 *[("note", note) for note in notes_of(prepared.geometry.particle)],
-                ("cells", f"{cells.n} of {cells.spacing:.4g} nm in a box of {nx} x {ny} x {nz}"),
+                ("cells", _cells(prepared)),
             ]
         ),
     ]
@@ -75,6 +76,23 @@ def extent_text(geometry: Geometry) -> str:
     """Return a particle's name and its extent along x, y and z."""
     x, y, z = geometry.extent
     return f"{geometry.particle.name}, {x:.4g} x {y:.4g} x {z:.4g} nm"
+
+
+def _cells(prepared: Prepared) -> str:
+    """Return the cells, and the coarser ones that tell the error bar, in words."""
+    target = prepared.points[0].accuracy.target
+    numbers = [f"{across:.0f}" for across in prepared.levels]
+    if target is not None:
+        return (
+            f"{', '.join(numbers)} across, then finer ones until the error bar is below "
+            f"{100 * target:g} %"
+        )
+    cells = prepared.cells
+    nx, ny, nz = cells.shape
+    text = f"{cells.n} of {cells.spacing:.4g} nm in a box of {nx} x {ny} x {nz}"
+    if len(numbers) > 1:
+        text += f"; {' and '.join(numbers[:-1])} across for the error bar"
+    return text
 
 
 def _polarization(prepared: Prepared) -> str:

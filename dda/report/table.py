@@ -65,11 +65,11 @@ def peak_sentence(peak: Peak | None) -> str:
     """Return where a peak is, how high and how wide, in words.
 
     >>> peak_sentence(Peak(561.23, 12345.6, 533.0, 598.5))
-    'at 561.2 nm, 1.235e+04 nm^2, full width at half maximum 65.5 nm'
+    'peak at 561.2 nm, 1.235e+04 nm^2, full width at half maximum 65.5 nm'
     """
     if peak is None:
-        return "no maximum between the ends of the spectrum"
-    place = f"at {peak.position:.1f} nm, {peak.height:.4g} nm^2"
+        return "no peak between the ends of the spectrum"
+    place = f"peak at {peak.position:.1f} nm, {peak.height:.4g} nm^2"
     if peak.width is not None:
         return f"{place}, full width at half maximum {peak.width:.1f} nm"
     if peak.red is not None:
@@ -89,8 +89,7 @@ def _peak_lines(rows: Sequence[Row]) -> list[str]:
         "scattering": [row.c_sca_nm2 for row in rows],
     }
     return [
-        f"peak of {name:<10} {peak_sentence(find_peak(wavelength, curve))}"
-        for name, curve in curves.items()
+        f"{name:<12}{peak_sentence(find_peak(wavelength, curve))}" for name, curve in curves.items()
     ]
 
 

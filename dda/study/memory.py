@@ -62,6 +62,8 @@ def bytes_text(amount: float) -> str:
     >>> bytes_text(3.2e9)
     '2.98 GiB'
     """
+    if amount >= 2**40:
+        return f"{amount / 2**40:.3g} TiB"
     if amount >= 2**30:
         return f"{amount / 2**30:.3g} GiB"
     return f"{amount / 2**20:.3g} MiB"

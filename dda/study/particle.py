@@ -50,9 +50,11 @@ def _from_catalogue(table: ParticleTable, folder: Path) -> shapes.Particle:
     assert table.shape is not None
     entry = catalogue.find(table.shape)
     material = table.material or _inner_material(entry, table.parameters)
+    # Built even without a material: another mistake may be why it is missing.
+    particle = catalogue.build(table.shape, table.parameters, material or "")
     if material is None:
         raise Mistake(("particle", "material"), 'this key is missing, for example "gold"')
-    return catalogue.build(table.shape, table.parameters, material)
+    return particle
 
 
 def _inner_material(entry: catalogue.Entry, parameters: Mapping[str, Any]) -> str | None:

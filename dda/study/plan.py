@@ -7,11 +7,11 @@ import time
 from dataclasses import dataclass
 
 import shapes
-from dda.lattice import memory_estimate, system
+from dda.lattice import system
 from dda.lattice.workers import Workers
 from dda.study.estimate import Cost, expected_steps, measure_step
 from dda.study.geometry import WINDOW, Geometries, Geometry, check_cells, geometry_of
-from dda.study.levels import lights_of
+from dda.study.levels import lights_of, tolerance_of
 from dda.study.media import Media, check_media, media_of
 from dda.study.memory import available_memory
 from dda.study.mistakes import Mistake
@@ -21,6 +21,8 @@ from dda.study.reader import Study
 #: |m| k d up to which the cells resolve the wave inside the particle well, and at all
 #: (Draine & Flatau 1994 ask for 1, and for less where the accuracy matters).
 GOOD_MKD, LARGEST_MKD = 0.5, 1.0
+#: A material whose index is this near to the host's hardly shows.
+ALIKE = 1e-3
 #: Cells across the thinnest part from which it is well described.
 ENOUGH_ACROSS = 5.0
 
@@ -49,8 +51,21 @@ class Prepared:
 
     @property
     def cells(self) -> shapes.Cells:
-        """The cells of the particle."""
+        """The cells of the particle; the coarsest ones where a target is asked for."""
         return self.geometry.cells
+
+    @property
+    def levels(self) -> tuple[float, ...]:
+        """Cells across of the spacings that are sure to be solved, coarse to fine."""
+        geometry = self.geometry
+        if self.points[0].accuracy.target is not None:
+            return tuple(float(across) for across in geometry.ladder()[:3])
+        return (*geometry.coarser(), geometry.size / geometry.spacing)
+
+    @property
+    def spacing(self) -> float:
+        """The finest spacing that is sure to be solved, nm."""
+        return self.geometry.size / self.levels[-1]
 
 
 @dataclass(frozen=True)
@@ -133,37 +148,22 @@ def make_plan(study: Study) -> Plan:
     InputError
     """
     prepared = prepare(study)
-    return Plan(
-        prepared,
-        memory_estimate(prepared.cells.shape, prepared.cells.n, prepared.geometry.precision),
-        available_memory(),
-        _cost(prepared),
-        validity(prepared),
-    )
+    memory = prepared.geometry.memory(prepared.spacing)
+    return Plan(prepared, memory, available_memory(), _cost(prepared), validity(prepared))
 
 
 def validity(prepared: Prepared) -> tuple[Figure, ...]:
     """Return the figures on which it depends whether the method holds."""
     figures = [_wave_figure(prepared)]
-    cells, particle = prepared.cells, prepared.geometry.particle
-    thin = cells.thinnest if cells.thinnest is not None else particle.thinnest
+    particle, spacing = prepared.geometry.particle, prepared.spacing
+    thin = particle.thinnest
     if thin is None:
         figures.append(Figure("thinnest part", "not known", True, "look at it with `dda look`"))
     else:
-        across = thin / cells.spacing
-        figures.append(
-            Figure(
-                "thinnest part",
-                f"{thin:.3g} nm, {across:.1f} cells",
-                across >= ENOUGH_ACROSS,
-                "good"
-                if across >= ENOUGH_ACROSS
-                else f"use a spacing of {thin / ENOUGH_ACROSS:.2g} nm to have "
-                f"{ENOUGH_ACROSS:.0f} cells",
-            )
-        )
+        figures.append(_thin_figure(thin, spacing))
     if particle.gap is not None:
-        figures.append(_gap_figure(particle.gap, cells.spacing))
+        figures.append(_gap_figure(particle.gap, spacing))
+    figures.extend(_alike_figures(prepared))
     return tuple(figures)
 
 
@@ -172,16 +172,24 @@ def _wave_figure(prepared: Prepared) -> Figure:
     largest, where, what = 0.0, 0.0, ""
     for point in prepared.points:
         host = float(prepared.media.host.index(point.wavelength).real)
-        kd = 2 * math.pi * host / point.wavelength * prepared.cells.spacing
+        kd = 2 * math.pi * host / point.wavelength * prepared.spacing
         for name, m in prepared.media.relative_index(point.wavelength).items():
             if abs(m) * kd > largest:
                 largest, where, what = abs(m) * kd, point.wavelength, name
-    finer = prepared.cells.spacing * GOOD_MKD / largest
+    finer = prepared.spacing * GOOD_MKD / largest
     remark = "good" if largest <= GOOD_MKD else f"coarse; a spacing of {finer:.2g} nm is better"
     if largest > LARGEST_MKD:
         remark = f"too coarse to trust; use a spacing of {finer:.2g} nm"
     value = f"{largest:.3g} ({what}, {where:g} nm)"
     return Figure("|m| k d at most", value, largest <= GOOD_MKD, remark)
+
+
+def _thin_figure(thin: float, spacing: float) -> Figure:
+    across = thin / spacing
+    good = across >= ENOUGH_ACROSS
+    finer = f"use a spacing of {thin / ENOUGH_ACROSS:.2g} nm to have {ENOUGH_ACROSS:.0f} cells"
+    value = f"{thin:.3g} nm, {across:.1f} cells"
+    return Figure("thinnest part", value, good, "good" if good else finer)
 
 
 def _gap_figure(gap: float, spacing: float) -> Figure:
@@ -191,25 +199,46 @@ def _gap_figure(gap: float, spacing: float) -> Figure:
     return Figure("gap", f"{gap:.3g} nm, {across:.1f} cells", good, remark)
 
 
+def _alike_figures(prepared: Prepared) -> list[Figure]:
+    """Point out materials that are optically the same as the host."""
+    largest: dict[str, float] = {}
+    for point in prepared.points:
+        for name, m in prepared.media.relative_index(point.wavelength).items():
+            largest[name] = max(largest.get(name, 0.0), abs(m - 1))
+    remark = "it is optically the same as the host, so it neither absorbs nor scatters"
+    return [
+        Figure(f"contrast of {name}", f"|m - 1| at most {contrast:.1g}", False, remark)
+        for name, contrast in largest.items()
+        if contrast < ALIKE
+    ]
+
+
 def _cost(prepared: Prepared) -> Cost:
+    """Return the cost, measured at the finest spacing that is sure to be solved."""
     point = prepared.points[len(prepared.points) // 2]
-    started = time.perf_counter()
-    matrix = system(
-        prepared.cells,
-        wavelength=point.wavelength,
-        host=prepared.media.host,
-        materials=dict(prepared.media.particle),
-        precision=point.solver.precision,
-        workers=Workers(point.solver.threads),
-    )
-    setup = time.perf_counter() - started
-    across = max(prepared.cells.shape)
-    steps = tuple(
-        len(lights_of(point))
-        * max(
-            expected_steps(m, across, point.solver.tolerance)
-            for m in prepared.media.relative_index(point.wavelength).values()
+    finest = prepared.levels[-1]
+    cells = prepared.geometries.level(prepared.geometry, finest).cells
+    for _ in range(2):  # the first time compiles
+        started = time.perf_counter()
+        matrix = system(
+            cells,
+            wavelength=point.wavelength,
+            host=prepared.media.host,
+            materials=dict(prepared.media.particle),
+            precision=point.solver.precision,
+            workers=Workers(point.solver.threads),
         )
-        for point in prepared.points
+        setup = time.perf_counter() - started
+    steps = tuple(_steps(prepared, point) for point in prepared.points)
+    return Cost(setup * len(prepared.levels), measure_step(matrix, lights_of(point)[0]), steps)
+
+
+def _steps(prepared: Prepared, point: Point) -> float:
+    """Return the expected steps at all spacings, in units of steps at the finest one."""
+    indices = prepared.media.relative_index(point.wavelength).values()
+    finest, tolerance = prepared.levels[-1], tolerance_of(point)
+    steps = sum(
+        max(expected_steps(m, across, tolerance) for m in indices) * (across / finest) ** 3
+        for across in prepared.levels
     )
-    return Cost(setup, measure_step(matrix, lights_of(point)[0]), steps)
+    return len(lights_of(point)) * steps
