@@ -37,9 +37,9 @@ Each case climbs the ladder {LADDER} of cells across with a target that it canno
 bar is that of the whole ladder; solver tolerance {TOLERANCE:g}. The bar is the stated error:
 spacing and solver added. C_abs of a particle that does not absorb is measured against C_ext. A row
 fails when an error is more than {MOST_BARS:g} bars; the last row counts how many of the true errors
-lie within theirs, and allowed is no less than {100 * LEAST_INSIDE:g} %. The four constants of
-`dda/accuracy/extrapolation.py` were chosen on these very cases (with other ladders), the cases
-before any result was seen.
+lie within theirs, and allowed is no less than {100 * LEAST_INSIDE:g} %. The constants of
+`dda/accuracy/extrapolation.py` were set on these very cases (with ladders of three to five levels);
+the cases themselves were chosen before any result was seen.
 """
 
     def refine(solve: Callable, size: float) -> Refined:
@@ -76,10 +76,8 @@ def _table(title: str, text: str, refine: Callable, quick: bool) -> Table:
         f"{len(every)} errors of {len(rows)} cases: {100 * inside:.1f} % inside, "
         f"cases with both inside {100 * np.mean(whole):.1f} %"
     )
-    rows.append(
-        [summary, "-", "-", "-", "-", "-", f"at most {every.max():.2f}", f"{100 * inside:.1f} %"]
-        + ["-", "-", "-", verdict(good)]
-    )
+    counted = [f"at most {every.max():.2f}", f"{100 * inside:.1f} %"]
+    rows.append([summary, *["-"] * 5, *counted, *["-"] * 3, verdict(good)])
     return Table(title, text, COLUMNS, rows)
 
 
