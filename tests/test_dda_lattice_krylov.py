@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 from scipy.sparse.linalg import aslinearoperator
 
+from dda.lattice import krylov
 from dda.lattice.krylov import cocg
 
 
@@ -111,3 +112,36 @@ def test_single_precision_stays_single():
     # Residual 1e-5 times a condition number of about 3.
     error = np.linalg.norm(result.x - np.linalg.solve(a, b)) / np.linalg.norm(result.x)
     assert error < 1e-4
+
+
+@pytest.mark.parametrize("method", sorted(krylov.METHODS))
+def test_every_method_solves_and_counts(method):
+    rng = np.random.default_rng(3)
+    a = rng.normal(size=(40, 40)) + 1j * rng.normal(size=(40, 40))
+    a = a + a.T + (30 + 5j) * np.eye(40)
+    b = rng.normal(size=40) + 0j
+    counted = []
+
+    class Operator:
+        shape, dtype = a.shape, a.dtype
+
+        def matvec(self, v):
+            counted.append(1)
+            return a @ v
+
+    result = krylov.METHODS[method](Operator(), b, lambda r: r / np.diag(a), tolerance=1e-9)
+    assert result.status == "converged"
+    # A residual of 1e-9 and a condition number below 10.
+    assert result.x == pytest.approx(np.linalg.solve(a, b), rel=1e-6, abs=1e-9)
+    assert result.products == len(counted)
+
+
+@pytest.mark.parametrize("method", sorted(krylov.METHODS))
+def test_every_method_stops_when_told_to(method):
+    a = np.diag(np.linspace(1, 100, 300)).astype(complex)
+    b = np.ones(300, complex)
+    result = krylov.METHODS[method](
+        aslinearoperator(a), b, tolerance=1e-12, monitor=lambda step, x, residual: True
+    )
+    assert result.status == "stopped"
+    assert 0 < np.linalg.norm(a @ result.x - b) < np.linalg.norm(b)

@@ -1,4 +1,4 @@
-"""Krylov methods for complex symmetric systems.
+"""Krylov methods.
 
 Each takes an operator (anything with `matvec`, `shape` and `dtype`) and a preconditioner (a
 function of a vector), and knows nothing else of what it solves.
@@ -139,6 +139,120 @@ def cocg(
     return KrylovResult(x, residual, step, products, status, np.array(history))
 
 
+def cocr(
+    operator,
+    b: np.ndarray,
+    preconditioner: Callable[[np.ndarray], np.ndarray] | None = None,
+    *,
+    start: np.ndarray | None = None,
+    tolerance: float = 1e-5,
+    limit: int = 2000,
+    monitor: Callable[[int, np.ndarray, float], bool] | None = None,
+) -> KrylovResult:
+    """Conjugate orthogonal conjugate residuals: smoother than `cocg`, a vector more.
+
+    Parameters are those of `cocg`.
+
+    References
+    ----------
+    Sogabe, T., Zhang, S.-L. (2007), J. Comput. Appl. Math. 199, 297.
+    """
+    solve = preconditioner or (lambda r: r.copy())
+    x = np.zeros_like(b) if start is None else start.astype(b.dtype).copy()
+    norm_b = float(np.linalg.norm(solve(b)))
+    if norm_b == 0:
+        return KrylovResult(np.zeros_like(b), 0.0, 0, 0, "converged", np.empty(0))
+    products = 1
+    z = solve(b) if start is None else solve(b - operator.matvec(x))
+    p, az = z.copy(), operator.matvec(z)
+    products += start is not None
+    q = az.copy()
+    rho = np.dot(z, az)
+    history: list[float] = []
+    residual = float(np.linalg.norm(z)) / norm_b
+    status = "converged" if residual <= tolerance else "limit"
+    while status == "limit" and len(history) < limit:
+        mq = solve(q)
+        qmq = np.dot(q, mq)
+        if qmq == 0 or rho == 0 or not np.isfinite(qmq):
+            status = "stalled"
+            break
+        _step(x, z, p, mq, b.dtype.type(rho / qmq))
+        residual = float(np.linalg.norm(z)) / norm_b
+        history.append(residual)
+        if residual <= tolerance:
+            status = "converged"
+        elif not residual < _DIVERGED:
+            status = "stalled"
+        elif monitor is not None and monitor(len(history), x, residual):
+            status = "stopped"
+        else:
+            az = operator.matvec(z)
+            products += 1
+            fresh = np.dot(z, az)
+            beta = b.dtype.type(fresh / rho)
+            _extend(p, z, beta)
+            _extend(q, az, beta)
+            rho = fresh
+    return KrylovResult(x, residual, len(history), products, status, np.array(history))
+
+
+def bicgstab(
+    operator,
+    b: np.ndarray,
+    preconditioner: Callable[[np.ndarray], np.ndarray] | None = None,
+    *,
+    start: np.ndarray | None = None,
+    tolerance: float = 1e-5,
+    limit: int = 2000,
+    monitor: Callable[[int, np.ndarray, float], bool] | None = None,
+) -> KrylovResult:
+    """Stabilized biconjugate gradients: two products a step, no need of symmetry.
+
+    Parameters are those of `cocg`; the monitor is given NaN for the residual, which the method
+    does not offer on its way.
+
+    References
+    ----------
+    van der Vorst, H. A. (1992), SIAM J. Sci. Stat. Comput. 13, 631; the implementation is scipy's.
+    """
+    from scipy.sparse.linalg import LinearOperator
+    from scipy.sparse.linalg import bicgstab as scipy_bicgstab
+
+    solve = preconditioner or (lambda r: r.copy())
+    counted = [0, 0]
+    last = [np.zeros_like(b) if start is None else start.astype(b.dtype)]
+
+    def product(v: np.ndarray) -> np.ndarray:
+        counted[0] += 1
+        return solve(operator.matvec(v.astype(b.dtype, copy=False)))
+
+    def after_step(x: np.ndarray) -> None:
+        counted[1] += 1
+        if monitor is not None and monitor(counted[1], x, float("nan")):
+            last[0] = x.copy()
+            raise _StoppedError
+
+    rhs = solve(b)
+    norm_b = float(np.linalg.norm(rhs))
+    if norm_b == 0:
+        return KrylovResult(np.zeros_like(b), 0.0, 0, 0, "converged", np.empty(0))
+    system = LinearOperator(operator.shape, matvec=product, dtype=b.dtype)
+    try:
+        x, info = scipy_bicgstab(
+            system, rhs, x0=last[0], rtol=tolerance, maxiter=limit, callback=after_step
+        )
+        status = "converged" if info == 0 else ("limit" if info > 0 else "stalled")
+    except _StoppedError:
+        x, status = last[0], "stopped"
+    residual = float(np.linalg.norm(rhs - product(x)) / norm_b)
+    return KrylovResult(x, residual, counted[1], counted[0], status, np.array([residual]))
+
+
+class _StoppedError(Exception):
+    """Ends a library's iteration from its callback."""
+
+
 def gmres(
     operator,
     b: np.ndarray,
@@ -200,6 +314,10 @@ def gmres(
             status = "stopped"
     residual = float(np.linalg.norm(rhs - product(x)) / norm_b)
     return KrylovResult(x, residual, len(history), counted[0], status, np.array(history))
+
+
+#: The methods by name, as a study's ``[solver] method`` gives them.
+METHODS = {"cocg": cocg, "cocr": cocr, "bicgstab": bicgstab, "gmres": gmres}
 
 
 @njit(nogil=True, cache=True)

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from .krylov import KrylovResult, cocg, gmres
+from .krylov import METHODS, KrylovResult, gmres
 from .linear_system import System
 from .sectors import Sector, sectors
 from .settling import Goal
@@ -61,6 +61,7 @@ def solve(
     monitor: Callable[[int, np.ndarray, float], bool] | None = None,
     mirrors: tuple[bool, bool, bool] | None = None,
     goal: Goal | None = None,
+    method: str = "cocg",
 ) -> Polarization:
     """Solve for the dipoles that the light induces.
 
@@ -85,6 +86,8 @@ def solve(
     goal : Goal, optional
         Stops a sector when what is asked for has settled, whatever the residual; see
         `dda.response.settled`.
+    method : {"cocg", "cocr", "bicgstab", "gmres"}
+        Krylov method; GMRES takes over where another breaks down.
 
     Returns
     -------
@@ -116,7 +119,7 @@ def solve(
                 guess, spent = best_combination(sector, b, [sector.fold(v) for v in previous])
                 extra += spent
             watch = goal.watch(sector, field_, monitor) if goal else None
-            result = _solve_sector(sector, b, tolerance, limit, guess, watch or monitor)
+            result = _solve_sector(method, sector, b, tolerance, limit, guess, watch or monitor)
             if goal and watch:
                 watch.look(result.iterations, result.x)
                 goal.add(watch)
@@ -164,9 +167,9 @@ def best_combination(
     return out, len(used)
 
 
-def _solve_sector(sector: Sector, b, tolerance, limit, start, monitor) -> KrylovResult:
+def _solve_sector(method, sector: Sector, b, tolerance, limit, start, monitor) -> KrylovResult:
     options = {"tolerance": tolerance, "limit": limit, "monitor": monitor}
-    first = cocg(sector, b, sector.precondition, start=start, **options)
+    first = METHODS[method](sector, b, sector.precondition, start=start, **options)
     if first.status != "stalled":
         return first
     options["limit"] = max(1, limit - first.iterations)

@@ -43,6 +43,7 @@ def settle(
     start: np.ndarray | None = None,
     previous: Sequence[np.ndarray] = (),
     monitor: Callable[[int, np.ndarray, float], bool] | None = None,
+    method: str = "cocg",
 ) -> Settled:
     """Solve until C_ext and C_abs change by less than `tolerance` of their values.
 
@@ -56,7 +57,7 @@ def settle(
         A residual this small ends the solve as well.
     limit : int
         Most iterations in a mirror sector.
-    start, previous, monitor
+    start, previous, monitor, method
         As in `dda.solve`.
 
     Returns
@@ -78,6 +79,7 @@ def settle(
         previous=previous,
         monitor=monitor,
         goal=goal,
+        method=method,
     )
     sections = cross_sections(polarization)
     # Solved in fewer steps than the estimate needs: the residual bounds it.

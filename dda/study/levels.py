@@ -140,7 +140,14 @@ def _solutions(point: Point, geometry: Geometry, memory: Memory, watch: Watch) -
     for number, light in enumerate(lights):
         key = (id(cells), str(point.direction), str(point.polarization), number, matrix.n)
         previous = memory.solutions.get(key, [])
-        settled = settle(matrix, light, tolerance=tolerance, previous=previous, monitor=monitor)
+        settled = settle(
+            matrix,
+            light,
+            tolerance=tolerance,
+            previous=previous,
+            monitor=monitor,
+            method=point.solver.method,
+        )
         if matrix.n <= _LARGEST_KEPT:
             memory.solutions[key] = [settled.polarization.p, *previous[: _KEPT - 1]]
         out.append(settled)
