@@ -10,7 +10,7 @@ import tomllib
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
+from typing import Any, get_args
 
 from pydantic import BaseModel, ValidationError
 
@@ -175,11 +175,11 @@ def _model_at(key: Sequence[str | int]) -> type[BaseModel] | None:
             model = WavelengthRange
             continue
         field = model.model_fields.get(str(part))
-        if field is None or not isinstance(field.annotation, type):
+        kinds = () if field is None else (field.annotation, *get_args(field.annotation))
+        tables = [k for k in kinds if isinstance(k, type) and issubclass(k, BaseModel)]
+        if not tables:
             return None
-        if not issubclass(field.annotation, BaseModel):
-            return None
-        model = field.annotation
+        model = tables[0]
     return model
 
 

@@ -12,7 +12,6 @@ from typing import Annotated, Any, Literal
 
 from pydantic import (
     AfterValidator,
-    BaseModel,
     BeforeValidator,
     ConfigDict,
     Discriminator,
@@ -21,28 +20,13 @@ from pydantic import (
     model_validator,
 )
 
-#: Numbers are strict: "60" and true are not lengths.
-Finite = Annotated[float, Field(strict=True, allow_inf_nan=False)]
-Positive = Annotated[float, Field(strict=True, gt=0, allow_inf_nan=False)]
+from dda.study.fields import Positive, Table, Vector
+from dda.study.near_table import NearFieldTable
 
-
-def _three(value: Any) -> Any:
-    if not isinstance(value, list | tuple) or len(value) != 3:
-        raise ValueError("should be three numbers, [x, y, z]")
-    return value
-
-
-Vector = Annotated[tuple[Finite, Finite, Finite], BeforeValidator(_three)]
 #: Polarizations that have a name.
 NAMED_POLARIZATIONS = ("left", "right", "unpolarized")
 #: More wavelengths than this in one range are taken for a slip of the pen.
 MOST_WAVELENGTHS = 20_000
-
-
-class Table(BaseModel):
-    """A table of the study file: frozen, and strict about its keys."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True)
 
 
 def _voxel(value: Any) -> Any:
@@ -282,4 +266,5 @@ class StudyTables(Table):
     accuracy: AccuracyTable
     solver: SolverTable = SolverTable()
     limits: LimitsTable = LimitsTable()
-    materials: dict[str, dict[str, Any]] = {}
+    near_field: NearFieldTable | None = None
+    materials: dict[str, dict[str, Any]] = Field(default_factory=dict)
