@@ -81,7 +81,7 @@ def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf
     def solve(across: float) -> Level:
         started = time.perf_counter()
         level = memory.geometries.level(geometry, across)
-        solved = _solutions(point, level, memory, watch)
+        solved = solutions(point, level, memory, watch)
         last[:] = [solved]
         return _level(level, solved, time.perf_counter() - started)
 
@@ -117,7 +117,8 @@ def worst(statuses: Iterable[str]) -> str:
     return max(statuses, key=lambda s: _STATUSES.index(s) if s in _STATUSES else len(_STATUSES))
 
 
-def _solutions(point: Point, geometry: Geometry, memory: Memory, watch: Watch) -> list[Settled]:
+def solutions(point: Point, geometry: Geometry, memory: Memory, watch: Watch) -> list[Settled]:
+    """Solve a point on one lattice, for every plane wave of `lights_of`."""
     label = f"{point.wavelength:g} nm, {geometry.size / geometry.spacing:.0f} cells across"
     watch(f"{label}: cells", 0.0)
     cells = geometry.cells
