@@ -77,7 +77,8 @@ def run(options: argparse.Namespace) -> int:
         return _complain(f"interrupted; {kept}", INTERRUPTED)
     for complaint in _complaints(folder):
         print(f"dda: {complaint}", file=sys.stderr)
-    return OK if all(row.converged for row in folder.rows) else FAILED
+    near = _near(prepared, folder, options.debug)
+    return near or (OK if all(row.converged for row in folder.rows) else FAILED)
 
 
 def plan(options: argparse.Namespace) -> int:
@@ -159,6 +160,23 @@ def _solve(prepared: Prepared, folder: RunFolder) -> bool:
     finally:
         folder.close()
     return False
+
+
+def _near(prepared: Prepared, folder: RunFolder, debug: bool) -> int:
+    """Near fields, if they are asked for; the spectrum is safe on disk whatever happens here."""
+    if prepared.study.tables.near_field is None or not folder.rows:
+        return OK
+    from dda.report.near_run import run_near
+
+    try:
+        return OK if run_near(prepared, folder) else FAILED
+    except KeyboardInterrupt:
+        return _complain("interrupted; the spectrum is kept", INTERRUPTED)
+    except Exception as error:
+        if debug:
+            raise
+        code = _report(error)
+        return _complain("the near field failed; the spectrum is kept", code)
 
 
 def _cautions(prepared: Prepared) -> list[str]:

@@ -6,9 +6,9 @@ import numpy as np
 import pytest
 
 import shapes
-from dda.errors import ComputationError
+from dda.errors import ComputationError, InputError
 from dda.report.colours import PALETTE, lightness, material_colours, rgb
-from dda.report.scene import cell_mesh, draw_particle, drawing, surface_meshes
+from dda.report.scene import cell_mesh, draw_particle, drawing, show_particle, surface_meshes
 from dda.report.sheet import cell_notes, surface_notes
 
 GOLD_ON_SILICA = shapes.core_shell(
@@ -80,3 +80,10 @@ def test_the_picture_shows_both_materials(tmp_path):
 def test_missing_graphics_libraries_are_named():
     with pytest.raises(ComputationError, match="libgl1"), drawing():
         raise ImportError("libGL.so.1: cannot open shared object file")
+
+
+def test_a_window_without_a_display_is_refused(monkeypatch):
+    monkeypatch.delenv("DISPLAY", raising=False)
+    monkeypatch.setattr("sys.platform", "linux")
+    with pytest.raises(InputError, match="no display"):
+        show_particle(GOLD_ON_SILICA, shapes.voxelize(GOLD_ON_SILICA, cells=6), "gold on silica")

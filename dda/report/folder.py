@@ -96,7 +96,7 @@ class RunFolder:
         while (earlier := self.path / f"earlier-{number}").exists():
             number += 1
         earlier.mkdir()
-        for name in (TABLE, PICTURE, STUDY):
+        for name in (TABLE, PICTURE, STUDY, *(p.name for p in self.path.glob("near_field*"))):
             if (self.path / name).exists():
                 os.replace(self.path / name, earlier / name)
 

@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import contextlib
-import io
+import ctypes
 import os
+import sys
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
@@ -14,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 import shapes
-from dda.errors import ComputationError
+from dda.errors import ComputationError, InputError
 from dda.report.colours import BACKGROUND, INK, material_colours, rgb
 
 #: Samples across the largest extent from which the surface is drawn.
@@ -79,7 +80,17 @@ def draw_particle(
 
 
 def show_particle(particle: shapes.Particle, cells: shapes.Cells, title: str) -> None:
-    """Open a window with the particle's surface and its cells, to be turned with the mouse."""
+    """Open a window with the particle's surface and its cells, to be turned with the mouse.
+
+    Raises
+    ------
+    InputError
+        There is no display to open a window on.
+    """
+    if sys.platform == "linux" and not os.environ.get("DISPLAY"):
+        raise InputError(
+            "there is no display to open a window on; without --window a file is drawn"
+        )
     cut = len(particle.materials) > 1
     colours = material_colours(particle.materials)
     with drawing() as pyvista:
@@ -110,18 +121,36 @@ def view_of(cells: shapes.Cells) -> View:
 @contextlib.contextmanager
 def drawing() -> Iterator[Any]:
     """Give pyvista, and turn what goes wrong in the graphics libraries into a clear message."""
-    if not os.environ.get("DISPLAY"):
+    if sys.platform == "linux" and not os.environ.get("DISPLAY"):
         # Otherwise VTK tries the X server first and complains about it.
         os.environ.setdefault("VTK_DEFAULT_OPENGL_WINDOW", "vtkEGLRenderWindow")
     try:
         import pyvista
 
+        _require_opengl()
         yield pyvista
     except (ImportError, RuntimeError, OSError) as error:
         raise ComputationError(
             f"three-dimensional pictures cannot be drawn here: {error}. They need the OpenGL "
-            "libraries of the system (Debian, Ubuntu: apt-get install libgl1 libegl1 libxrender1)"
+            "libraries of the system (Debian, Ubuntu: apt-get install libgl1 libegl1 "
+            "libegl-mesa0 libgl1-mesa-dri libxrender1)"
         ) from error
+
+
+def _require_opengl() -> None:
+    """Raise OSError where VTK would crash: it found no OpenGL and its last resort is missing."""
+    import vtkmodules.vtkRenderingOpenGL2  # noqa: F401  (registers the kinds of window)
+    from vtkmodules.vtkCommonCore import vtkLogger
+    from vtkmodules.vtkRenderingCore import vtkRenderWindow
+
+    vtkLogger.SetStderrVerbosity(vtkLogger.VERBOSITY_OFF)
+    if vtkRenderWindow().GetClassName() != "vtkOSOpenGLRenderWindow":
+        return
+    for name in ("libOSMesa.so.8", "libOSMesa.so.6", "libOSMesa.so"):
+        with contextlib.suppress(OSError):
+            ctypes.CDLL(name)
+            return
+    raise OSError("no OpenGL was found")
 
 
 def surface_meshes(
@@ -230,7 +259,7 @@ def cell_mesh(cells: shapes.Cells, colours: dict[str, str], cut: bool = False) -
 def _render(pyvista: Any, view: View, fill: Any) -> NDArray[np.uint8]:
     """Return a square picture, (pixels, pixels, 3), of what ``fill`` puts on a plotter."""
     plotter = pyvista.Plotter(off_screen=True, window_size=(_PIXELS, _PIXELS))
-    with contextlib.closing(plotter), contextlib.redirect_stderr(io.StringIO()):
+    with contextlib.closing(plotter):
         plotter.set_background(BACKGROUND)
         fill(plotter)
         plotter.enable_parallel_projection()
