@@ -138,7 +138,8 @@ def _spheroids(quick: bool) -> list[list[str]]:
                     seconds,
                 )
             )
-    axes, wavelength = (6.0, 6.0, 12.0), 560.0
+    # smaller than any real particle, because Gans leaves out retardation: 1.4 % at 6 x 12 nm
+    axes, wavelength = (3.0, 3.0, 6.0), 560.0
     cells = 16 if quick else 40
     exact_small = ellipsoid(axes, wavelength, permittivity("gold", wavelength), HOST, damping=True)
     t, seconds = _solved(shapes.ellipsoid(axes), wavelength, cells)
@@ -147,7 +148,7 @@ def _spheroids(quick: bool) -> list[list[str]]:
     errors = [a / b - 1 for a, b in zip(ours, reference, strict=True)]
     rows.append(
         _row(
-            "gold spheroid, 6 x 12 nm, 560 nm, average",
+            "gold spheroid, 3 x 6 nm, 560 nm, average",
             GANS,
             ours,
             reference,
