@@ -228,13 +228,16 @@ def _add_cells(plotter: Any, cells: shapes.Cells, colours: dict[str, str], cut: 
 def cell_mesh(cells: shapes.Cells, colours: dict[str, str], cut: bool = False) -> Any:
     """Return the outside of the occupied cells as a pyvista mesh, in nm, with colours.
 
-    A cell has the colour of the material that fills most of it, the paler the less it is filled.
+    A cell has the colour of the material that fills most of its window, the paler the less of the
+    cell is filled.
     """
     import pyvista
 
     index = np.asarray(cells.index)
     share = np.asarray(cells.fraction)
-    hues = np.array([rgb(colours[name]) for name in cells.materials])[share.argmax(axis=1)]
+    # The window tells the material of cells that hold none of it themselves, too.
+    most = np.asarray(cells.window).argmax(axis=1)
+    hues = np.array([rgb(colours[name]) for name in cells.materials])[most]
     tone = (0.5 + 0.5 * np.clip(share.sum(axis=1), 0, 1))[:, None]
     tint = np.zeros((*cells.shape, 3))
     tint[tuple(index.T)] = tone * hues + (1 - tone)

@@ -12,6 +12,7 @@ import dda.materials
 from dda.errors import InputError
 from dda.materials import Material
 from dda.study.mistakes import Mistake
+from dda.study.particle import material_key
 from dda.study.points import Point
 
 #: Keys of a material's table whose value may be the name of another material.
@@ -46,7 +47,7 @@ def media_of(point: Point, names: Iterable[str]) -> Media:
     Mistake
         A material is not known or its data are unusable.
     """
-    particle = {name: _find(point, name, ("particle", "material")) for name in names}
+    particle = {name: _find(point, name, material_key(point.particle, name)) for name in names}
     if point.host.index is not None:
         return Media(dda.materials.find(point.host.index), particle)
     assert point.host.material is not None
@@ -73,7 +74,7 @@ def check_media(media: Media, wavelengths: Sequence[float]) -> None:
             raise Mistake(("light", "wavelengths"), str(error)) from None
 
 
-def _find(point: Point, name: str, key: tuple[str, ...]) -> Material:
+def _find(point: Point, name: str, key: tuple[str | int, ...]) -> Material:
     own = point.materials.get(name)
     if own is not None:
         key = ("materials", name)

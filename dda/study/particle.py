@@ -8,6 +8,7 @@ from typing import Any
 
 import shapes
 from dda.study.mistakes import Mistake
+from dda.study.parts_table import PartTable
 from dda.study.schema import ParticleTable
 from shapes import catalogue
 
@@ -32,12 +33,29 @@ def build_particle(table: ParticleTable, folder: Path) -> shapes.Particle:
     >>> build_particle(table, Path()).materials
     ('gold',)
     """
-    build = {"shape": _from_catalogue, "mesh": _from_mesh, "voxels": _from_voxels}[table.source]
+    build = {
+        "shape": _from_catalogue,
+        "mesh": _from_mesh,
+        "voxels": _from_voxels,
+        "parts": _from_parts,
+    }[table.source]
     try:
         return build(table, folder)
     except shapes.ShapeError as error:
         key = error.where or (table.source,)
         raise Mistake(("particle", *key), str(error)) from None
+
+
+def material_key(table: ParticleTable, name: str) -> tuple[str | int, ...]:
+    """Return the key at which a material of the particle is named.
+
+    >>> material_key(ParticleTable(parts=[{"shape": "cube", "material": "gold"}]), "gold")
+    ('particle', 'parts', 0, 'material')
+    """
+    for number, part in enumerate(table.parts or ()):
+        if part.material == name:
+            return ("particle", "parts", number, "material")
+    return ("particle", "material")
 
 
 def notes_of(particle: shapes.Particle) -> tuple[str, ...]:
@@ -91,6 +109,37 @@ def _from_voxels(table: ParticleTable, folder: Path) -> shapes.Particle:
         materials=_required(
             materials, "materials", 'the material of each label, such as {1 = "gold"}'
         ),
+    )
+
+
+def _from_parts(table: ParticleTable, folder: Path) -> shapes.Particle:
+    assert table.parts is not None
+    pieces = []
+    for number, part in enumerate(table.parts):
+        place = ("parts", number)
+        try:
+            pieces.append(_piece(part, part.material or table.material, folder))
+        except Mistake as mistake:
+            raise Mistake(("particle", *place, *mistake.key[1:]), mistake.message) from None
+        except shapes.ShapeError as error:
+            key = error.where or ("shape" if part.shape else "mesh",)
+            raise Mistake(("particle", *place, *key), str(error)) from None
+    if table.parts[0].subtract:
+        raise Mistake(
+            ("particle", "parts", 0, "subtract"),
+            "the first part adds material; there is nothing to subtract from yet",
+        )
+    return shapes.assemble(pieces, [part.subtract for part in table.parts])
+
+
+def _piece(part: PartTable, material: str | None, folder: Path) -> shapes.Particle:
+    """One part in its place, as a particle of its own."""
+    if part.subtract:
+        material = "removed"
+    one = ParticleTable(shape=part.shape, mesh=part.mesh, material=material, **part.parameters)
+    piece = _from_catalogue(one, folder) if part.shape else _from_mesh(one, folder)
+    return shapes.placed(
+        piece, part.position, part.rotation.model_dump() if part.rotation else None
     )
 
 

@@ -171,16 +171,23 @@ def _model_at(key: Sequence[str | int]) -> type[BaseModel] | None:
     """Return the model of the table at a key path, None where there is no table."""
     model: type[BaseModel] = StudyTables
     for part in key:
+        if isinstance(part, int):
+            continue  # a table of a list of them
         if part == "wavelengths" and "wavelengths" in model.model_fields:
             model = WavelengthRange
             continue
         field = model.model_fields.get(str(part))
-        kinds = () if field is None else (field.annotation, *get_args(field.annotation))
+        kinds = () if field is None else _inside(field.annotation)
         tables = [k for k in kinds if isinstance(k, type) and issubclass(k, BaseModel)]
         if not tables:
             return None
         model = tables[0]
     return model
+
+
+def _inside(annotation: Any) -> tuple[Any, ...]:
+    """An annotation and all that its brackets hold."""
+    return (annotation, *(kind for a in get_args(annotation) for kind in _inside(a)))
 
 
 def _keys(model: type[BaseModel]) -> list[str]:

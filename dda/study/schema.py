@@ -22,11 +22,15 @@ from pydantic import (
 
 from dda.study.fields import Positive, Table, Vector
 from dda.study.near_table import NearFieldTable
+from dda.study.parts_table import PartTable
 
 #: Polarizations that have a name.
 NAMED_POLARIZATIONS = ("left", "right", "unpolarized")
 #: More wavelengths than this in one range are taken for a slip of the pen.
 MOST_WAVELENGTHS = 20_000
+
+# What may describe a particle; one of them does.
+_SOURCES = ("shape", "mesh", "voxels", "parts")
 
 
 def _voxel(value: Any) -> Any:
@@ -40,7 +44,7 @@ def _voxel(value: Any) -> Any:
 
 
 class ParticleTable(Table):
-    """``[particle]``: a shape of the catalogue, a mesh file or a voxel image.
+    """``[particle]``: a shape of the catalogue, a mesh file, a voxel image or several parts.
 
     With ``shape``, every key that is not declared here is a parameter of that shape and lands in
     ``parameters``.
@@ -51,6 +55,7 @@ class ParticleTable(Table):
     shape: str | None = None
     mesh: str | None = None
     voxels: str | None = None
+    parts: Annotated[tuple[PartTable, ...], Field(min_length=1)] | None = None
     material: str | None = None
     materials: dict[str, str] | None = None
     unit: str | None = None
@@ -65,19 +70,19 @@ class ParticleTable(Table):
 
     @property
     def source(self) -> str:
-        """Which of "shape", "mesh" and "voxels" describes the particle."""
-        return next(key for key in ("shape", "mesh", "voxels") if getattr(self, key) is not None)
+        """Which of "shape", "mesh", "voxels" and "parts" describes the particle."""
+        return next(key for key in _SOURCES if getattr(self, key) is not None)
 
     @model_validator(mode="after")
     def _one_source(self) -> ParticleTable:
-        given = [k for k in ("shape", "mesh", "voxels") if getattr(self, k) is not None]
+        given = [k for k in _SOURCES if getattr(self, k) is not None]
         if len(given) != 1:
             said = " and ".join(given) if given else "none of them"
             raise ValueError(
-                f'exactly one of shape = "cube", mesh = "FILE.stl" or voxels = "FILE.npy" '
-                f"describes a particle; the table has {said}"
+                f'exactly one of shape = "cube", mesh = "FILE.stl", voxels = "FILE.npy" or tables '
+                f"[[particle.parts]] describes a particle; the table has {said}"
             )
-        belongs = {"mesh": ("unit", "scale"), "voxels": ("voxel", "materials")}
+        belongs = {"mesh": ("unit", "scale"), "voxels": ("voxel", "materials"), "parts": ()}
         for source, keys in belongs.items():
             for key in keys:
                 if given[0] not in (source, "shape") and getattr(self, key) is not None:
@@ -85,7 +90,7 @@ class ParticleTable(Table):
         if given[0] != "shape" and self.__pydantic_extra__:
             raise ValueError(
                 f"{', '.join(self.__pydantic_extra__)}: a particle given by {given[0]} takes "
-                f"only the keys material, {', '.join(belongs[given[0]])}"
+                f"only the keys {', '.join((given[0], 'material', *belongs[given[0]]))}"
             )
         return self
 
