@@ -6,13 +6,13 @@ import pytest
 from dda.lattice.settling import Settling
 
 
-def run(sequence, allowed, most=400, after_step=None):
+def run(sequence, allowed, most=400, after_step=None, residual=lambda n: 0.1):
     """Steps until the watch stops a made-up iteration whose quantities are ``sequence(step)``."""
     watch = Settling(
         lambda x: np.array([x[0].real]), lambda values: np.array([allowed]), after_step
     )
     for step in range(1, most + 1):
-        if watch(step, np.array([sequence(step)], complex), 1.0):
+        if watch(step, np.array([sequence(step)], complex), residual(step)):
             break
     return step, watch
 
@@ -20,7 +20,7 @@ def run(sequence, allowed, most=400, after_step=None):
 @pytest.mark.parametrize("rate", [0.8, 0.9, 0.97])
 def test_geometric_convergence_stops_within_the_allowed_error(rate):
     """What is left of rate^n after a third of the steps is the error times less than one."""
-    step, watch = run(lambda n: 1 + rate**n, 1e-3)
+    step, watch = run(lambda n: 1 + rate**n, 1e-3, residual=lambda n: rate**n)
     assert step < 400
     error = abs(watch.values[-1][0] - 1)
     assert error <= watch.spread[0] <= 1e-3
@@ -77,3 +77,12 @@ def test_whoever_watches_can_stop():
     step, _ = run(lambda n: np.log(n), 1e-9, after_step=after_step)
     assert step == 7
     assert seen == [(n, 1.0) for n in range(1, 8)]
+
+
+def test_a_large_residual_widens_the_estimate():
+    """The same quantities with a residual of one: six times the spread, so it goes on longer."""
+    sequence = [1 + 0.9**n for n in range(401)]
+    quick, _ = run(lambda n: sequence[n], 1e-3, residual=lambda n: 1e-3)
+    slow, watch = run(lambda n: sequence[n], 1e-3, residual=lambda n: 1.0)
+    assert slow > quick
+    assert watch.spread[0] > 5 * np.ptp([v[0] for v in watch.values[-5:]])
