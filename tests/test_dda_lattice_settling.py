@@ -76,7 +76,7 @@ def test_whoever_watches_can_stop():
 
     step, _ = run(lambda n: np.log(n), 1e-9, after_step=after_step)
     assert step == 7
-    assert seen == [(n, 1.0) for n in range(1, 8)]
+    assert seen == [(n, 0.1) for n in range(1, 8)]
 
 
 def test_a_large_residual_widens_the_estimate():
