@@ -32,7 +32,7 @@ PARTICLES = {
 @cache
 def case(name):
     """System, sectors, two random columns of every sector, and their exact dipoles."""
-    system = dda.system(shapes.voxelize(PARTICLES[name](), cells=6), 560.0, 1.33)
+    system = dda.system(shapes.voxelize(PARTICLES[name](), cells=5), 560.0, 1.33)
     sectors = find_sectors(system)
     rng = np.random.default_rng(0)
     columns, exact = [], []
