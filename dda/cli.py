@@ -134,6 +134,8 @@ def list_shapes(options: argparse.Namespace) -> int:
     """``dda shapes``: list the catalogue, or draw one of its shapes."""
     from dda.report.catalogue import catalogue_text, draw_shape, shape_text
 
+    if options.sheet:
+        return _sheet(options)
     if options.name is None:
         print(catalogue_text())
         return OK
@@ -141,6 +143,20 @@ def list_shapes(options: argparse.Namespace) -> int:
     path = options.out or Path(f"{options.name}.png")
     draw_shape(options.name, path)
     print(f"\nwritten to {path}")
+    return OK
+
+
+def _sheet(options: argparse.Namespace) -> int:
+    """Draw the whole catalogue."""
+    from dda.report.catalogue_sheet import draw_sheet
+    from dda.report.progress import working
+
+    if options.name is not None:
+        raise InputError("--sheet draws all shapes; leave out the name or --sheet")
+    path = options.out or Path("shapes.png")
+    with working("drawing"):
+        draw_sheet(path)
+    print(f"written to {path}")
     return OK
 
 
@@ -275,6 +291,7 @@ def _parser() -> argparse.ArgumentParser:
     sub = add("shapes", list_shapes, "list the shapes; with a name, describe and draw one")
     sub.add_argument("name", nargs="?", metavar="NAME")
     sub.add_argument("--out", type=Path, metavar="PNG", help="default: named after the shape")
+    sub.add_argument("--sheet", action="store_true", help="draw the whole catalogue, in shapes.png")
     return parser
 
 

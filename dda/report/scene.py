@@ -74,7 +74,7 @@ def draw_particle(
     colours = material_colours(particle.materials)
     view = view_of(cells)
     with drawing() as pyvista:
-        surface = _render(pyvista, view, lambda p: _add_surface(p, particle, colours, cut))
+        surface = surface_picture(pyvista, particle, colours, view, cut)
         blocks = _render(pyvista, view, lambda p: _add_cells(p, cells, colours, cut))
     lay_out(path, (surface, blocks), view, particle, cells, colours, title, cut)
 
@@ -104,6 +104,13 @@ def show_particle(particle: shapes.Particle, cells: shapes.Cells, title: str) ->
         plotter.add_text(f"{cells.n} cells of {cells.spacing:.3g} nm", font_size=10)
         plotter.link_views()
         plotter.show()
+
+
+def surface_picture(
+    pyvista: Any, particle: shapes.Particle, colours: dict[str, str], view: View, cut: bool
+) -> NDArray[np.uint8]:
+    """Return a square picture of a particle's surface, (pixels, pixels, 3)."""
+    return _render(pyvista, view, lambda p: _add_surface(p, particle, colours, cut))
 
 
 def view_of(cells: shapes.Cells) -> View:
