@@ -254,6 +254,25 @@ def test_given_cells_carry_an_error_bar(study):
         assert float(row["c_ext_error_nm2"]) < 0.5 * float(row["c_ext_nm2"])
 
 
+def test_a_tumbling_sphere_is_a_sphere(study, capsys):
+    assert main(["run", study(), "--out", "fixed"]) == 0
+    light = ("[light]", '[light]\norientation = "average"')
+    no_direction = [
+        ("direction = [0, 0, 1]\n", ""),
+        ("polarization = [1, 0, 0]\n", ""),
+    ]
+    text = Path(study()).read_text()
+    asked = [light, *(pair for pair in no_direction if pair[0] in text)]
+    assert main(["run", study(*asked, name="average.toml"), "--out", "average"]) == 0
+    for one, other in zip(_rows("fixed"), _rows("average"), strict=True):
+        # The cells of a sphere are a cube's in symmetry: its dipole answers alike in all
+        # orientations; what is left is the two ways' own tolerance of 1e-3.
+        assert float(other["c_ext_nm2"]) == pytest.approx(float(one["c_ext_nm2"]), rel=5e-3)
+        assert float(other["c_ext_orientation_error_nm2"]) > 0
+        assert float(one["c_ext_orientation_error_nm2"]) == 0
+    assert "averaged over all orientations" in capsys.readouterr().out
+
+
 def test_interrupting_keeps_what_is_finished(study):
     many = ("[480, 520, 560]", "{from = 450, to = 650, step = 0.05}")
     finer = ("cells = 8", "cells = 20")

@@ -97,6 +97,8 @@ def _cells(prepared: Prepared) -> str:
 
 def _polarization(prepared: Prepared) -> str:
     point = prepared.points[0]
+    if point.averaged:
+        return "averaged over all orientations of the particle"
     if isinstance(point.polarization, str):
         kind = point.polarization
     else:

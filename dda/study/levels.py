@@ -10,13 +10,15 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from dda.accuracy import Level, Refined, refine_at, refine_to
-from dda.lattice import system
+from dda.lattice import System, system
 from dda.lattice.workers import Workers
 from dda.light import PlaneWave, plane_wave, transverse
 from dda.response import Settled, settle
+from dda.response.averages import OrientationAverage
+from dda.response.orientation import tumbling
 from dda.study.estimate import expected_steps
 from dda.study.geometry import Geometries, Geometry, usable_memory
-from dda.study.media import media_of
+from dda.study.media import Media, media_of
 from dda.study.points import Point
 
 #: Called with a message and the part of the current point that is done, 0 to 1.
@@ -76,13 +78,18 @@ def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf
         What refinement to a target may take.
     """
     geometry = memory.geometries.of(point)
-    last: list[list[Settled]] = []
+    finest: list[tuple[float, float]] = []
 
     def solve(across: float) -> Level:
         started = time.perf_counter()
         level = memory.geometries.level(geometry, across)
+        if point.averaged:
+            average = _average(point, level, watch)
+            finest.append((average.area, average.c_abs + average.c_sca - average.c_ext))
+            return _averaged_level(level, average, time.perf_counter() - started)
         solved = solutions(point, level, memory, watch)
-        last[:] = [solved]
+        balance = float(np.mean([each.sections.balance for each in solved]))
+        finest.append((solved[0].sections.area, balance))
         return _level(level, solved, time.perf_counter() - started)
 
     target = point.accuracy.target
@@ -99,9 +106,8 @@ def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf
             fits=lambda across: geometry.memory(geometry.size / across) <= usable,
             seconds=seconds,
         )
-    sections = [each.sections for each in last[0]]
-    balance = float(np.mean([each.balance for each in sections]))
-    return Answer(refined, sections[0].area, balance, refined.levels[-1].cells)
+    area, balance = finest[-1]
+    return Answer(refined, area, balance, refined.levels[-1].cells)
 
 
 def lights_of(point: Point) -> tuple[PlaneWave, ...]:
@@ -119,19 +125,9 @@ def worst(statuses: Iterable[str]) -> str:
 
 def solutions(point: Point, geometry: Geometry, memory: Memory, watch: Watch) -> list[Settled]:
     """Solve a point on one lattice, for every plane wave of `lights_of`."""
-    label = f"{point.wavelength:g} nm, {geometry.size / geometry.spacing:.0f} cells across"
-    watch(f"{label}: cells", 0.0)
+    label = _label(point, geometry)
+    matrix, media = _matrix(point, geometry, watch)
     cells = geometry.cells
-    media = media_of(point, cells.materials)
-    watch(f"{label}: interactions", 0.0)
-    matrix = system(
-        cells,
-        wavelength=point.wavelength,
-        host=media.host,
-        materials=dict(media.particle),
-        precision=point.solver.precision,
-        workers=Workers(point.solver.threads),
-    )
     lights = lights_of(point)
     indices = media.relative_index(point.wavelength).values()
     tolerance = tolerance_of(point)
@@ -153,6 +149,50 @@ def solutions(point: Point, geometry: Geometry, memory: Memory, watch: Watch) ->
             memory.solutions[key] = [settled.polarization.p, *previous[: _KEPT - 1]]
         out.append(settled)
     return out
+
+
+def _label(point: Point, geometry: Geometry) -> str:
+    return f"{point.wavelength:g} nm, {geometry.size / geometry.spacing:.0f} cells across"
+
+
+def _matrix(point: Point, geometry: Geometry, watch: Watch) -> tuple[System, Media]:
+    watch(f"{_label(point, geometry)}: cells", 0.0)
+    cells = geometry.cells
+    media = media_of(point, cells.materials)
+    watch(f"{_label(point, geometry)}: interactions", 0.0)
+    matrix = system(
+        cells,
+        wavelength=point.wavelength,
+        host=media.host,
+        materials=dict(media.particle),
+        precision=point.solver.precision,
+        workers=Workers(point.solver.threads),
+    )
+    return matrix, media
+
+
+def _average(point: Point, geometry: Geometry, watch: Watch) -> OrientationAverage:
+    matrix, _ = _matrix(point, geometry, watch)
+    label = _label(point, geometry)
+
+    def columns(done: int, of: int) -> None:
+        watch(f"{label}: multipole {done} of {of}", done / max(of, 1))
+
+    return tumbling(matrix, tolerance=tolerance_of(point), monitor=columns).average
+
+
+def _averaged_level(geometry: Geometry, average: OrientationAverage, seconds: float) -> Level:
+    return Level(
+        spacing=geometry.spacing,
+        sections=(average.c_ext, average.c_abs, average.c_sca),
+        solver_error=(average.c_ext_error, average.c_abs_error, average.c_sca_error),
+        cells=geometry.cells.n,
+        iterations=round(average.products),
+        products=round(average.products),
+        residual=math.nan,
+        status=average.status,
+        seconds=seconds,
+    )
 
 
 def tolerance_of(point: Point) -> float:

@@ -28,6 +28,8 @@ class Point:
     direction : (3,) tuple of float
         Where the light goes, of any length.
     polarization : (3,) tuple of complex, or "left", "right", "unpolarized"
+    averaged : bool
+        Whether the particle tumbles; direction and polarization then mean nothing.
     folder : Path
         Where relative paths start.
     """
@@ -41,6 +43,7 @@ class Point:
     wavelength: float
     direction: tuple[float, float, float]
     polarization: Polarization
+    averaged: bool
     folder: Path
 
     @property
@@ -68,6 +71,7 @@ def points_of(study: Study) -> tuple[Point, ...]:
             wavelength=wavelength,
             direction=tables.light.direction,
             polarization=tables.light.polarization,
+            averaged=tables.light.orientation == "average",
             folder=study.folder,
         )
         for wavelength in sorted(tables.light.values())

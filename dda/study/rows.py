@@ -31,11 +31,14 @@ class Row:
         says ("stalled", "limit"); "coarse" when a target was asked for and not reached; "failed"
         when there is no answer.
     c_ext_error_nm2, c_abs_error_nm2, c_sca_error_nm2 : float
-        Estimated error of the cross sections: the two parts that follow, added.
+        Estimated error of the cross sections: the parts that follow, added.
     c_ext_spacing_error_nm2, c_abs_spacing_error_nm2, c_sca_spacing_error_nm2 : float
         The part that comes from the cells.
     c_ext_solver_error_nm2, c_abs_solver_error_nm2, c_sca_solver_error_nm2 : float
         The part that comes from the solver.
+    c_ext_orientation_error_nm2, c_abs_orientation_error_nm2, c_sca_orientation_error_nm2 : float
+        The part that comes from averaging over orientations, the solver's of its columns
+        included; zero for a fixed orientation.
     levels : int
         Spacings that were solved.
     balance : float
@@ -67,6 +70,9 @@ class Row:
     c_ext_solver_error_nm2: float = math.nan
     c_abs_solver_error_nm2: float = math.nan
     c_sca_solver_error_nm2: float = math.nan
+    c_ext_orientation_error_nm2: float = math.nan
+    c_abs_orientation_error_nm2: float = math.nan
+    c_sca_orientation_error_nm2: float = math.nan
     levels: int = 0
     balance: float = math.nan
     seconds: float = math.nan

@@ -69,7 +69,7 @@ def _row(point: Point, memory: Memory, watch: Watch, seconds: float) -> Row:
     status, message = _verdict(point, found.refined)
     return Row(
         wavelength_nm=point.wavelength,
-        **_numbers(found),
+        **_numbers(found, point.averaged),
         cells=found.cells,
         spacing_nm=found.refined.levels[-1].spacing,
         iterations=sum(level.iterations for level in found.refined.levels),
@@ -82,7 +82,7 @@ def _row(point: Point, memory: Memory, watch: Watch, seconds: float) -> Row:
     )
 
 
-def _numbers(found: Answer) -> dict[str, float]:
+def _numbers(found: Answer, averaged: bool) -> dict[str, float]:
     """Columns of the cross sections, their efficiencies and errors."""
     refined = found.refined
     out = {}
@@ -91,7 +91,8 @@ def _numbers(found: Answer) -> dict[str, float]:
         out[f"q_{name}"] = refined.sections[i] / found.area
         out[f"c_{name}_error_nm2"] = refined.error[i]
         out[f"c_{name}_spacing_error_nm2"] = refined.spacing_error[i]
-        out[f"c_{name}_solver_error_nm2"] = refined.solver_error[i]
+        out[f"c_{name}_solver_error_nm2"] = 0.0 if averaged else refined.solver_error[i]
+        out[f"c_{name}_orientation_error_nm2"] = refined.solver_error[i] if averaged else 0.0
     return out
 
 

@@ -195,14 +195,24 @@ Polarization = Annotated[str | tuple[complex, complex, complex], BeforeValidator
 
 
 class LightTable(Table):
-    """``[light]``: the incident plane waves."""
+    """``[light]``: the incident plane waves.
+
+    ``orientation = "average"`` is for particles that tumble: unpolarized light from everywhere.
+    """
 
     wavelengths: Wavelengths
+    orientation: Literal["fixed", "average"] = "fixed"
     direction: Annotated[Vector, AfterValidator(_nonzero)] = (0.0, 0.0, 1.0)
     polarization: Polarization = (1 + 0j, 0j, 0j)
 
     @model_validator(mode="after")
     def _transverse(self) -> LightTable:
+        given = self.model_fields_set & {"direction", "polarization"}
+        if self.orientation == "average" and given:
+            raise ValueError(
+                f'orientation = "average" leaves no meaning to {" and ".join(sorted(given))}: '
+                "leave it out, or leave out orientation"
+            )
         if isinstance(self.polarization, str):
             return self
         size = math.sqrt(sum(abs(c) ** 2 for c in self.polarization))
