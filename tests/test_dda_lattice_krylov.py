@@ -5,7 +5,7 @@ import pytest
 from scipy.sparse.linalg import aslinearoperator
 
 from dda.lattice import krylov
-from dda.lattice.krylov import cocg
+from dda.lattice.krylov import Subspace, cocg
 
 
 def complex_symmetric(n, seed, shift=3.0):
@@ -145,3 +145,24 @@ def test_every_method_stops_when_told_to(method):
     )
     assert result.status == "stopped"
     assert 0 < np.linalg.norm(a @ result.x - b) < np.linalg.norm(b)
+
+
+def test_subspace_that_nearly_holds_the_solution():
+    """The residual stays orthogonal to it, so that b.x is good to second order; fewer steps."""
+    a, b = complex_symmetric(80, 7, shift=1.5)
+    exact = np.linalg.solve(a, b)
+    near = [exact + 0.05 * v * abs(exact).max() for v in complex_symmetric(80, 8)[0][:3]]
+    operator = aslinearoperator(a)
+    known = Subspace.of(operator, [*near, near[0], 0 * b])  # doubles and nothing are dropped
+    assert len(known.vectors) == 3
+    assert known.images == pytest.approx(known.vectors @ a, rel=1e-12, abs=1e-13)
+    plain = cocg(operator, b, tolerance=1e-9)
+    helped = cocg(operator, b, subspace=known, tolerance=1e-9)
+    assert helped.status == "converged"
+    assert helped.iterations < plain.iterations
+    assert helped.x == pytest.approx(exact, rel=1e-6, abs=1e-7)
+    early = cocg(operator, b, subspace=known, tolerance=1e-2)
+    rest = b - a @ early.x
+    assert np.all(abs(known.vectors @ rest) < 1e-10)
+    assert abs(b @ early.x - b @ exact) < 0.1 * early.residual * abs(b @ exact)
+    assert Subspace.of(operator, [0 * b]) is None

@@ -131,7 +131,7 @@ _STEP = 0.6
 _LEAST = 0.8
 
 # Orders that are tried beside two; fewer levels than `_LEAST_TO_TELL` fit nearly any of them.
-_OTHER_ORDERS = (1.0, 1.2, 1.4, 1.6, 2.4, 2.7, 3.0, 3.5, 4.0)
+_OTHER_ORDERS = (0.5, 0.75, 1.0, 1.2, 1.4, 1.6, 2.4, 2.7, 3.0, 3.5, 4.0)
 _LEAST_TO_TELL = 4
 _CLEARLY = 0.5
 

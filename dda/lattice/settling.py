@@ -16,6 +16,12 @@ _WINDOW = 0.3
 _LEAST_LOOKS = 6
 _UNSETTLED = 5.0
 
+# After a start from neighbouring solutions the values hardly move at first, right or wrong: they
+# are watched for longer, and the estimate is never below this part of what is allowed.
+_WINDOW_KNOWN = 0.5
+_LEAST_LOOKS_KNOWN = 12
+_LEAST_PART = 1 / 3
+
 
 class Settling:
     """Watches quantities of an iterate; called after every step of a Krylov method.
@@ -48,6 +54,7 @@ class Settling:
         self._allowed = allowed
         self._after_step = after_step
         self._residual = 0.0
+        self._window, self._least_looks, self._least_part = _WINDOW, _LEAST_LOOKS, 0.0
         self.steps: list[int] = []
         self.values: list[np.ndarray] = []
 
@@ -60,6 +67,11 @@ class Settling:
             stop = stop or self.settled
         return stop
 
+    def start_is_known(self) -> None:
+        """Tell that the iteration starts from neighbouring solutions."""
+        self._window, self._least_looks = _WINDOW_KNOWN, _LEAST_LOOKS_KNOWN
+        self._least_part = _LEAST_PART
+
     def look(self, step: int, x: np.ndarray) -> None:
         """Record the quantities of an iterate."""
         self.steps.append(step)
@@ -68,19 +80,24 @@ class Settling:
     @property
     def settled(self) -> bool:
         """Whether every quantity has stopped moving by more than is allowed."""
-        if len(self.values) < _LEAST_LOOKS:
+        if len(self.values) < self._least_looks:
             return False
         return bool(np.all(self.spread <= self._allowed(self.values[-1])))
 
     @property
     def spread(self) -> np.ndarray:
         """Error estimate of each quantity, shape (q,); infinite before there is one."""
-        if len(self.values) < _LEAST_LOOKS:
+        if len(self.values) < self._least_looks:
             return np.full(len(self.values[-1]) if self.values else 1, np.inf)
-        first = self.steps[-1] * (1 - _WINDOW)
-        looks = max(_LEAST_LOOKS - 1, sum(s >= first for s in self.steps))
+        first = self.steps[-1] * (1 - self._window)
+        looks = max(self._least_looks - 1, sum(s >= first for s in self.steps))
         widened = 1 + _UNSETTLED * min(self._residual, 1.0)
-        return widened * np.ptp(np.array(self.values[-looks:]), axis=0)
+        spread = widened * np.ptp(np.array(self.values[-looks:]), axis=0)
+        if self._least_part:
+            allowed = np.asarray(self._allowed(self.values[-1]), float)
+            least = self._least_part * np.where(np.isfinite(allowed), allowed, allowed.min())
+            spread = np.maximum(spread, least)
+        return spread
 
 
 class Goal(Protocol):

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from .krylov import METHODS, KrylovResult, gmres
+from .krylov import METHODS, KrylovResult, Subspace, cocg, gmres
 from .linear_system import System
 from .sectors import Sector, sectors
 from .settling import Goal
@@ -77,8 +77,8 @@ def solve(
     start : ndarray, shape (n, 3), optional
         First guess of the dipoles.
     previous : sequence of ndarray, shape (n, 3)
-        Dipoles of similar systems on the same cells, at neighbouring wavelengths: the first guess
-        is their combination with the smallest residual. Costs a product each.
+        Dipoles of similar systems on the same cells, at neighbouring wavelengths: the solution is
+        sought in their span together with the Krylov space. Costs a product each.
     monitor : callable, optional
         As in `dda.lattice.krylov.cocg`; the vector it is given belongs to one mirror sector.
     mirrors : three bool, optional
@@ -115,11 +115,16 @@ def solve(
             if share < 1e-7 * (1 if system.dtype == np.complex128 else 100):
                 continue  # the light has no part of this parity
             guess = sector.fold(start) if start is not None and len(parts) == 1 else None
-            if previous and guess is None:
-                guess, spent = best_combination(sector, b, [sector.fold(v) for v in previous])
-                extra += spent
+            known = None
+            if len(previous) and guess is None:
+                known = Subspace.of(sector, [sector.fold(v) for v in previous])
+                extra += len(known.vectors) if known else 0
             watch = goal.watch(sector, field_, monitor) if goal else None
-            result = _solve_sector(method, sector, b, tolerance, limit, guess, watch or monitor)
+            if watch and known:
+                watch.start_is_known()
+            result = _solve_sector(
+                method, sector, b, tolerance, limit, guess, known, watch or monitor
+            )
             if goal and watch:
                 watch.look(result.iterations, result.x)
                 goal.add(watch)
@@ -137,39 +142,18 @@ def solve(
     )
 
 
-def best_combination(
-    sector: Sector, b: np.ndarray, vectors: Sequence[np.ndarray]
-) -> tuple[np.ndarray | None, int]:
-    """Combine vectors so that the preconditioned residual is least.
-
-    Parameters
-    ----------
-    sector : Sector
-    b : ndarray, shape (3n,)
-    vectors : sequence of ndarray, shape (3n,)
-
-    Returns
-    -------
-    combination : ndarray or None
-        None when all vectors vanish in the sector.
-    products : int
-        Products that it took.
-    """
-    scale = max((float(np.linalg.norm(v)) for v in vectors), default=0.0)
-    used = [v for v in vectors if np.linalg.norm(v) > 1e-9 * scale]
-    if not used:
-        return None, 0
-    images = np.stack([sector.precondition(sector.matvec(v)) for v in used], axis=1)
-    weights = np.linalg.lstsq(images, sector.precondition(b), rcond=1e-10)[0]
-    out = np.zeros_like(used[0])
-    for weight, v in zip(weights, used, strict=True):
-        out += sector.dtype.type(weight) * v
-    return out, len(used)
-
-
-def _solve_sector(method, sector: Sector, b, tolerance, limit, start, monitor) -> KrylovResult:
+def _solve_sector(
+    method, sector: Sector, b, tolerance, limit, start, subspace, monitor
+) -> KrylovResult:
     options = {"tolerance": tolerance, "limit": limit, "monitor": monitor}
-    first = METHODS[method](sector, b, sector.precondition, start=start, **options)
+    if subspace is None:
+        first = METHODS[method](sector, b, sector.precondition, start=start, **options)
+    elif method == "cocg":
+        first = cocg(sector, b, sector.precondition, subspace=subspace, **options)
+    else:  # the others take no more than a first guess from it
+        start = np.zeros_like(b)
+        subspace.start(start, b.copy())
+        first = METHODS[method](sector, b, sector.precondition, start=start, **options)
     if first.status != "stalled":
         return first
     options["limit"] = max(1, limit - first.iterations)
