@@ -46,7 +46,7 @@ def recycling(cells: int) -> list[Figure]:
         Figure(f"{name}until settled to 1e-3, products a point", alone / n),
         Figure(f"{name}with {KNOWN} solutions, one way, products a point", ahead / n),
         Figure(f"{name}with {KNOWN} solutions, coarse then fine", between / n),
-        Figure(f"{name}without / with, one way", alone / ahead, "x", least=2.5),
+        Figure(f"{name}without / with, one way", alone / ahead, "x"),
         Figure(f"{name}without / with, coarse then fine", alone / between, "x", least=2.5),
         Figure(f"{name}residual of 1e-4 / with, coarse then fine", residual / between, "x"),
         Figure(f"{name}largest change of C_ext, C_abs", 100 * change, "%", most=1.0),

@@ -6,10 +6,13 @@ from collections.abc import Sequence
 
 import numpy as np
 
+import dda
 import shapes
-from validation.compare import COLUMNS, Run, absorbs, percent, permittivity, row, run
+from dda.accuracy import Level, combined
+from validation.compare import COLUMNS, absorbs, percent, permittivity, row, run
+from validation.levels import settled
 from validation.mie import sphere
-from validation.results import Table, group, number, verdict
+from validation.results import Table, group, verdict
 
 SOURCE = "Mie series, Bohren & Huffman (1983)"
 
@@ -66,14 +69,14 @@ may count on.
     return Table("Spheres over size and wavelength", text, COLUMNS, rows)
 
 
-# Material, diameter, wavelength, and by cells across the largest error allowed, in %; 0 stands for
-# the straight line in d^2.
+# Material, diameter, wavelength, largest error allowed in % by cells across, and of C_ext and C_abs
+# after extrapolation.
 REFINED = (
-    ("gold", 40, 530, {16: 3, 20: 2, 24: 1.5, 29: 1, 0: 0.3}),
-    ("gold", 80, 600, {16: 3, 20: 2, 24: 1.5, 29: 1, 0: 0.3}),
-    ("gold", 80, 785, {16: 4, 20: 3, 24: 2, 29: 2, 33: 1.5, 0: 1}),
-    ("silver", 40, 400, {16: 3, 20: 2, 24: 2, 29: 2, 0: 1}),
-    ("2.5", 160, 500, {16: 3, 20: 2, 24: 1.5, 29: 1, 0: 0.3}),
+    ("gold", 40, 530, {16: 3, 20: 2, 24: 1.5, 28: 1, 32: 1}, (0.1, 0.1)),
+    ("gold", 80, 600, {16: 3, 20: 2, 24: 1.5, 28: 1, 32: 1}, (0.3, 1.0)),
+    ("gold", 80, 785, {16: 4, 20: 3, 24: 2, 28: 2, 32: 1.5}, (0.3, 1.0)),
+    ("silver", 40, 400, {16: 3, 20: 2, 24: 2, 28: 2, 32: 2}, (0.3, 1.0)),
+    ("2.5", 160, 500, {16: 3, 20: 2, 24: 1.5, 28: 1, 32: 1}, (0.3,)),
 )
 # What a first trial of the method gave, C_ext / C_abs in %.
 TRIAL = {
@@ -108,19 +111,19 @@ TRIAL = {
 def refinement(quick: bool) -> Table:
     """Spheres with finer and finer cells, and the staircase beside them."""
     text = """
-The same sphere with 16 to 33 cells across, host 1.33. The surface is the default (window), the
-fraction of each cell alone (cell), or none (whole, the plain staircase). The latter two jump about
-from one spacing to the next; they stand here for comparison, without a verdict. "d → 0" is the
-least-squares straight line in d² through the window's rows. The trial is what a first version of
-the method gave, for orientation. Products are those of all mirror sectors together, of which each
-costs an eighth of a product with the whole.
+The same sphere with 16 to 32 cells across, host 1.33, each solved until its cross sections settle
+to 1e-4. The surface is the default (window), the fraction of each cell alone (cell), or none
+(whole, the plain staircase). The latter two jump about from one spacing to the next; they stand
+here for comparison, without a verdict. "d → 0" is the program's extrapolation of the window's rows,
+with its error bar. The trial is what a first version of the method gave, for orientation. Products
+are those of all mirror sectors together, of which each costs an eighth of a product with the whole.
 """
     columns = (
         "sphere", "source", "surface", "cells across", "error C_ext / C_abs, %", "trial, %",
         "allowed, %", "products", "time, s", "verdict",
     )  # fmt: skip
     rows = []
-    for material, diameter, wavelength, allowed in REFINED[:: 4 if quick else 1]:
+    for material, diameter, wavelength, allowed, at_zero in REFINED[:: 4 if quick else 1]:
         head = [f"{named(material)}, {diameter} nm, {wavelength} nm", SOURCE]
         reference = mie(material, diameter, wavelength, 1.33)
         trial = TRIAL[material, diameter, wavelength]
@@ -128,36 +131,44 @@ costs an eighth of a product with the whole.
         beside = [("whole", 32), ("cell", 16), ("cell", 24), ("cell", 32)]
         for surface, across in beside[: 0 if quick else None]:
             solved = run(particle, wavelength, across, surface=surface, limit=400)
+            errors = errors_of(solved.response, reference)
             known = trial.get(f"{surface} {across}", "-")
-            rows.append([*head, *_refined(solved, surface, reference, known, "-"), "-"])
-        values = {}
-        for across in sorted(set(allowed) - {0})[: 2 if quick else None]:
-            solved = run(particle, wavelength, across)
-            values[across] = errors_of(solved, reference)
-            limit, known = allowed[across], trial.get(across, "-")
-            rows.append([*head, *_refined(solved, "window", reference, known, f"{limit:g}")])
-            rows[-1].append(_within(values[across], limit))
-        at_zero = extrapolated(list(values), np.array(list(values.values())))
-        cells = ["window", "d → 0", " / ".join(percent(e) for e in at_zero), trial.get(0, "-")]
-        rows.append([*head, *cells, f"{allowed[0]:g}", "-", "-", _within(at_zero, allowed[0])])
+            cost = [solved.products, f"{solved.seconds:.1f}"]
+            rows.append([*head, surface, f"{across}", _two(errors), known, "-", *cost, "-"])
+        rungs: list[Level] = []
+        for across in list(allowed)[: 3 if quick else None]:
+            done, rung = settled(particle, wavelength, across, tolerance=1e-4, limit=2500)
+            rungs.append(rung)
+            errors = errors_of(done.sections, reference)
+            products = f"{rung.products}" + f" ({rung.status})" * (rung.status != "converged")
+            rows.append(
+                [*head, "window", f"{across}", _two(errors), trial.get(across, "-"),
+                 f"{allowed[across]:g}", products, f"{rung.seconds:.1f}",
+                 _within(errors, [allowed[across]] * 2)]
+            )  # fmt: skip
+        found = combined(rungs, float(diameter), "ladder")
+        errors = [v / e - 1 for v, e in zip(found.sections, reference, strict=False)]
+        bars = [v / e for v, e in zip(found.error, reference, strict=False)]
+        shown = _two(errors) + " ± " + " / ".join(f"{100 * v:.2g}" for v in bars)
+        limits = " / ".join(f"{v:g}" for v in at_zero)
+        rows.append(
+            [*head, "window", "d → 0", shown, trial.get(0, "-"), limits, "-", "-",
+             _within(errors, at_zero)]
+        )  # fmt: skip
     return Table("Spheres with finer cells", text, columns, rows)
 
 
-def _within(errors: Sequence[float], allowed: float) -> str:
-    return verdict(100 * max(abs(e) for e in errors) <= allowed)
+def _within(errors: Sequence[float], allowed: Sequence[float]) -> str:
+    return verdict(all(100 * abs(e) <= a for e, a in zip(errors, allowed, strict=False)))
 
 
-def _refined(
-    solved: Run, surface: str, reference: tuple[float, ...], trial: str, allowed: str
-) -> list[str]:
-    errors = " / ".join(percent(e) for e in errors_of(solved, reference))
-    cost = [solved.products, f"{solved.seconds:.1f}"]
-    return [surface, number(solved.across), errors, trial, allowed, *cost]
+def _two(errors: Sequence[float]) -> str:
+    return " / ".join(percent(e) for e in errors)
 
 
-def errors_of(solved: Run, reference: tuple[float, ...]) -> list[float]:
+def errors_of(sections: dda.CrossSections, reference: tuple[float, ...]) -> list[float]:
     """Relative errors of C_ext and, if the reference has it, C_abs."""
-    ours = (solved.response.c_ext, solved.response.c_abs)
+    ours = (sections.c_ext, sections.c_abs)
     return [a / b - 1 for a, b in zip(ours, reference, strict=False)]
 
 
