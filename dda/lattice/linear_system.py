@@ -10,6 +10,7 @@ from shapes import Cells
 
 from .. import materials as _materials
 from ..errors import InputError
+from .anisotropy import anisotropic_cells, kept_mirrors
 from .convolution import Convolution
 from .green import RadialTable, radial_table
 from .kernel import kernel, padded_shape
@@ -40,12 +41,15 @@ class System:
     n_host : float
         Refractive index of the host.
     permittivity : ndarray of complex, shape (m,)
-        Of the cells' materials, relative to the host.
+        Of the cells' materials, relative to the host; the mean of the principal values where a
+        material is anisotropic.
     index : ndarray of int32, shape (n, 3)
         Cells of the system (those of `cells` that hold material under the surface rule).
     alpha_inverse, alpha : CellTensor
         In nm^-3 and nm^3.
     convolution : Convolution
+    tensors : ndarray of complex, shape (m, 3, 3), or None
+        Permittivities relative to the host if a material is anisotropic.
     """
 
     cells: Cells
@@ -57,6 +61,14 @@ class System:
     alpha: CellTensor
     convolution: Convolution = field(repr=False)
     table: RadialTable = field(repr=False)
+    tensors: np.ndarray | None = field(default=None, repr=False)
+
+    @property
+    def mirrors(self) -> tuple[bool, bool, bool]:
+        """Mirror planes across x, y and z that the cells and their materials have."""
+        kept = (True, True, True) if self.tensors is None else kept_mirrors(self.tensors)
+        x, y, z = (bool(a and b) for a, b in zip(self.cells.mirrors, kept, strict=True))
+        return (x, y, z)
 
     @property
     def k(self) -> float:
@@ -124,7 +136,7 @@ def system(
     wavelength : float
         In vacuum, nm.
     host : material
-        Anything `dda.materials.find` takes, or a `Material`.
+        Anything `dda.materials.find` takes, or a `Material`; it is isotropic.
     materials : dict, optional
         From a name used in `cells.materials` to a `Material` or a specification of one.
     surface : {"window", "cell", "whole"}
@@ -165,19 +177,20 @@ def system(
     and pays it back elsewhere: its integral across the layer vanishes, so the answer changes by
     an amount that falls as d^2, like the other errors of the layer, while the solver needs a
     third of the steps. (This project's own.)
+
+    Of anisotropic materials the tensors are mixed, see `dda.lattice.anisotropy`; the mean of the
+    principal values decides whether one counts as a metal.
     """
     if surface not in SURFACES:
         raise InputError(f"surface {surface!r} is not known; use one of {', '.join(SURFACES)}")
     medium = _as_material(host, materials)
     _materials.require_transparent(medium, np.array([wavelength]))
     n_host = float(np.real(medium.index(np.array([wavelength]))[0]))
-    eps = np.array(
-        [
-            _as_material(name, materials).permittivity(np.array([wavelength]))[0]
-            for name in cells.materials
-        ],
-        complex,
-    )
+    found = [_as_material(name, materials) for name in cells.materials]
+    if any(hasattr(m, "tensor") for m in found):
+        eps = np.stack([_tensor(m, wavelength) for m in found])
+    else:
+        eps = np.array([m.permittivity(np.array([wavelength]))[0] for m in found], complex)
     return relative_system(
         cells,
         wavelength,
@@ -207,13 +220,12 @@ def relative_system(
     fft: str = "auto",
     workers: Workers | None = None,
 ) -> System:
-    """As `system`, from the permittivities (m,) relative to the host themselves."""
+    """As `system`, from the permittivities (m,) or (m, 3, 3) relative to the host themselves."""
     permittivity = np.asarray(permittivity, complex)
-    if np.any(permittivity == 1):
-        raise InputError(
-            "a material of the particle has exactly the host's permittivity, so it does nothing: "
-            "leave it out of the particle or change the host"
-        )
+    tensors = permittivity if permittivity.ndim == 3 else None
+    if tensors is not None:
+        permittivity = np.trace(tensors, axis1=1, axis2=2) / 3
+    _refuse_host(permittivity if tensors is None else tensors)
     k, d = 2 * np.pi * n_host / wavelength, cells.spacing
     if k * d >= np.pi / 2:
         raise InputError(
@@ -225,12 +237,16 @@ def relative_system(
     def inverse(eps):
         return inverse_polarizability(eps, polarizability, k, d, s_factor)
 
-    keep, scalar, where, tangential, normal_value = _mixed(
-        cells, permittivity, surface, layer_damping
-    )
+    keep, parts, rest, where = _shares(cells, permittivity, surface, layer_damping)
     kept = np.flatnonzero(keep)
-    full = uniaxial(inverse(tangential), inverse(normal_value), cells.normal[kept[where]])
-    alpha_inverse = CellTensor(inverse(scalar), where, full)
+    normal = cells.normal[kept[where]]
+    if tensors is None:
+        along = parts @ permittivity + rest
+        across = 1 / (parts[where] @ (1 / permittivity) + rest[where])
+        full = uniaxial(inverse(along[where]), inverse(across), normal)
+        alpha_inverse = CellTensor(inverse(along), where, full)
+    else:
+        alpha_inverse = anisotropic_cells(parts, rest, where, normal, tensors, inverse, d)
     index = np.ascontiguousarray(cells.index[kept])
     table = radial_table(
         polarizability if polarizability.startswith("fcd") else "point",
@@ -249,30 +265,41 @@ def relative_system(
         alpha_inverse.inverse().astype(convolution.dtype),
         convolution,
         table,
+        tensors,
     )
 
 
-def _mixed(cells: Cells, eps: np.ndarray, surface: str, layer_damping: float):
-    """Cells kept, isotropic permittivity, surface cells among them, their two permittivities."""
+def _refuse_host(eps: np.ndarray) -> None:
+    """Raise InputError if a permittivity (m,) or a principal one of (m, 3, 3) is the host's."""
+    if eps.ndim == 1 and np.any(eps == 1):
+        raise InputError(
+            "a material of the particle has exactly the host's permittivity, so it does nothing: "
+            "leave it out of the particle or change the host"
+        )
+    if eps.ndim == 3 and np.any(np.linalg.svd(eps - np.eye(3), compute_uv=False) < 1e-12):
+        raise InputError(
+            "a material of the particle has exactly the host's permittivity along one of its "
+            "axes; change either a little"
+        )
+
+
+def _shares(cells: Cells, eps: np.ndarray, surface: str, layer_damping: float):
+    """Cells kept, their fractions of the materials and of the host, those with a surface."""
     if surface == "whole":
         keep = cells.centre_material >= 0
-        scalar = eps[cells.centre_material[keep]]
-        nothing = np.empty(0, complex)
-        return keep, scalar, np.empty(0, np.int64), nothing, nothing
+        parts = np.eye(len(eps), dtype=complex)[cells.centre_material[keep]]
+        return keep, parts, np.zeros(len(parts)), np.empty(0, np.int64)
     filled = cells.window if surface == "window" else cells.fraction
     keep = filled.sum(axis=1) > _LEAST_FILL
     filled = filled[keep]
     host = np.clip(1 - filled.sum(axis=1), 0, 1)
+    mixed = (filled.max(axis=1) < 1 - 1e-9) & (cells.normal[keep] != 0).any(axis=1)
     parts, rest = (
         _damped(filled, host, eps, layer_damping)
         if surface == "window"
         else (filled.astype(complex), host)
     )
-    along = parts @ eps + rest
-    across = 1 / (parts @ (1 / eps) + rest)
-    mixed = (filled.max(axis=1) < 1 - 1e-9) & (cells.normal[keep] != 0).any(axis=1)
-    where = np.flatnonzero(mixed)
-    return keep, along, where, along[where], across[where]
+    return keep, parts, rest, np.flatnonzero(mixed)
 
 
 def _damped(filled: np.ndarray, host: np.ndarray, eps: np.ndarray, layer_damping: float):
@@ -292,6 +319,14 @@ def _as_material(spec, overrides: dict | None):
     if isinstance(spec, str) and overrides and spec in overrides:
         spec = overrides[spec]
     return spec if hasattr(spec, "permittivity") else _materials.find(spec)
+
+
+def _tensor(material, wavelength: float) -> np.ndarray:
+    """Permittivity tensor of any material."""
+    at = np.array([wavelength])
+    if hasattr(material, "tensor"):
+        return material.tensor(at)[0]
+    return material.permittivity(at)[0] * np.eye(3)
 
 
 def memory_estimate(shape: tuple[int, int, int], n: int, precision: str = "double") -> int:

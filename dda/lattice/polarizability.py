@@ -34,7 +34,7 @@ class CellTensor:
     def inverse(self) -> CellTensor:
         """The inverse of every cell's tensor."""
         matrices = np.linalg.inv(_matrices(self.full)) if len(self.where) else np.empty((0, 3, 3))
-        return CellTensor(1 / self.scalar, self.where, _components(matrices))
+        return CellTensor(1 / self.scalar, self.where, components(matrices))
 
     def astype(self, dtype) -> CellTensor:
         """The same numbers in another precision."""
@@ -93,7 +93,7 @@ def inverse_polarizability(
     --------
     >>> import numpy as np
     >>> a = inverse_polarizability(np.array([2.25 + 0j]), "rr", k=0.01, spacing=1.0)
-    >>> round(a[0].real / (4 * np.pi / 3), 3)
+    >>> round(float(a[0].real) / (4 * np.pi / 3), 3)
     3.4
     """
     eps = np.asarray(eps, complex)
@@ -119,12 +119,13 @@ def inverse_polarizability(
 def uniaxial(tangential: np.ndarray, normal_value: np.ndarray, normal: np.ndarray) -> np.ndarray:
     """Components of ``t (I - nn) + v nn``, shape (s, 6)."""
     extra = (normal_value - tangential)[:, None, None]
-    return _components(
+    return components(
         tangential[:, None, None] * np.eye(3) + extra * normal[:, :, None] * normal[:, None, :]
     )
 
 
-def _components(matrices: np.ndarray) -> np.ndarray:
+def components(matrices: np.ndarray) -> np.ndarray:
+    """xx, yy, zz, xy, xz, yz of symmetric matrices (s, 3, 3), shape (s, 6)."""
     return np.stack(
         [
             matrices[:, 0, 0],

@@ -115,19 +115,19 @@ def sectors(system: System, mirrors: tuple[bool, bool, bool] | None = None) -> l
     ----------
     system : System
     mirrors : three bool, optional
-        Planes to use; by default all that the cells have.
+        Planes to use; by default all that the cells and their materials have.
 
     Returns
     -------
     list of Sector
         They share the kernel; buffers are made when first used.
     """
-    cells = system.cells
-    used = cells.mirrors if mirrors is None else mirrors
-    if any(asked and not there for asked, there in zip(used, cells.mirrors, strict=True)):
+    there = system.mirrors
+    used = there if mirrors is None else mirrors
+    if any(asked and not has for asked, has in zip(used, there, strict=True)):
         raise ValueError(
             f"the cells are not symmetric under the mirrors asked for, {tuple(used)}: "
-            f"they have {cells.mirrors}"
+            f"they have {there}"
         )
     planes = [a for a in range(3) if used[a]]
     if not planes:

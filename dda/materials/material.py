@@ -28,7 +28,7 @@ class Dispersion(Protocol):
 
 @dataclass(frozen=True)
 class Material:
-    """A homogeneous, isotropic, passive material.
+    """A homogeneous, passive material, isotropic but for `dda.materials.anisotropic`.
 
     Attributes
     ----------
@@ -134,7 +134,7 @@ def require_transparent(material: Material, wavelength_nm: ArrayLike) -> NDArray
     Raises
     ------
     InputError
-        The host absorbs (or is metallic) at one of the wavelengths.
+        The host absorbs (or is metallic) at one of the wavelengths, or is anisotropic.
 
     Examples
     --------
@@ -142,6 +142,9 @@ def require_transparent(material: Material, wavelength_nm: ArrayLike) -> NDArray
     >>> round(float(require_transparent(find("water"), 589.3)), 3)
     1.333
     """
+    from dda.materials.anisotropic import require_isotropic
+
+    require_isotropic(material, "a host")
     wavelength = np.asarray(wavelength_nm, dtype=float)
     index = np.asarray(material.index(wavelength))
     refused = np.asarray(material.absorbing(wavelength)) | ~(index.real > 0)

@@ -14,6 +14,7 @@ from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_valida
 
 from dda.errors import InputError
 from dda.materials import models
+from dda.materials.anisotropic import anisotropic, require_isotropic, rotation_matrix
 from dda.materials.damping import size_corrected
 from dda.materials.material import Dispersion, Material
 from dda.materials.mixtures import mixture
@@ -101,6 +102,29 @@ class _Named(_Reference):
 
     def spec(self) -> str:
         return self.material_
+
+
+class _Rotation(_Strict):
+    angle: float
+    axis: tuple[float, float, float] = (0.0, 0.0, 1.0)
+    _list = field_validator("axis", mode="before")(_as_tuple)
+
+
+class _Axes(_Form):
+    """Principal materials of an anisotropic one; `angle` in degrees."""
+
+    axes: list[Any]
+    rotation: _Rotation | None = None
+
+    def material(self, base_dir: str | Path | None, extrapolate: bool) -> Material:
+        from dda.materials.resolve import find
+
+        turn = None
+        if self.rotation is not None:
+            if not any(self.rotation.axis):
+                raise InputError("material: rotation.axis has length zero; about z it is [0, 0, 1]")
+            turn = rotation_matrix(self.rotation.axis, self.rotation.angle)
+        return anisotropic([find(one, base_dir, extrapolate) for one in self.axes], turn)
 
 
 class _Model(_Form):
@@ -198,8 +222,10 @@ class _Mixture(_Form):
     def material(self, base_dir: str | Path | None, extrapolate: bool) -> Material:
         from dda.materials.resolve import find
 
-        host = find(self.host, base_dir, extrapolate)
-        inclusion = find(self.inclusion, base_dir, extrapolate)
+        host = require_isotropic(find(self.host, base_dir, extrapolate), "a mixed material")
+        inclusion = require_isotropic(
+            find(self.inclusion, base_dir, extrapolate), "a mixed material"
+        )
         return mixture(self.model, host, inclusion, self.fraction)
 
 
@@ -217,7 +243,7 @@ class _SizeCorrected(_Form):
         from dda.materials.resolve import find
 
         return size_corrected(
-            find(self.metal, base_dir, extrapolate),
+            require_isotropic(find(self.metal, base_dir, extrapolate), "a size-corrected metal"),
             self.length_nm,
             A=self.A,
             fermi_energy_eV=self.fermi_energy_eV,
@@ -233,6 +259,7 @@ _BY_KEY: dict[str, type[_Form]] = {
     "table": _Table,
     "page": _Page,
     "material": _Named,
+    "axes": _Axes,
 }
 _BY_MODEL: dict[str, type[_Form]] = {
     "drude": _Drude,
@@ -259,8 +286,9 @@ def from_study_table(
     ----------
     table : one of the forms ``{index = n or [n, k]}``, ``{eps = re or [re, im]}``,
         ``{table = "file.csv"}``, ``{page = "shelf/book/page"}``, ``{material = "gold"}`` (these
-        three take ``extrapolate = true``), or ``{model = name, ...}`` with a name of `MODELS`.
-        Each may have ``name``, a label.
+        three take ``extrapolate = true``), ``{axes = ["a", "b", 1.76], rotation = {angle = 90,
+        axis = [0, 0, 1]}}`` (principal materials, turned by degrees), or ``{model = name, ...}``
+        with a name of `MODELS`. Each may have ``name``, a label.
 
     Raises
     ------
@@ -321,6 +349,7 @@ def _keys_at(form: type[BaseModel], place: list[Any]) -> tuple[str, ...]:
     inner: dict[str, type[BaseModel]] = {
         "oscillators": _Oscillator,
         "critical_points": _CriticalPoint,
+        "rotation": _Rotation,
     }
     target = inner.get(place[0], form) if place else form
     return tuple(field.alias or name for name, field in target.model_fields.items())

@@ -203,7 +203,7 @@ class _Directions:
         self.group = find_sectors(system, symmetry).group
         self.known: dict[tuple, np.ndarray] = {}
         self.products, self.status = 0.0, "converged"
-        self.share = 2.0 ** -sum(system.cells.mirrors)  # a product of a mirror sector
+        self.share = 2.0 ** -sum(system.mirrors)  # a product of a mirror sector
 
     def response(self, direction: np.ndarray) -> np.ndarray:
         """C_ext, C_abs, C_sca <cos> and C_sca unpolarized, C_ext and C_abs left less right, and

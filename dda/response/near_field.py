@@ -127,6 +127,8 @@ def fields_at(
     """
     points = checked_points(points)
     system, light = polarization.system, polarization.light
+    if system.tensors is not None:
+        raise InputError("near fields of anisotropic materials are not known to this program yet")
     sampler = sampler or SmearedField(polarization, workers)
     height, material = _sides(system, points, sampler, particle)
     inside, outside = np.flatnonzero(material >= 0), np.flatnonzero(material < 0)

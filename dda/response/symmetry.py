@@ -154,12 +154,20 @@ def _group(system: System, row: np.ndarray, low: np.ndarray, high: np.ndarray) -
             image = _image(system.index, g, row, low, high)
             if np.any(image < 0):
                 continue
+            if not _keeps_materials(system, g):
+                continue
             turned = g @ tensors @ g.T
             off = np.linalg.norm(turned - tensors[image], axis=(1, 2)) / size[image]
             plain = order == (0, 1, 2)
             if off.max() < (MIRROR_TOLERANCE if plain else EXCHANGE_TOLERANCE):
                 found.append(g)
     return _closed(np.array(found))
+
+
+def _keeps_materials(system: System, g: np.ndarray) -> bool:
+    """Whether anisotropic materials stay as they are; cells alone would not show little of it."""
+    eps = system.tensors
+    return eps is None or bool(abs(g @ eps @ g.T - eps).max() < 1e-9 * abs(eps).max())
 
 
 def _closed(group: np.ndarray) -> np.ndarray:

@@ -11,6 +11,7 @@ import numpy as np
 import dda.materials
 from dda.errors import InputError
 from dda.materials import Material
+from dda.materials.anisotropic import AnisotropicMaterial
 from dda.study.mistakes import Mistake
 from dda.study.particle import material_key
 from dda.study.points import Point
@@ -27,10 +28,20 @@ class Media:
     particle: Mapping[str, Material]
 
     def relative_index(self, wavelength: float) -> dict[str, complex]:
-        """Return m = n_material / n_host of every material at a vacuum wavelength, nm."""
+        """Return m = n_material / n_host of every material at a vacuum wavelength, nm.
+
+        An anisotropic material has an entry for each axis, such as "calcite, axis 1".
+        """
         at = np.array([wavelength])
         host = float(np.real(self.host.index(at)[0]))
-        return {name: complex(m.index(at)[0]) / host for name, m in self.particle.items()}
+        single: dict[str, Material] = {}
+        for name, material in self.particle.items():
+            if isinstance(material, AnisotropicMaterial):
+                three = enumerate(material.principal, start=1)
+                single |= {f"{name}, axis {number}": m for number, m in three}
+            else:
+                single[name] = material
+        return {name: complex(m.index(at)[0]) / host for name, m in single.items()}
 
 
 def media_of(point: Point, names: Iterable[str]) -> Media:
@@ -94,6 +105,8 @@ def _spelled_out(
             key: _spelled_out(value, own, within) if key in _REFERRING else value
             for key, value in specification.items()
         }
+        if isinstance(axes := spelled.get("axes"), list):
+            spelled["axes"] = [_spelled_out(one, own, within) for one in axes]
         if isinstance(base := spelled.get("material"), Mapping):
             # another name for an own material, perhaps with more keys such as extrapolate
             return {**base, **{key: v for key, v in spelled.items() if key != "material"}}
