@@ -423,8 +423,11 @@ def test_a_cube_gives_the_cells_of_the_solid():
     particle = shapes.Particle((shapes.Part(body_from_triangles(box.vertices, box.faces), "gold"),))
     mine, theirs = (shapes.voxelize(p, spacing=1.7) for p in (particle, solid))
     assert mine.shape == theirs.shape
-    # the eight corners may fall on either side of what counts as occupied
-    assert abs(mine.n - theirs.n) <= 8
+    # along the edges a window may fall on either side of what counts as occupied, 0.5 % of it
+    mine_alone = (mine.rows() >= 0) & (theirs.rows() < 0)
+    theirs_alone = (theirs.rows() >= 0) & (mine.rows() < 0)
+    assert mine.dense(mine.window)[mine_alone].max(initial=0) < 0.01
+    assert theirs.dense(theirs.window)[theirs_alone].max(initial=0) < 0.01
     both = (mine.rows() >= 0) & (theirs.rows() >= 0)
     difference = (mine.dense(mine.window) - theirs.dense(theirs.window))[both]
     # faces agree; samples cut by a sharp edge are taken as cut by one plane, up to 0.5 % of a cell
