@@ -13,7 +13,7 @@ from dda.response.settled import Settled, settle
 def settled(
     particle: shapes.Particle,
     wavelength: float,
-    across: float,
+    across: int,
     host: float = 1.33,
     *,
     tolerance: float = 1e-3,
@@ -69,8 +69,6 @@ def settled(
     return done, rung
 
 
-def level(
-    particle: shapes.Particle, wavelength: float, across: float, host: float = 1.33, **options
-):
+def level(particle: shapes.Particle, wavelength: float, across: int, host: float = 1.33, **options):
     """The `Level` of `settled` alone, for ``refine_to`` and ``refine_at``."""
     return settled(particle, wavelength, across, host, **options)[1]

@@ -124,7 +124,7 @@ limit a of the free order lies within two bars of it.
             y = np.array([rung.sections[q] for rung in rungs])
             if y[-1] < 1e-3 * rungs[-1].sections[0]:
                 continue
-            errors = [rung.solver_error[q] for rung in rungs]
+            errors = np.array([rung.solver_error[q] for rung in rungs])
             fit = extrapolate(d, y, errors, rungs[-1].sections[0], float(np.max(high - low)))
             power, limit = free_order(d, y)
             told = 0.5 < power < 4  # at the ends of its range no order fits
@@ -158,7 +158,7 @@ TOGETHER = (
     ("dielectric sphere 100 nm, index 2, 500 nm",
      lambda: shapes.sphere(100, "2.0"), 500, (12, 16, 24, 32, 48, 64)),
 )  # fmt: skip
-METHODS = (
+METHODS: tuple[tuple[str, dict[str, str]], ...] = (
     ("window, fcd-corners (default)", {}),
     ("staircase, filtered (fcd)", {"surface": "whole", "polarizability": "fcd"}),
     ("staircase, LDR", {"surface": "whole", "polarizability": "ldr"}),
