@@ -63,7 +63,7 @@ def draw_field_map(
     height = float(b[-1] - b[0] + region.step)
     wide = 5.6 * min(1.0, width / height) + 1.6
     high = 5.6 * min(1.0, height / width) + 0.9
-    figure = Figure(figsize=(max(3.6, wide), max(2.6, high)), layout="constrained")
+    figure = Figure(figsize=(max(3.6, wide), max(2.6, high)), layout="compressed")
     axes = figure.add_subplot()
     top = float(image.max())
     if logarithmic is None:

@@ -69,7 +69,7 @@ class NearFieldTable(Table):
     """``[near_field]``: wavelengths, a region and how fine it is sampled.
 
     Lengths are in nm and start at the particle's centre; ``height`` is that over the particle's
-    surface at which statistics are taken, one cell by default.
+    surface at which statistics are taken, a cell and a half by default.
     """
 
     wavelengths: Annotated[tuple[float | Literal["peak"], ...], BeforeValidator(_wavelengths)]

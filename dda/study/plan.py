@@ -15,6 +15,7 @@ from dda.study.levels import lights_of, tolerance_of
 from dda.study.media import Media, check_media, media_of
 from dda.study.memory import available_memory
 from dda.study.mistakes import Mistake
+from dda.study.near_region import check_near
 from dda.study.points import Point, points_of
 from dda.study.reader import Study
 
@@ -118,6 +119,7 @@ def prepare(study: Study) -> Prepared:
         geometry = geometries.of(points[0])
         media = media_of(points[0], geometry.particle.materials)
         check_media(media, [point.wavelength for point in points])
+        check_near(study, media, geometry)
         check_cells(geometry, points[0])
     except Mistake as mistake:
         raise study.located(mistake) from None
