@@ -71,8 +71,8 @@ def test_a_small_sphere_has_the_electrostatic_polarizability_of_each_axis(turn):
     for axis, direction in ((0, (0, 0, 1)), (1, (0, 0, 1)), (2, (1, 0, 0))):
         light = dda.plane_wave(direction=direction, polarization=np.eye(3)[axis])
         found[:, axis] = dda.solve(system, light, tolerance=1e-7).p.sum(axis=0)
-    # Isotropic spheres of these permittivities and cells are off by up to 0.3 %.
-    assert abs(found - exact).max() < 5e-3 * abs(exact).max()
+    # The sphere's cells are off by 8e-5, along the lattice and turned alike.
+    assert abs(found - exact).max() < 3e-4 * abs(exact).max()
 
 
 def test_material_and_light_turned_together_by_a_symmetry_of_the_lattice():
@@ -94,7 +94,7 @@ def test_material_and_light_turned_together_by_any_angle():
     before = _c_ext(relative_system(cells, 560.0, 1.33, BENT[None]))
     system = relative_system(cells, 560.0, 1.33, _turned(BENT, TURN))
     after = _c_ext(system, TURN @ (0, 0, 1), TURN @ (1, 0, 0))
-    assert after == pytest.approx(before, rel=5e-3)  # what the lattice itself does to directions
+    assert after == pytest.approx(before, rel=1e-4)  # the lattice itself: 3e-6
     # and the axes matter: turned alone, the same material absorbs another amount
     assert abs(_c_ext(system) / before - 1) > 0.05
 

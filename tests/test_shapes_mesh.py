@@ -54,7 +54,6 @@ def test_each_format_gives_the_same_body(kind, tmp_path):
 
 
 def test_3mf(tmp_path):
-    pytest.importorskip("lxml")
     body = load(ball(), tmp_path, "3mf")
     assert body.volume() == pytest.approx(ball().volume, rel=ROUNDING)
 
