@@ -92,7 +92,7 @@ def mixed_across(
     >>> import numpy as np
     >>> half, z = np.array([[0.5]]), np.array([[0.0, 0.0, 1.0]])
     >>> mixed = mixed_across(half, np.array([0.5]), z, 3 * np.eye(3)[None])
-    >>> np.diag(mixed[0])
+    >>> np.diag(mixed[0]).real
     array([2. , 2. , 1.5])
     """
     frame = _frames(normal)
