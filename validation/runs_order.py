@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import Any
 
 import numpy as np
 
@@ -158,7 +159,7 @@ TOGETHER = (
     ("dielectric sphere 100 nm, index 2, 500 nm",
      lambda: shapes.sphere(100, "2.0"), 500, (12, 16, 24, 32, 48, 64)),
 )  # fmt: skip
-METHODS: tuple[tuple[str, dict[str, str]], ...] = (
+METHODS: tuple[tuple[str, dict[str, Any]], ...] = (
     ("window, fcd-corners (default)", {}),
     ("staircase, filtered (fcd)", {"surface": "whole", "polarizability": "fcd"}),
     ("staircase, LDR", {"surface": "whole", "polarizability": "ldr"}),
