@@ -95,8 +95,11 @@ def plan(options: argparse.Namespace) -> int:
 
 
 def look(options: argparse.Namespace) -> int:
-    """``dda look``: draw the particle and its cells."""
+    """``dda look``: draw the particle and its cells, or the hot spots of a run."""
     from dda.report.progress import working
+
+    if options.study.is_dir():
+        return _look_at_run(options)
     from dda.report.scene import draw_particle, show_particle
     from dda.study.plan import prepare_shape
     from dda.study.reader import read_study
@@ -112,6 +115,19 @@ def look(options: argparse.Namespace) -> int:
     with working("drawing"):
         draw_particle(path, geometry.particle, cells, study.name)
     print(f"written to {path}")
+    return OK
+
+
+def _look_at_run(options: argparse.Namespace) -> int:
+    """Draw the hot spots of a run's near field."""
+    from dda.report.hot_scene import draw_hot_spots
+    from dda.report.progress import working
+
+    if options.window:
+        raise InputError("--window shows a study's particle; hot spots are drawn into a file")
+    with working("drawing"):
+        written = draw_hot_spots(options.study, options.out)
+    print(f"written to {', '.join(map(str, written))}")
     return OK
 
 
@@ -276,8 +292,8 @@ def _parser() -> argparse.ArgumentParser:
     sub = add("plan", plan, "say what a study would run, and how long; solve nothing")
     sub.add_argument("study", type=Path, metavar="STUDY.toml")
 
-    sub = add("look", look, "draw a study's particle and its cells")
-    sub.add_argument("study", type=Path, metavar="STUDY.toml")
+    sub = add("look", look, "draw a study's particle and its cells, or a run's hot spots")
+    sub.add_argument("study", type=Path, metavar="STUDY.toml|RUN")
     sub.add_argument("--out", type=Path, metavar="PNG", help="default: named after the study")
     sub.add_argument("--window", action="store_true", help="open a window instead")
 

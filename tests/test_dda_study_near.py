@@ -6,6 +6,7 @@ from pathlib import Path
 import h5py
 import numpy as np
 import pytest
+from matplotlib.image import imread
 
 import dda.report.near_run
 from dda.cli import main
@@ -175,6 +176,26 @@ def test_the_spectrum_stays_when_the_near_field_fails(near, monkeypatch, capsys,
     assert found == code
     assert len(_read(folder / "spectrum.csv")) == 1
     assert "the spectrum is kept" in capsys.readouterr().err
+
+
+def test_look_draws_the_hot_spots_of_a_run(near, capsys):
+    assert near('region = "surface"\n')[0] == 0
+    assert main(["look", "out"]) == 0
+    image = imread("out/hot_spots_530.png")[..., :3]
+    # yellow of the strongest field and the dark of the weakest are both there, at both views
+    yellow = (image[..., 0] > 0.9) & (image[..., 1] > 0.7) & (image[..., 2] < 0.6)
+    half = image.shape[1] * 46 // 100
+    assert yellow[:, :half].sum() > 200
+    assert yellow[:, half : 2 * half].sum() > 200
+    assert ((image.max(axis=2) < 0.35) & (image[..., 2] > image[..., 1] + 0.05)).sum() > 200
+    Path("empty").mkdir()
+    assert main(["look", "empty"]) == 2
+    assert "holds no near field" in capsys.readouterr().err
+
+
+def test_particles_of_every_orientation_have_no_near_field(near, capsys):
+    assert near(LINE, ("[530]", '[530]\norientation = "average"'))[0] == 2
+    assert 'leave out orientation = "average"' in capsys.readouterr().err
 
 
 def test_near_fields_of_another_study_are_put_aside(near):

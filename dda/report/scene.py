@@ -75,7 +75,7 @@ def draw_particle(
     view = view_of(cells)
     with drawing() as pyvista:
         surface = surface_picture(pyvista, particle, colours, view, cut)
-        blocks = _render(pyvista, view, lambda p: _add_cells(p, cells, colours, cut))
+        blocks = render(pyvista, view, lambda p: _add_cells(p, cells, colours, cut))
     lay_out(path, (surface, blocks), view, particle, cells, colours, title, cut)
 
 
@@ -110,7 +110,7 @@ def surface_picture(
     pyvista: Any, particle: shapes.Particle, colours: dict[str, str], view: View, cut: bool
 ) -> NDArray[np.uint8]:
     """Return a square picture of a particle's surface, (pixels, pixels, 3)."""
-    return _render(pyvista, view, lambda p: _add_surface(p, particle, colours, cut))
+    return render(pyvista, view, lambda p: _add_surface(p, particle, colours, cut))
 
 
 def view_of(cells: shapes.Cells) -> View:
@@ -266,7 +266,7 @@ def cell_mesh(cells: shapes.Cells, colours: dict[str, str], cut: bool = False) -
     return image.threshold(0.5, scalars="occupied").extract_surface(algorithm=None)
 
 
-def _render(pyvista: Any, view: View, fill: Any) -> NDArray[np.uint8]:
+def render(pyvista: Any, view: View, fill: Any) -> NDArray[np.uint8]:
     """Return a square picture, (pixels, pixels, 3), of what ``fill`` puts on a plotter."""
     plotter = pyvista.Plotter(off_screen=True, window_size=(_PIXELS, _PIXELS))
     with contextlib.closing(plotter):
@@ -274,7 +274,8 @@ def _render(pyvista: Any, view: View, fill: Any) -> NDArray[np.uint8]:
         fill(plotter)
         plotter.enable_parallel_projection()
         distance = 10 * view.half_height
-        plotter.camera_position = (view.centre + distance * EYE, view.centre, UP)
+        eye = np.cross(view.right, view.up)
+        plotter.camera_position = (view.centre + distance * eye, view.centre, UP)
         plotter.camera.parallel_scale = view.half_height
         plotter.reset_camera_clipping_range()
         plotter.enable_anti_aliasing("ssaa")

@@ -37,9 +37,9 @@ def lay_out(
         axes.imshow(picture, extent=(-1, 1, -1, 1), interpolation="antialiased")
         axes.set_axis_off()
         figure.text(0.03 + 0.49 * i, 0.035, note, fontsize=9.5, color=INK, linespacing=1.5)
-        _scale_bar(axes, view)
+        scale_bar(axes, view)
         if i == 0:
-            _triad(axes, view)
+            triad(axes, view)
     _legend(figure, colours)
     save(figure, path)
 
@@ -83,14 +83,15 @@ def round_length(length: float) -> float:
     return float(factor * power)
 
 
-def _scale_bar(axes: Any, view: View) -> None:
+def scale_bar(axes: Any, view: View) -> None:
+    """Draw a bar of a round length into a rendered picture from -1 to 1."""
     length = round_length(0.5 * view.half_height)
     width = length / view.half_height
     axes.plot([0.92 - width, 0.92], [-0.95, -0.95], color=INK, lw=3, solid_capstyle="butt")
     axes.text(0.92 - width / 2, -0.92, f"{length:g} nm", ha="center", va="bottom", fontsize=9)
 
 
-def _triad(axes: Any, view: View) -> None:
+def triad(axes: Any, view: View) -> None:
     """Draw the directions of x, y and z as seen in the picture."""
     for name, direction in zip("xyz", np.eye(3), strict=True):
         arrow = 0.16 * np.array([direction @ view.right, direction @ view.up])

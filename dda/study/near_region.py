@@ -33,6 +33,11 @@ def check_near(study: Study, media: Media, geometry: Geometry) -> None:
     table = study.tables.near_field
     if table is None:
         return
+    if study.tables.light.orientation == "average":
+        raise Mistake(
+            ("near_field",),
+            'near fields are those of one direction of light; leave out orientation = "average"',
+        )
     if table.kind == "surface":
         if table.step is not None and not geometry.size / _EVER <= table.step <= geometry.size / 4:
             raise Mistake(
