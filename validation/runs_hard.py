@@ -14,9 +14,9 @@ from validation.results import Table, group, number, verdict
 
 STAR = Path(__file__).parents[1] / "dda" / "study" / "examples" / "star.stl"
 TOLERANCE = 1e-3
-TIGHT = 2e-5
+TIGHT = 1e-4
 LIMIT = 3000
-PATIENCE = 8000
+PATIENCE = 6000
 
 Hard = tuple[str, Callable[[], shapes.Particle], int, int]
 
