@@ -190,6 +190,11 @@ def _multiply(spectrum, block, first, lx, folded, factors, one):  # pragma: no c
     # A folded axis holds only the frequencies up to the middle; of a whole axis the others
     # mirror them, with the sign of the odd components.
     half_z = lz - 1 if folded[2] else lz // 2
+    symmetric = (
+        factors[0, 1] == factors[1, 0]
+        and factors[0, 2] == factors[2, 0]
+        and factors[1, 2] == factors[2, 1]
+    )
     for g in range(groups):
         kx = first + g
         sx = one
@@ -207,6 +212,17 @@ def _multiply(spectrum, block, first, lx, folded, factors, one):  # pragma: no c
                 start, stop, sz = (0, half_z + 1, one) if part == 0 else (half_z + 1, lz, -one)
                 xz_x, xz_z = sx * sz * factors[0, 2], sx * sz * factors[2, 0]
                 yz_y, yz_z = sy * sz * factors[1, 2], sy * sz * factors[2, 1]
+                if symmetric:  # all axes whole or all folded: three signs serve both triangles
+                    for z in range(start, stop):
+                        kz = z if part == 0 else lz - z
+                        xy = xy_x * spectrum[kx, 3, ky, kz]
+                        xz = xz_x * spectrum[kx, 4, ky, kz]
+                        yz = yz_y * spectrum[kx, 5, ky, kz]
+                        a, b, c = block[g, 0, y, z], block[g, 1, y, z], block[g, 2, y, z]
+                        block[g, 0, y, z] = spectrum[kx, 0, ky, kz] * a + xy * b + xz * c
+                        block[g, 1, y, z] = xy * a + spectrum[kx, 1, ky, kz] * b + yz * c
+                        block[g, 2, y, z] = xz * a + yz * b + spectrum[kx, 2, ky, kz] * c
+                    continue
                 for z in range(start, stop):
                     kz = z if part == 0 else lz - z
                     xy = spectrum[kx, 3, ky, kz]
