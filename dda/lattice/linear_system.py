@@ -104,8 +104,7 @@ class System:
         """``alpha^-1 p - G p`` for a vector of 3n numbers (or an (n, 3) array)."""
         v = np.ascontiguousarray(p, self.dtype).reshape(-1, 3)
         out = self.convolution(self.index, v, np.empty_like(v))
-        own = self.alpha_inverse.apply(v, np.empty_like(v))
-        np.subtract(own, out, out=out)
+        self.alpha_inverse.minus(v, out, self.convolution.workers)
         return out.reshape(np.shape(p))
 
     def precondition(self, r: np.ndarray) -> np.ndarray:

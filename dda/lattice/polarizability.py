@@ -3,9 +3,12 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numba import njit
+
+from .workers import Workers
 
 POLARIZABILITIES = ("fcd", "ldr", "rr", "fcd-corners")
 
@@ -44,6 +47,20 @@ class CellTensor:
         """Write the product with the vectors `v` (n, 3) to `out` and return it."""
         _apply(self.scalar, self.where, self.full, v, out)
         return out
+
+    @cached_property
+    def _plain(self) -> np.ndarray:
+        """The isotropic values, zero where there is a full tensor."""
+        plain = self.scalar.copy()
+        plain[self.where] = 0
+        return plain
+
+    def minus(self, v: np.ndarray, field: np.ndarray, workers: Workers) -> np.ndarray:
+        """Replace `field` (n, 3) by the product with `v` less the field; return it."""
+        plain = self._plain
+        workers.run(lambda a, b: _isotropic_minus(plain, v, field, a, b), workers.split(len(plain)))
+        _add_full(self.where, self.full, v, field)
+        return field
 
     @property
     def nbytes(self) -> int:
@@ -141,6 +158,23 @@ def components(matrices: np.ndarray) -> np.ndarray:
 
 def _matrices(full: np.ndarray) -> np.ndarray:
     return full[:, [0, 3, 4, 3, 1, 5, 4, 5, 2]].reshape(-1, 3, 3)
+
+
+@njit(nogil=True, cache=True)
+def _isotropic_minus(scalar, v, field, start, stop):  # pragma: no cover - compiled
+    for i in range(start, stop):
+        for c in range(3):
+            field[i, c] = scalar[i] * v[i, c] - field[i, c]
+
+
+@njit(nogil=True, cache=True)
+def _add_full(where, full, v, out):  # pragma: no cover - compiled
+    for s in range(len(where)):
+        i = where[s]
+        a, b, c = v[i, 0], v[i, 1], v[i, 2]
+        out[i, 0] += full[s, 0] * a + full[s, 3] * b + full[s, 4] * c
+        out[i, 1] += full[s, 3] * a + full[s, 1] * b + full[s, 5] * c
+        out[i, 2] += full[s, 4] * a + full[s, 5] * b + full[s, 2] * c
 
 
 @njit(nogil=True, cache=True)

@@ -97,9 +97,8 @@ class Sector:
         """``(alpha^-1 - G)`` within the sector."""
         v = np.ascontiguousarray(vector, self.dtype).reshape(-1, 3)
         out = self.convolution(self.index, v / self._scale, np.empty_like(v))
-        own = self.alpha_inverse.apply(v, np.empty_like(v))
         out *= self._scale
-        np.subtract(own, out, out=out)
+        self.alpha_inverse.minus(v, out, self.convolution.workers)
         return out.reshape(vector.shape)
 
     def precondition(self, vector: np.ndarray) -> np.ndarray:
