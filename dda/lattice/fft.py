@@ -60,15 +60,7 @@ def choose(name: str = "auto") -> FFT:
 
 
 def _parts(array: np.ndarray) -> np.ndarray:
-    """The real view with a last axis of real and imaginary part."""
-    return array.view(array.real.dtype).reshape(*array.shape, 2) if _dense(array) else _wide(array)
-
-
-def _dense(array: np.ndarray) -> bool:
-    return bool(array.flags.c_contiguous)
-
-
-def _wide(array: np.ndarray) -> np.ndarray:
+    """A view with a last axis of real and imaginary part, of any strides."""
     real = array.real
     return np.lib.stride_tricks.as_strided(
         real, (*array.shape, 2), (*array.strides, real.dtype.itemsize)

@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 import numpy as np
 from scipy.sparse import csr_array
 
+from .efficiencies import Efficiencies
 from .tmatrix import TMatrix
 from .vector_waves import complex_numbers, gradients
 
@@ -15,7 +16,7 @@ LEAST_ABSORPTION = 0.02
 
 
 @dataclass(frozen=True)
-class OrientationAverage:
+class OrientationAverage(Efficiencies):
     """Cross sections in nm^2 averaged over orientations, for unpolarized light.
 
     Attributes
@@ -52,21 +53,6 @@ class OrientationAverage:
     order: int = field(default=0)
     products: float = 0.0
     status: str = "converged"
-
-    @property
-    def q_ext(self) -> float:
-        """Extinction efficiency."""
-        return self.c_ext / self.area
-
-    @property
-    def q_abs(self) -> float:
-        """Absorption efficiency."""
-        return self.c_abs / self.area
-
-    @property
-    def q_sca(self) -> float:
-        """Scattering efficiency."""
-        return self.c_sca / self.area
 
     @property
     def g_ext(self) -> float:

@@ -7,11 +7,12 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..lattice.solution import Polarization
+from .efficiencies import Efficiencies
 from .far_field import quadrature_order, scattering_amplitude, sphere_quadrature
 
 
 @dataclass(frozen=True)
-class CrossSections:
+class CrossSections(Efficiencies):
     """Cross sections in nm^2.
 
     Attributes
@@ -32,21 +33,6 @@ class CrossSections:
     c_abs_cells: float
     c_sca_far: float
     area: float
-
-    @property
-    def q_ext(self) -> float:
-        """Extinction efficiency."""
-        return self.c_ext / self.area
-
-    @property
-    def q_abs(self) -> float:
-        """Absorption efficiency."""
-        return self.c_abs / self.area
-
-    @property
-    def q_sca(self) -> float:
-        """Scattering efficiency."""
-        return self.c_sca / self.area
 
     @property
     def balance(self) -> float:
