@@ -19,7 +19,8 @@ PRINTED_LINES = 14
 def write_csv(path: Path, rows: Sequence[Row]) -> None:
     """Write rows to a CSV file, whole or not at all.
 
-    The first line names the columns, the units in their names. Numbers have nine digits; what is
+    The first line names the columns, the units in their names: the varied keys, what every table
+    has, and what else the study asked for. Numbers have nine digits; what is
     not known is empty.
 
     Parameters
@@ -30,8 +31,17 @@ def write_csv(path: Path, rows: Sequence[Row]) -> None:
     """
     text = io.StringIO()
     writer = csv.writer(text, lineterminator="\n")
-    writer.writerow(COLUMNS)
-    writer.writerows([_cell(getattr(row, column)) for column in COLUMNS] for row in rows)
+    varied = list(dict.fromkeys(key for row in rows for key in row.varied))
+    more = list(dict.fromkeys(key for row in rows for key in row.more))
+    writer.writerow([*varied, *COLUMNS, *more])
+    for row in rows:
+        writer.writerow(
+            [
+                *(_cell(row.varied.get(key, "")) for key in varied),
+                *(_cell(getattr(row, column)) for column in COLUMNS),
+                *(_cell(row.more.get(key, math.nan)) for key in more),
+            ]
+        )
     write_aside(path, text.getvalue().encode())
 
 
@@ -105,7 +115,7 @@ def _thinned(rows: Sequence[Row]) -> list[Row]:
     ]
 
 
-def _cell(value: float | int | str) -> str:
+def _cell(value: object) -> str:
     if isinstance(value, float):
         return f"{value:.9g}" if math.isfinite(value) else ""
     return str(value)

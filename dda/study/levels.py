@@ -19,6 +19,7 @@ from dda.response.orientation import tumbling
 from dda.study.estimate import expected_steps
 from dda.study.geometry import Geometries, Geometry, usable_memory
 from dda.study.media import Media, media_of
+from dda.study.more import NOTHING_MORE, More
 from dda.study.points import Point
 
 #: Called with a message and the part of the current point that is done, 0 to 1.
@@ -58,12 +59,15 @@ class Answer:
         Of the finest level, averaged over the polarizations.
     cells : int
         Of the finest level.
+    more : More
+        What else the study asked for, of the finest level.
     """
 
     refined: Refined
     area: float
     balance: float
     cells: int
+    more: More = NOTHING_MORE
 
 
 def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf) -> Answer:

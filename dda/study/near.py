@@ -257,7 +257,7 @@ class NearRun:
         point = self.prepared.points[0]
         tolerance = min(point.solver.tolerance, TOLERANCE)
         solver = point.solver.model_copy(update={"tolerance": tolerance})
-        return replace(point, wavelength=wavelength, solver=solver)
+        return point.at(wavelength, solver=solver)
 
 
 def peak_of(rows: Sequence[Row]) -> float:

@@ -3,12 +3,20 @@
 from __future__ import annotations
 
 import json
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
+from functools import cached_property
 from pathlib import Path
 from typing import Any
 
 from dda.study.reader import Study
-from dda.study.schema import AccuracyTable, HostTable, LimitsTable, ParticleTable, SolverTable
+from dda.study.schema import (
+    AccuracyTable,
+    HostTable,
+    LimitsTable,
+    ParticleTable,
+    SolverTable,
+    StudyTables,
+)
 
 Polarization = str | tuple[complex, complex, complex]
 
@@ -19,34 +27,72 @@ class Point:
 
     Attributes
     ----------
-    particle, host, accuracy, solver, limits
-        The tables of the study that hold for this point.
-    materials : dict
-        The user's own materials, as written.
+    tables : StudyTables
+        The study as it holds for this point: varied keys have their value, the wavelengths of
+        ``[light]`` are those of the whole study.
     wavelength : float
         In vacuum, nm.
-    direction : (3,) tuple of float
-        Where the light goes, of any length.
-    polarization : (3,) tuple of complex, or "left", "right", "unpolarized"
-    averaged : bool
-        Whether the particle tumbles; direction and polarization then mean nothing.
     folder : Path
         Where relative paths start.
+    varied : dict
+        The value of each varied key, by its dotted name.
     """
 
-    particle: ParticleTable
-    host: HostTable
-    accuracy: AccuracyTable
-    solver: SolverTable
-    limits: LimitsTable
-    materials: dict[str, dict[str, Any]]
+    tables: StudyTables
     wavelength: float
-    direction: tuple[float, float, float]
-    polarization: Polarization
-    averaged: bool
     folder: Path
+    varied: dict[str, Any] = field(default_factory=dict)
 
     @property
+    def particle(self) -> ParticleTable:
+        """``[particle]``."""
+        return self.tables.particle
+
+    @property
+    def host(self) -> HostTable:
+        """``[host]``."""
+        return self.tables.host
+
+    @property
+    def accuracy(self) -> AccuracyTable:
+        """``[accuracy]``."""
+        return self.tables.accuracy
+
+    @property
+    def solver(self) -> SolverTable:
+        """``[solver]``."""
+        return self.tables.solver
+
+    @property
+    def limits(self) -> LimitsTable:
+        """``[limits]``."""
+        return self.tables.limits
+
+    @property
+    def materials(self) -> dict[str, dict[str, Any]]:
+        """The user's own materials, as written."""
+        return self.tables.materials
+
+    @property
+    def direction(self) -> tuple[float, float, float]:
+        """Where the light goes, of any length."""
+        return self.tables.light.direction
+
+    @property
+    def polarization(self) -> Polarization:
+        """A vector, or "left", "right", "unpolarized"."""
+        return self.tables.light.polarization
+
+    @property
+    def averaged(self) -> bool:
+        """Whether the particle tumbles; direction and polarization then mean nothing."""
+        return self.tables.light.orientation == "average"
+
+    def at(self, wavelength: float, **tables: Any) -> Point:
+        """Return the same point at another wavelength, nm, perhaps with other tables."""
+        return replace(self, wavelength=wavelength, tables=self.tables.model_copy(update=tables))
+
+    @cached_property
     def geometry_key(self) -> str:
         """A text that is the same for points that share their cells."""
         tables = {
@@ -58,21 +104,8 @@ class Point:
 
 
 def points_of(study: Study) -> tuple[Point, ...]:
-    """Return the points of a study in the order in which they are computed: by wavelength."""
-    tables = study.tables
+    """Return the points of a study, sorted by wavelength."""
     return tuple(
-        Point(
-            particle=tables.particle,
-            host=tables.host,
-            accuracy=tables.accuracy,
-            solver=tables.solver,
-            limits=tables.limits,
-            materials=tables.materials,
-            wavelength=wavelength,
-            direction=tables.light.direction,
-            polarization=tables.light.polarization,
-            averaged=tables.light.orientation == "average",
-            folder=study.folder,
-        )
-        for wavelength in sorted(tables.light.values())
+        Point(study.tables, wavelength, study.folder)
+        for wavelength in sorted(study.tables.light.values())
     )

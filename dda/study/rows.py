@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, field, fields
+from typing import Any
 
 
 @dataclass(frozen=True)
@@ -47,6 +48,10 @@ class Row:
         Wall time of this point.
     message : str
         Why a point has no answer or a doubtful one; empty when all is well.
+    varied : dict
+        The values of the study's varied keys, by dotted name: the first columns of the table.
+    more : dict
+        Further numbers the study asked for, by column: the last columns of the table.
     """
 
     wavelength_nm: float
@@ -77,6 +82,8 @@ class Row:
     balance: float = math.nan
     seconds: float = math.nan
     message: str = ""
+    varied: dict[str, Any] = field(default_factory=dict)
+    more: dict[str, float] = field(default_factory=dict)
 
     @property
     def converged(self) -> bool:
@@ -89,4 +96,5 @@ class Row:
         return math.isfinite(self.c_ext_nm2)
 
 
-COLUMNS = tuple(field.name for field in fields(Row))
+#: The columns that every table has.
+COLUMNS = tuple(f.name for f in fields(Row) if f.name not in ("varied", "more"))

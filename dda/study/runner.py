@@ -79,6 +79,8 @@ def _row(point: Point, memory: Memory, watch: Watch, seconds: float) -> Row:
         balance=found.balance,
         seconds=time.perf_counter() - started,
         message=message,
+        varied=point.varied,
+        more=found.more.columns,
     )
 
 
@@ -125,4 +127,5 @@ def _failed(point: Point, memory: Memory, started: float, reason: str) -> Row:
         spacing_nm=memory.geometries.of(point).spacing,
         seconds=time.perf_counter() - started,
         message=reason,
+        varied=point.varied,
     )
