@@ -6,6 +6,7 @@ import textwrap
 
 from dda.report.progress import duration_text
 from dda.study.geometry import Geometry
+from dda.study.lights import beam_text
 from dda.study.memory import bytes_text
 from dda.study.particle import notes_of
 from dda.study.plan import Plan, Prepared
@@ -64,7 +65,7 @@ def study_lines(prepared: Prepared) -> list[str]:
                 ("particle", extent_text(prepared.geometry)),
                 *sources,
                 ("wavelengths", f"{len(points)}, {span}"),
-                ("polarization", _polarization(prepared)),
+                *_light(prepared),
                 *[("note", note) for note in notes_of(prepared.geometry.particle)],
                 ("cells", _cells(prepared)),
             ]
@@ -93,6 +94,16 @@ def _cells(prepared: Prepared) -> str:
     if len(numbers) > 1:
         text += f"; {' and '.join(numbers[:-1])} across for the error bar"
     return text
+
+
+def _light(prepared: Prepared) -> list[tuple[str, str]]:
+    """Return the lines of the light: what it is, and its polarization where it has one."""
+    point = prepared.points[0]
+    text = beam_text(point)
+    if point.tables.light.beam is not None and not point.tables.light.beam.gaussian:
+        return [("light", text)]
+    kind = [("light", text)] if text else []
+    return [*kind, ("polarization", _polarization(prepared))]
 
 
 def _polarization(prepared: Prepared) -> str:

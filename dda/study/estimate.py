@@ -11,7 +11,7 @@ import numpy as np
 
 from dda.lattice import System
 from dda.lattice.sectors import Sector, sectors
-from dda.light import PlaneWave
+from dda.study.lights import Light
 
 #: Most iterations of one solve.
 LIMIT = 3000
@@ -50,7 +50,7 @@ class Cost:
         return setup + solving / FACTOR, setup + solving * FACTOR
 
 
-def measure_step(matrix: System, light: PlaneWave, repeats: int = 3) -> float:
+def measure_step(matrix: System, light: Light, repeats: int = 3) -> float:
     """Return the seconds that one step of the solver takes here: a product in every sector.
 
     Mirror sectors that the light does not reach are not solved and not counted. The first product

@@ -12,12 +12,12 @@ import numpy as np
 from dda.accuracy import Level, Refined, refine_at, refine_to
 from dda.lattice import System, system
 from dda.lattice.workers import Workers
-from dda.light import PlaneWave, plane_wave, transverse
 from dda.response import Settled, settle
 from dda.response.averages import OrientationAverage
 from dda.response.orientation import tumbling
 from dda.study.estimate import expected_steps
 from dda.study.geometry import Geometries, Geometry, usable_memory
+from dda.study.lights import lights_of
 from dda.study.media import Media, media_of
 from dda.study.more import NOTHING_MORE, More
 from dda.study.points import Point
@@ -114,25 +114,17 @@ def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf
     return Answer(refined, area, balance, refined.levels[-1].cells)
 
 
-def lights_of(point: Point) -> tuple[PlaneWave, ...]:
-    """Return the plane waves to solve for; their cross sections are averaged."""
-    if point.polarization == "unpolarized":
-        first, second = transverse(np.asarray(point.direction, float))
-        return plane_wave(point.direction, first), plane_wave(point.direction, second)
-    return (plane_wave(point.direction, point.polarization),)
-
-
 def worst(statuses: Iterable[str]) -> str:
     """Return the worst of some statuses of the solver."""
     return max(statuses, key=lambda s: _STATUSES.index(s) if s in _STATUSES else len(_STATUSES))
 
 
 def solutions(point: Point, geometry: Geometry, memory: Memory, watch: Watch) -> list[Settled]:
-    """Solve a point on one lattice, for every plane wave of `lights_of`."""
+    """Solve a point on one lattice, for every incident field of `lights_of`."""
     label = _label(point, geometry)
     matrix, media = _matrix(point, geometry, watch)
     cells = geometry.cells
-    lights = lights_of(point)
+    lights = lights_of(point, geometry, matrix.k)
     indices = media.relative_index(point.wavelength).values()
     tolerance = tolerance_of(point)
     steps = max(expected_steps(m, max(cells.shape), tolerance) for m in indices)

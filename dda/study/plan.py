@@ -11,7 +11,8 @@ from dda.lattice import system
 from dda.lattice.workers import Workers
 from dda.study.estimate import Cost, expected_steps, measure_step
 from dda.study.geometry import WINDOW, Geometries, Geometry, check_cells, geometry_of
-from dda.study.levels import lights_of, tolerance_of
+from dda.study.levels import tolerance_of
+from dda.study.lights import check_beam, light_count, lights_of
 from dda.study.media import Media, check_media, media_of
 from dda.study.memory import available_memory
 from dda.study.mistakes import Mistake
@@ -121,6 +122,7 @@ def prepare(study: Study) -> Prepared:
         check_media(media, [point.wavelength for point in points])
         check_near(study, media, geometry)
         check_cells(geometry, points[0])
+        check_beam(points[0], media, geometry, [point.wavelength for point in points])
     except Mistake as mistake:
         raise study.located(mistake) from None
     return Prepared(study, points, geometries, media)
@@ -232,7 +234,11 @@ def _cost(prepared: Prepared) -> Cost:
         )
         setup = time.perf_counter() - started
     steps = tuple(_steps(prepared, point) for point in prepared.points)
-    return Cost(setup * len(prepared.levels), measure_step(matrix, lights_of(point)[0]), steps)
+    return Cost(
+        setup * len(prepared.levels),
+        measure_step(matrix, lights_of(point, prepared.geometry, matrix.k)[0]),
+        steps,
+    )
 
 
 def _steps(prepared: Prepared, point: Point) -> float:
@@ -243,4 +249,4 @@ def _steps(prepared: Prepared, point: Point) -> float:
         max(expected_steps(m, across, tolerance) for m in indices) * (across / finest) ** 3
         for across in prepared.levels
     )
-    return len(lights_of(point)) * steps
+    return light_count(point) * steps

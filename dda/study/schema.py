@@ -20,6 +20,7 @@ from pydantic import (
     model_validator,
 )
 
+from dda.study.beam_table import BeamTable
 from dda.study.fields import Positive, Table, Vector
 from dda.study.near_table import NearFieldTable
 from dda.study.parts_table import PartTable
@@ -195,7 +196,7 @@ Polarization = Annotated[str | tuple[complex, complex, complex], BeforeValidator
 
 
 class LightTable(Table):
-    """``[light]``: the incident plane waves.
+    """``[light]``: the incident plane waves, or another ``beam``.
 
     ``orientation = "average"`` is for particles that tumble: unpolarized light from everywhere.
     """
@@ -204,6 +205,7 @@ class LightTable(Table):
     orientation: Literal["fixed", "average"] = "fixed"
     direction: Annotated[Vector, AfterValidator(_nonzero)] = (0.0, 0.0, 1.0)
     polarization: Polarization = (1 + 0j, 0j, 0j)
+    beam: BeamTable | None = None
 
     @model_validator(mode="after")
     def _transverse(self) -> LightTable:
@@ -213,6 +215,8 @@ class LightTable(Table):
                 f'orientation = "average" leaves no meaning to {" and ".join(sorted(given))}: '
                 "leave it out, or leave out orientation"
             )
+        if self.beam is not None:
+            self._check_beam(given)
         if isinstance(self.polarization, str):
             return self
         size = math.sqrt(sum(abs(c) ** 2 for c in self.polarization))
@@ -223,6 +227,16 @@ class LightTable(Table):
                 f"{list(self.direction)}; a plane wave has no field along its direction"
             )
         return self
+
+    def _check_beam(self, given: set[str]) -> None:
+        assert self.beam is not None
+        if self.orientation == "average":
+            raise ValueError('orientation = "average" is for plane waves; leave out the beam')
+        if not self.beam.gaussian and given:
+            raise ValueError(
+                f"a dipole has its moment, so {' and '.join(sorted(given))} would mean nothing: "
+                "leave it out"
+            )
 
     def values(self) -> tuple[float, ...]:
         """Return the vacuum wavelengths, nm."""
