@@ -104,8 +104,15 @@ class Point:
 
 
 def points_of(study: Study) -> tuple[Point, ...]:
-    """Return the points of a study, sorted by wavelength."""
+    """Return the points of a study: its combinations of varied keys, each sorted by wavelength.
+
+    Raises
+    ------
+    InputError
+        A combination does not make a study.
+    """
     return tuple(
-        Point(study.tables, wavelength, study.folder)
-        for wavelength in sorted(study.tables.light.values())
+        Point(tables, wavelength, study.folder, varied)
+        for varied, tables in study.variants()
+        for wavelength in sorted(tables.light.values())
     )

@@ -7,8 +7,8 @@ from __future__ import annotations
 
 import difflib
 import tomllib
-from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from collections.abc import Iterable, Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any, get_args
 
@@ -18,10 +18,13 @@ from dda.errors import InputError
 from dda.study.lines import line_of
 from dda.study.mistakes import Mistake, dotted
 from dda.study.schema import StudyTables, WavelengthRange
+from dda.study.vary import Vary, read_vary
 
 #: A file with more mistakes than this is better looked at as a whole.
 MOST_MESSAGES = 8
 _TAGS = ("range", "list")
+NOTHING_VARIES = Vary()
+NO_VALUES: Mapping[str, Any] = {}
 _PLAIN = {
     "float_type": "should be a number",
     "int_type": "should be a whole number",
@@ -36,11 +39,25 @@ _PLAIN = {
 
 @dataclass(frozen=True)
 class Study:
-    """A study file that has been read: its tables and where they came from."""
+    """A study file that has been read: its tables and where they came from.
+
+    Attributes
+    ----------
+    path : Path
+    text : str
+    tables : StudyTables
+        With varied keys at their first values.
+    vary : Vary
+        The varied keys.
+    data : dict
+        The file as parsed.
+    """
 
     path: Path
     text: str
     tables: StudyTables
+    vary: Vary = NOTHING_VARIES
+    data: Mapping[str, Any] = field(default_factory=dict, repr=False)
 
     @property
     def name(self) -> str:
@@ -52,9 +69,23 @@ class Study:
         """The folder at which relative paths in the study start."""
         return self.path.parent
 
-    def located(self, mistake: Mistake) -> InputError:
+    def variants(self) -> Iterator[tuple[dict[str, Any], StudyTables]]:
+        """Yield each combination of the varied keys, and the tables it makes.
+
+        Raises
+        ------
+        InputError
+            A combination does not make a study.
+        """
+        for values in self.vary.combinations():
+            varied = self.vary.named(values)
+            yield varied, _tables(self.path, self.text, self.data, self.vary, values)
+
+    def located(self, mistake: Mistake, varied: Mapping[str, Any] | None = None) -> InputError:
         """Return an error that names the file and the line of a mistake as well."""
-        return _error(self.path, self.text, mistake.key, mistake.message)
+        if varied is None and self.vary.axes:
+            varied = self.vary.named(next(iter(self.vary.combinations())))
+        return _error(self.path, self.text, mistake.key, mistake.message, self.vary, varied or {})
 
 
 def read_study(path: str | Path) -> Study:
@@ -86,11 +117,27 @@ def read_study(path: str | Path) -> Study:
 
 def study_from_tables(data: dict[str, Any], path: Path, text: str = "") -> Study:
     """Check tables that are already parsed; ``path`` tells where relative paths start."""
+    vary = Vary()
+    if isinstance(table := data.get("vary"), Mapping):
+        try:
+            vary = read_vary(table)
+        except Mistake as mistake:
+            raise _error(path, text, mistake.key, mistake.message) from None
+    first = next(iter(vary.combinations()))
+    return Study(path, text, _tables(path, text, data, vary, first), vary, data)
+
+
+def _tables(
+    path: Path, text: str, data: Mapping[str, Any], vary: Vary, values: Sequence[Any]
+) -> StudyTables:
+    """Check the tables that a combination of the varied keys makes."""
+    varied = vary.named(values)
     try:
-        tables = StudyTables.model_validate(data)
+        return StudyTables.model_validate(vary.applied(data, values))
+    except Mistake as mistake:
+        raise _error(path, text, mistake.key, mistake.message, vary, varied) from None
     except ValidationError as error:
-        raise InputError("\n".join(_messages(path, text, error))) from None
-    return Study(path, text, tables)
+        raise InputError("\n".join(_messages(path, text, error, vary, varied))) from None
 
 
 def nearest(word: str, known: Iterable[str]) -> str:
@@ -124,18 +171,35 @@ def _read(path: Path) -> str:
         raise InputError(f"{path}: cannot be read: {error.strerror}") from None
 
 
-def _error(path: Path, text: str, key: Sequence[str | int], message: str) -> InputError:
-    line = line_of(text, key)
+def _error(
+    path: Path,
+    text: str,
+    key: Sequence[str | int],
+    message: str,
+    vary: Vary = NOTHING_VARIES,
+    varied: Mapping[str, Any] = NO_VALUES,
+) -> InputError:
+    """Return an error at a key; one that is varied stands in ``[vary]``."""
+    here: Sequence[str | int] = key
+    for axis in vary.axes:
+        if tuple(key[: len(axis.key)]) == axis.key:
+            here = ("vary", *axis.written)
+    line = line_of(text, here)
     place = f"{path}, line {line}" if line else f"{path}"
+    if varied:
+        at = ", ".join(f"{name} = {_shown(value)}" for name, value in varied.items())
+        message = f"{message} (with {at})"
     return InputError(f"{place}: {dotted(key)}: {message}" if key else f"{place}: {message}")
 
 
-def _messages(path: Path, text: str, error: ValidationError) -> list[str]:
+def _messages(
+    path: Path, text: str, error: ValidationError, vary: Vary, varied: Mapping[str, Any]
+) -> list[str]:
     mistakes = error.errors(include_url=False)
     lines = []
     for mistake in mistakes[:MOST_MESSAGES]:
         key = tuple(part for part in mistake["loc"] if part not in _TAGS)
-        lines.append(str(_error(path, text, key, _sentence(mistake, key))))
+        lines.append(str(_error(path, text, key, _sentence(mistake, key), vary, varied)))
     if len(mistakes) > MOST_MESSAGES:
         lines.append(f"and {len(mistakes) - MOST_MESSAGES} more")
     return lines

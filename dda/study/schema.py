@@ -297,3 +297,4 @@ class StudyTables(Table):
     limits: LimitsTable = LimitsTable()
     near_field: NearFieldTable | None = None
     materials: dict[str, dict[str, Any]] = Field(default_factory=dict)
+    vary: dict[str, Any] = Field(default_factory=dict)

@@ -1,0 +1,387 @@
+"""The ledger of a run: every point and every finished answer, in an SQLite file.
+
+An answer is in the ledger or it is not; whatever ends the process, nothing between exists. The
+write-ahead log lets others read while the run writes.
+"""
+
+from __future__ import annotations
+
+import json
+import sqlite3
+import time
+from collections.abc import Iterable, Iterator, Mapping, Sequence
+from contextlib import contextmanager
+from dataclasses import asdict, dataclass
+from pathlib import Path
+from typing import Any
+
+from dda.errors import ComputationError, InputError
+from dda.study.rows import Row
+
+LEDGER = "ledger.sqlite"
+#: Raised when the tables below change.
+FORMAT = 1
+#: Statuses of a point besides those of a row.
+WAITING, RUNNING = "waiting", "running"
+
+_TABLES = """
+CREATE TABLE about (key TEXT PRIMARY KEY, value TEXT NOT NULL);
+CREATE TABLE studies (number INTEGER PRIMARY KEY, begun REAL NOT NULL, text TEXT NOT NULL,
+    tables TEXT NOT NULL, versions TEXT NOT NULL);
+CREATE TABLE points (number INTEGER PRIMARY KEY, identity TEXT NOT NULL, preview TEXT,
+    wavelength_nm REAL NOT NULL, varied TEXT NOT NULL, weight REAL NOT NULL);
+CREATE INDEX points_by_identity ON points (identity);
+CREATE TABLE answers (identity TEXT PRIMARY KEY, status TEXT NOT NULL, numbers TEXT NOT NULL,
+    message TEXT NOT NULL, seconds REAL, tries INTEGER NOT NULL, finished REAL NOT NULL,
+    worker TEXT NOT NULL, file TEXT, checksum TEXT);
+CREATE TABLE running (identity TEXT PRIMARY KEY, worker TEXT NOT NULL, begun REAL NOT NULL);
+"""
+
+
+@dataclass(frozen=True)
+class Entry:
+    """A point of the study as the ledger lists it.
+
+    Attributes
+    ----------
+    number : int
+        Its place in the study and in the table of results, from 0.
+    identity : str
+        Fingerprint of all that determines its answer.
+    preview : str or None
+        Fingerprint of its coarse answer, if one is asked for.
+    wavelength_nm : float
+    varied : mapping
+        Values of the varied keys by dotted name.
+    weight : float
+        Expected cost, in any unit.
+    """
+
+    number: int
+    identity: str
+    preview: str | None
+    wavelength_nm: float
+    varied: Mapping[str, Any]
+    weight: float
+
+
+@dataclass(frozen=True)
+class Answered:
+    """A finished answer.
+
+    Attributes
+    ----------
+    row : Row
+    tries : int
+        How often it was computed; 2 after another solver was tried.
+    worker : str
+        Who computed it.
+    file : str or None
+        Its arrays, a path relative to the run folder.
+    checksum : str or None
+        SHA-256 of that file.
+    finished : float
+        Seconds since 1970.
+    """
+
+    row: Row
+    tries: int = 1
+    worker: str = ""
+    file: str | None = None
+    checksum: str | None = None
+    finished: float = 0.0
+
+
+class Ledger:
+    """Opens the ledger of a run folder.
+
+    Parameters
+    ----------
+    folder : Path
+        The run folder.
+    write : bool
+        Make it if it is missing, and be able to change it. Only one may, see `dda.study.lock`.
+
+    Raises
+    ------
+    InputError
+        There is no ledger, it is damaged, or another version of the program wrote it.
+    """
+
+    def __init__(self, folder: Path, write: bool = False) -> None:
+        self.path = folder / LEDGER
+        if not write and not self.path.is_file():
+            raise InputError(f"{folder}: no run of a study ({LEDGER} is not there)")
+        new = not self.path.exists()
+        self._base = _connect(self.path, write)
+        try:
+            if new:
+                self._make()
+            self._check_format()
+        except sqlite3.DatabaseError as error:
+            self._base.close()
+            raise InputError(
+                f"{self.path}: damaged, or no ledger ({error}); move it away and run the study "
+                "again to begin anew, or bring a copy back"
+            ) from None
+        except InputError:
+            self._base.close()
+            raise
+
+    def __enter__(self) -> Ledger:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.close()
+
+    def close(self) -> None:
+        """Close the file; everything in it is on disk already."""
+        self._base.close()
+
+    # --- what a run writes ---------------------------------------------------------------------
+
+    def begin(self, text: str, tables: Mapping[str, Any], versions: Mapping[str, str]) -> None:
+        """Note that a study is run now, unless it is the last one again.
+
+        Parameters
+        ----------
+        text : str
+            The study file.
+        tables : mapping
+            The same, parsed.
+        versions : mapping
+            Of the program and what it stands on.
+        """
+        values = text, json.dumps(tables, default=str), json.dumps(versions)
+        with self._change() as base:
+            base.execute("DELETE FROM running")
+            last = base.execute(
+                "SELECT text, tables, versions FROM studies ORDER BY number DESC LIMIT 1"
+            ).fetchone()
+            if last != values:
+                base.execute(
+                    "INSERT INTO studies (begun, text, tables, versions) VALUES (?, ?, ?, ?)",
+                    (time.time(), *values),
+                )
+
+    def set_points(self, entries: Iterable[Entry]) -> None:
+        """Replace the list of points; answers stay."""
+        rows = (
+            (e.number, e.identity, e.preview, e.wavelength_nm, json.dumps(dict(e.varied)), e.weight)
+            for e in entries
+        )
+        with self._change() as base:
+            base.execute("DELETE FROM points")
+            base.executemany("INSERT INTO points VALUES (?, ?, ?, ?, ?, ?)", rows)
+
+    def start(self, identity: str, worker: str) -> None:
+        """Note that a point is being computed."""
+        with self._change() as base:
+            base.execute(
+                "INSERT OR REPLACE INTO running VALUES (?, ?, ?)", (identity, worker, time.time())
+            )
+
+    def drop(self, identity: str) -> None:
+        """Note that a point is not being computed any more."""
+        with self._change() as base:
+            base.execute("DELETE FROM running WHERE identity = ?", (identity,))
+
+    def record(self, identity: str, answered: Answered) -> None:
+        """Keep an answer; it is on disk when this returns."""
+        row = answered.row
+        numbers = asdict(row)
+        for name in ("status", "message", "seconds", "varied"):
+            numbers.pop(name)
+        with self._change() as base:
+            base.execute(
+                "INSERT OR REPLACE INTO answers VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+                (
+                    identity,
+                    row.status,
+                    json.dumps(numbers),
+                    row.message,
+                    row.seconds,
+                    answered.tries,
+                    time.time(),
+                    answered.worker,
+                    answered.file,
+                    answered.checksum,
+                ),
+            )
+            base.execute("DELETE FROM running WHERE identity = ?", (identity,))
+
+    def forget(self, identities: Iterable[str]) -> None:
+        """Remove answers, so that they are computed again."""
+        with self._change() as base:
+            base.executemany(
+                "DELETE FROM answers WHERE identity = ?", ((one,) for one in identities)
+            )
+
+    def note(self, key: str, value: str) -> None:
+        """Keep a text about the run."""
+        with self._change() as base:
+            base.execute("INSERT OR REPLACE INTO about VALUES (?, ?)", (key, value))
+
+    # --- what anyone reads ---------------------------------------------------------------------
+
+    def about(self) -> dict[str, str]:
+        """Return the texts about the run."""
+        return dict(self._base.execute("SELECT key, value FROM about"))
+
+    def study(self) -> tuple[str, dict[str, Any], dict[str, str], float] | None:
+        """Return the last study: its text, its tables, the versions and when it was begun."""
+        row = self._base.execute(
+            "SELECT text, tables, versions, begun FROM studies ORDER BY number DESC LIMIT 1"
+        ).fetchone()
+        return None if row is None else (row[0], json.loads(row[1]), json.loads(row[2]), row[3])
+
+    def entries(self) -> Iterator[Entry]:
+        """Yield the points of the study in their order."""
+        for row in self._base.execute("SELECT * FROM points ORDER BY number"):
+            number, identity, preview, wavelength, varied, weight = row
+            yield Entry(number, identity, preview, wavelength, json.loads(varied), weight)
+
+    def known(self) -> dict[str, str]:
+        """Return the status of every answer by its identity."""
+        return dict(self._base.execute("SELECT identity, status FROM answers"))
+
+    def files(self) -> list[tuple[str, str, str]]:
+        """Return identity, file and checksum of the answers that have a file."""
+        return self._base.execute(
+            "SELECT identity, file, checksum FROM answers WHERE file IS NOT NULL"
+        ).fetchall()
+
+    def answer(self, identity: str) -> Answered | None:
+        """Return one answer, without the values of the varied keys."""
+        found = self._base.execute(
+            "SELECT status, numbers, message, seconds, tries, worker, file, checksum, finished "
+            "FROM answers WHERE identity = ?",
+            (identity,),
+        ).fetchone()
+        if found is None:
+            return None
+        return Answered(_row(*found[:4], {}), *found[4:])
+
+    def rows(self) -> Iterator[tuple[int, Row]]:
+        """Yield number and row of the points that have an answer, in order.
+
+        A point that has only its coarse answer gives that one, with the status "preview".
+        """
+        query = """
+            SELECT number, varied, a.status, a.numbers, a.message, a.seconds,
+                   b.status, b.numbers, b.message, b.seconds
+            FROM points LEFT JOIN answers a USING (identity)
+            LEFT JOIN answers b ON b.identity = points.preview
+            WHERE a.status IS NOT NULL OR b.status IS NOT NULL ORDER BY number"""
+        for number, varied, *both in self._base.execute(query):
+            values = json.loads(varied)
+            if both[0] is not None:
+                yield number, _row(*both[:4], values)
+            else:
+                status = "preview" if both[4] in ("converged", "coarse") else both[4]
+                yield number, _row(status, *both[5:], values)
+
+    def counts(self) -> dict[str, int]:
+        """Return how many points there are of each status, "waiting" and "running" included."""
+        query = """
+            SELECT COALESCE(answers.status, CASE WHEN running.identity IS NULL THEN ? ELSE ? END),
+                   COUNT(*)
+            FROM points LEFT JOIN answers USING (identity)
+            LEFT JOIN running ON running.identity = points.identity GROUP BY 1"""
+        return dict(self._base.execute(query, (WAITING, RUNNING)))
+
+    def work(self) -> tuple[float, float, float]:
+        """Return the weight and the seconds of the points that are done, and the weight of all."""
+        query = """
+            SELECT TOTAL(CASE WHEN answers.status IS NULL THEN 0 ELSE weight END),
+                   TOTAL(answers.seconds), TOTAL(weight)
+            FROM points LEFT JOIN answers USING (identity)"""
+        return self._base.execute(query).fetchone()
+
+    def doubtful(self, most: int = 50) -> list[tuple[Entry, str, str]]:
+        """Return points that are done but not well: the entry, its status and its message."""
+        query = """
+            SELECT points.*, status, message FROM points JOIN answers USING (identity)
+            WHERE status != 'converged' ORDER BY number LIMIT ?"""
+        return [
+            (Entry(*r[:4], json.loads(r[4]), r[5]), r[6], r[7])
+            for r in self._base.execute(query, (most,))
+        ]
+
+    def running(self) -> list[tuple[Entry, str, float]]:
+        """Return the points being computed: the entry, the worker and when it began."""
+        query = """
+            SELECT points.*, worker, begun FROM running JOIN points USING (identity)
+            GROUP BY points.identity ORDER BY begun"""
+        return [
+            (Entry(*r[:4], json.loads(r[4]), r[5]), r[6], r[7]) for r in self._base.execute(query)
+        ]
+
+    # -------------------------------------------------------------------------------------------
+
+    def _make(self) -> None:
+        self._base.execute("PRAGMA journal_mode = WAL")
+        with self._change() as base:
+            for statement in _TABLES.split(";"):
+                base.execute(statement)
+            base.execute("INSERT INTO about VALUES ('format', ?)", (str(FORMAT),))
+
+    def _check_format(self) -> None:
+        (found,) = self._base.execute("SELECT value FROM about WHERE key = 'format'").fetchone()
+        if int(found) > FORMAT:
+            raise InputError(
+                f"{self.path}: written by a newer version of the program; update it "
+                "(python -m pip install -U motelight), or run the study in another folder"
+            )
+        if int(found) < FORMAT:
+            raise InputError(
+                f"{self.path}: written by an older version of the program, which alone can go on "
+                "with it; its spectrum.csv holds all that was finished. Run the study in another "
+                "folder to compute it again"
+            )
+
+    @contextmanager
+    def _change(self) -> Iterator[sqlite3.Connection]:
+        """One transaction: all of it reaches the disk, or nothing."""
+        try:
+            self._base.execute("BEGIN IMMEDIATE")
+            yield self._base
+            self._base.execute("COMMIT")
+        except BaseException as error:
+            if self._base.in_transaction:
+                self._base.execute("ROLLBACK")
+            if isinstance(error, sqlite3.OperationalError):
+                raise ComputationError(f"{self.path}: cannot be written: {error}") from None
+            raise
+
+
+def _connect(path: Path, write: bool) -> sqlite3.Connection:
+    # Autocommit: transactions are begun and ended by hand, see `Ledger._change`.
+    try:
+        if write:
+            base = sqlite3.connect(path, timeout=30, isolation_level=None)
+            base.execute("PRAGMA synchronous = FULL")  # a power cut must not undo an answer
+        else:
+            base = sqlite3.connect(
+                f"{path.absolute().as_uri()}?mode=ro", timeout=30, isolation_level=None, uri=True
+            )
+    except sqlite3.OperationalError as error:
+        raise InputError(f"{path}: cannot be opened: {error}") from None
+    return base
+
+
+def _row(
+    status: str, numbers: str, message: str, seconds: float | None, varied: dict[str, Any]
+) -> Row:
+    return Row(
+        **json.loads(numbers),
+        status=status,
+        message=message,
+        seconds=float("nan") if seconds is None else seconds,
+        varied=varied,
+    )
+
+
+def same_study(a: Sequence[Entry], b: Sequence[Entry]) -> bool:
+    """Whether two lists are the same points in the same order."""
+    return [e.identity for e in a] == [e.identity for e in b]

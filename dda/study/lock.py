@@ -1,0 +1,95 @@
+"""One writer a run folder: a lock that ends with the process that holds it, however it ends."""
+
+from __future__ import annotations
+
+import json
+import os
+import platform
+import sqlite3
+import time
+from pathlib import Path
+
+from dda.errors import InputError
+
+LOCK, HOLDER = "lock.sqlite", "holder.json"
+
+
+class Lock:
+    """Holds a run folder.
+
+    Parameters
+    ----------
+    folder : Path
+        It must exist.
+
+    Raises
+    ------
+    InputError
+        Another process holds it; the message says which.
+
+    Notes
+    -----
+    An open exclusive transaction on an SQLite file of its own is a lock of the operating system
+    on all systems that Python runs on, and goes with the process.
+    """
+
+    def __init__(self, folder: Path) -> None:
+        self._folder = folder
+        self._base = sqlite3.connect(folder / LOCK, timeout=0.5, isolation_level=None)
+        try:
+            self._base.execute("PRAGMA journal_mode = DELETE")
+            self._base.execute("BEGIN EXCLUSIVE")
+        except sqlite3.OperationalError as error:
+            self._base.close()
+            if "locked" in str(error):
+                raise InputError(f"{folder}: {_sentence(folder)}") from None
+            raise InputError(f"{folder / LOCK}: cannot be written: {error}") from None
+        holder = {"process": os.getpid(), "machine": platform.node(), "since": time.time()}
+        (folder / HOLDER).write_text(json.dumps(holder), encoding="utf-8")
+
+    def __enter__(self) -> Lock:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.release()
+
+    def release(self) -> None:
+        """Let others have the folder."""
+        (self._folder / HOLDER).unlink(missing_ok=True)
+        self._base.close()
+        for name in (LOCK, f"{LOCK}-journal"):
+            (self._folder / name).unlink(missing_ok=True)
+
+
+def holder_of(folder: Path) -> dict[str, object] | None:
+    """Return who holds a run folder: process, machine, since (seconds since 1970); or None."""
+    path = folder / LOCK
+    if not path.exists():
+        return None
+    base = sqlite3.connect(path, timeout=0, isolation_level=None)
+    try:
+        base.execute("BEGIN EXCLUSIVE")
+        base.execute("ROLLBACK")
+        return None
+    except sqlite3.OperationalError:
+        return _holder(folder) or {}
+    finally:
+        base.close()
+
+
+def _holder(folder: Path) -> dict[str, object] | None:
+    try:
+        return json.loads((folder / HOLDER).read_text(encoding="utf-8"))
+    except (OSError, ValueError):
+        return None
+
+
+def _sentence(folder: Path) -> str:
+    holder = _holder(folder)
+    if holder is None:
+        return "another process is running a study in it; wait for it, or give another --out"
+    since = time.strftime("%Y-%m-%d %H:%M", time.localtime(float(str(holder["since"]))))
+    return (
+        f"process {holder['process']} on {holder['machine']} is running a study in it since "
+        f"{since}; wait for it or stop it, or give another --out"
+    )
