@@ -20,7 +20,7 @@ from dda.study.points import Point
 #: computed again.
 ANSWERS = 1
 # Keys that do not change the answer of a point.
-_ASIDE = {
+_ASIDE: Any = {
     "name": True,
     "vary": True,
     "limits": True,

@@ -238,8 +238,7 @@ class Ledger:
     def entries(self) -> Iterator[Entry]:
         """Yield the points of the study in their order."""
         for row in self._base.execute("SELECT * FROM points ORDER BY number"):
-            number, identity, preview, wavelength, varied, weight = row
-            yield Entry(number, identity, preview, wavelength, json.loads(varied), weight)
+            yield _entry(row)
 
     def known(self) -> dict[str, str]:
         """Return the status of every answer by its identity."""
@@ -260,7 +259,7 @@ class Ledger:
         ).fetchone()
         if found is None:
             return None
-        return Answered(_row(*found[:4], {}), *found[4:])
+        return Answered(_row(found[:4], {}), *found[4:])
 
     def rows(self) -> Iterator[tuple[int, Row]]:
         """Yield number and row of the points that have an answer, in order.
@@ -276,10 +275,10 @@ class Ledger:
         for number, varied, *both in self._base.execute(query):
             values = json.loads(varied)
             if both[0] is not None:
-                yield number, _row(*both[:4], values)
+                yield number, _row(both[:4], values)
             else:
                 status = "preview" if both[4] in ("converged", "coarse") else both[4]
-                yield number, _row(status, *both[5:], values)
+                yield number, _row((status, *both[5:]), values)
 
     def counts(self) -> dict[str, int]:
         """Return how many points there are of each status, "waiting" and "running" included."""
@@ -303,19 +302,14 @@ class Ledger:
         query = """
             SELECT points.*, status, message FROM points JOIN answers USING (identity)
             WHERE status != 'converged' ORDER BY number LIMIT ?"""
-        return [
-            (Entry(*r[:4], json.loads(r[4]), r[5]), r[6], r[7])
-            for r in self._base.execute(query, (most,))
-        ]
+        return [(_entry(r[:6]), r[6], r[7]) for r in self._base.execute(query, (most,))]
 
     def running(self) -> list[tuple[Entry, str, float]]:
         """Return the points being computed: the entry, the worker and when it began."""
         query = """
             SELECT points.*, worker, begun FROM running JOIN points USING (identity)
             GROUP BY points.identity ORDER BY begun"""
-        return [
-            (Entry(*r[:4], json.loads(r[4]), r[5]), r[6], r[7]) for r in self._base.execute(query)
-        ]
+        return [(_entry(r[:6]), r[6], r[7]) for r in self._base.execute(query)]
 
     # -------------------------------------------------------------------------------------------
 
@@ -370,9 +364,13 @@ def _connect(path: Path, write: bool) -> sqlite3.Connection:
     return base
 
 
-def _row(
-    status: str, numbers: str, message: str, seconds: float | None, varied: dict[str, Any]
-) -> Row:
+def _entry(columns: Sequence[Any]) -> Entry:
+    number, identity, preview, wavelength, varied, weight = columns
+    return Entry(number, identity, preview, wavelength, json.loads(varied), weight)
+
+
+def _row(columns: Sequence[Any], varied: dict[str, Any]) -> Row:
+    status, numbers, message, seconds = columns
     return Row(
         **json.loads(numbers),
         status=status,
@@ -380,8 +378,3 @@ def _row(
         seconds=float("nan") if seconds is None else seconds,
         varied=varied,
     )
-
-
-def same_study(a: Sequence[Entry], b: Sequence[Entry]) -> bool:
-    """Whether two lists are the same points in the same order."""
-    return [e.identity for e in a] == [e.identity for e in b]

@@ -56,9 +56,7 @@ class Lock:
     def release(self) -> None:
         """Let others have the folder."""
         (self._folder / HOLDER).unlink(missing_ok=True)
-        self._base.close()
-        for name in (LOCK, f"{LOCK}-journal"):
-            (self._folder / name).unlink(missing_ok=True)
+        self._base.close()  # the file stays: one removed now might be held by the next already
 
 
 def holder_of(folder: Path) -> dict[str, object] | None:
