@@ -7,7 +7,9 @@ write-ahead log lets others read while the run writes.
 from __future__ import annotations
 
 import json
+import shutil
 import sqlite3
+import tempfile
 import time
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
@@ -113,7 +115,8 @@ class Ledger:
         if not write and not self.path.is_file():
             raise InputError(f"{folder}: no run of a study ({LEDGER} is not there)")
         new = not self.path.exists()
-        self._base = _connect(self.path, write)
+        self._aside: tempfile.TemporaryDirectory | None = None
+        self._base = _connect(self.path) if write else self._reader()
         try:
             if new:
                 self._make()
@@ -137,6 +140,8 @@ class Ledger:
     def close(self) -> None:
         """Close the file; everything in it is on disk already."""
         self._base.close()
+        if self._aside is not None:
+            self._aside.cleanup()
 
     # --- what a run writes ---------------------------------------------------------------------
 
@@ -261,48 +266,85 @@ class Ledger:
             return None
         return Answered(_row(found[:4], {}), *found[4:])
 
-    def rows(self) -> Iterator[tuple[int, Row]]:
+    def rows(self, varied: Mapping[str, Any] | None = None) -> Iterator[tuple[int, Row]]:
         """Yield number and row of the points that have an answer, in order.
 
         A point that has only its coarse answer gives that one, with the status "preview".
+
+        Parameters
+        ----------
+        varied : mapping, optional
+            Only the points with these values of the varied keys.
         """
-        query = """
+        only, values = (
+            ("", ()) if varied is None else ("AND varied = ?", (json.dumps(dict(varied)),))
+        )
+        query = f"""
             SELECT number, varied, a.status, a.numbers, a.message, a.seconds,
                    b.status, b.numbers, b.message, b.seconds
             FROM points LEFT JOIN answers a USING (identity)
             LEFT JOIN answers b ON b.identity = points.preview
-            WHERE a.status IS NOT NULL OR b.status IS NOT NULL ORDER BY number"""
-        for number, varied, *both in self._base.execute(query):
-            values = json.loads(varied)
+            WHERE (a.status IS NOT NULL OR b.status IS NOT NULL) {only} ORDER BY number"""
+        for number, text, *both in self._base.execute(query, values):
             if both[0] is not None:
-                yield number, _row(both[:4], values)
+                yield number, _row(both[:4], json.loads(text))
             else:
                 status = "preview" if both[4] in ("converged", "coarse") else both[4]
-                yield number, _row((status, *both[5:]), values)
+                yield number, _row((status, *both[5:]), json.loads(text))
+
+    def tally(self) -> dict[str, tuple[int, float, float]]:
+        """Return number, weight and seconds of the points of each status.
+
+        The statuses "waiting" and "running" are those of the points without an answer; seconds
+        are those that the answers took.
+        """
+        query = """
+            SELECT COALESCE(answers.status, CASE WHEN running.identity IS NULL THEN ? ELSE ? END),
+                   COUNT(*), TOTAL(weight), TOTAL(answers.seconds)
+            FROM points LEFT JOIN answers USING (identity)
+            LEFT JOIN running ON running.identity = points.identity GROUP BY 1"""
+        return {row[0]: row[1:] for row in self._base.execute(query, (WAITING, RUNNING))}
 
     def counts(self) -> dict[str, int]:
         """Return how many points there are of each status, "waiting" and "running" included."""
-        query = """
-            SELECT COALESCE(answers.status, CASE WHEN running.identity IS NULL THEN ? ELSE ? END),
-                   COUNT(*)
-            FROM points LEFT JOIN answers USING (identity)
-            LEFT JOIN running ON running.identity = points.identity GROUP BY 1"""
-        return dict(self._base.execute(query, (WAITING, RUNNING)))
+        return {status: number for status, (number, _, _) in self.tally().items()}
 
     def work(self) -> tuple[float, float, float]:
         """Return the weight and the seconds of the points that are done, and the weight of all."""
+        found = self.tally()
+        done = [w for status, (_, w, _) in found.items() if status not in (WAITING, RUNNING)]
+        return sum(done), sum(s for _, _, s in found.values()), sum(w for _, w, _ in found.values())
+
+    def previews(self) -> tuple[int, int]:
+        """Return for how many points a coarse answer is asked, and how many of these are there."""
         query = """
-            SELECT TOTAL(CASE WHEN answers.status IS NULL THEN 0 ELSE weight END),
-                   TOTAL(answers.seconds), TOTAL(weight)
-            FROM points LEFT JOIN answers USING (identity)"""
+            SELECT COUNT(preview), COUNT(answers.identity)
+            FROM points LEFT JOIN answers ON answers.identity = preview
+            WHERE preview IS NOT NULL"""
         return self._base.execute(query).fetchone()
 
-    def doubtful(self, most: int = 50) -> list[tuple[Entry, str, str]]:
-        """Return points that are done but not well: the entry, its status and its message."""
+    def sets(self) -> list[tuple[dict[str, Any], int, int]]:
+        """Return the sets of varied values in order: values, points, points with an answer."""
+        query = """
+            SELECT varied, COUNT(*), COUNT(answers.identity)
+            FROM points LEFT JOIN answers USING (identity) GROUP BY varied ORDER BY MIN(number)"""
+        return [(json.loads(row[0]), row[1], row[2]) for row in self._base.execute(query)]
+
+    def doubtful(self, most: int = 50, failed: bool | None = None) -> list[tuple[Entry, str, str]]:
+        """Return points that are done but not well: the entry, its status and its message.
+
+        Parameters
+        ----------
+        most : int
+            No more than this many, the first ones.
+        failed : bool, optional
+            Only those that failed, or only the others.
+        """
         query = """
             SELECT points.*, status, message FROM points JOIN answers USING (identity)
-            WHERE status != 'converged' ORDER BY number LIMIT ?"""
-        return [(_entry(r[:6]), r[6], r[7]) for r in self._base.execute(query, (most,))]
+            WHERE status != 'converged' AND COALESCE((status = 'failed') = ?, 1)
+            ORDER BY number LIMIT ?"""
+        return [(_entry(r[:6]), r[6], r[7]) for r in self._base.execute(query, (failed, most))]
 
     def running(self) -> list[tuple[Entry, str, float]]:
         """Return the points being computed: the entry, the worker and when it began."""
@@ -312,6 +354,23 @@ class Ledger:
         return [(_entry(r[:6]), r[6], r[7]) for r in self._base.execute(query)]
 
     # -------------------------------------------------------------------------------------------
+
+    def _reader(self) -> sqlite3.Connection:
+        """Open the file to be read, where nothing can be written either."""
+        base = _connect(self.path, "mode=ro")
+        try:
+            base.execute("SELECT COUNT(*) FROM sqlite_master")
+            return base
+        except sqlite3.OperationalError:
+            # The log's index can be neither found nor made: nobody writes, nobody can.
+            base.close()
+        log = self.path.with_name(f"{LEDGER}-wal")
+        if not (log.exists() and log.stat().st_size):
+            return _connect(self.path, "mode=ro&immutable=1")
+        self._aside = tempfile.TemporaryDirectory()
+        for path in (self.path, log):
+            shutil.copy(path, self._aside.name)
+        return _connect(Path(self._aside.name, LEDGER), "mode=ro")
 
     def _make(self) -> None:
         self._base.execute("PRAGMA journal_mode = WAL")
@@ -349,16 +408,14 @@ class Ledger:
             raise
 
 
-def _connect(path: Path, write: bool) -> sqlite3.Connection:
+def _connect(path: Path, how: str = "") -> sqlite3.Connection:
     # Autocommit: transactions are begun and ended by hand, see `Ledger._change`.
     try:
-        if write:
-            base = sqlite3.connect(path, timeout=30, isolation_level=None)
+        base = sqlite3.connect(
+            f"{path.absolute().as_uri()}?{how}", timeout=30, isolation_level=None, uri=True
+        )
+        if not how:
             base.execute("PRAGMA synchronous = FULL")  # a power cut must not undo an answer
-        else:
-            base = sqlite3.connect(
-                f"{path.absolute().as_uri()}?mode=ro", timeout=30, isolation_level=None, uri=True
-            )
     except sqlite3.OperationalError as error:
         raise InputError(f"{path}: cannot be opened: {error}") from None
     return base

@@ -64,13 +64,13 @@ def holder_of(folder: Path) -> dict[str, object] | None:
     path = folder / LOCK
     if not path.exists():
         return None
-    base = sqlite3.connect(path, timeout=0, isolation_level=None)
+    # A reader's lock: it asks for no right to write, and two who ask do not see each other.
+    base = sqlite3.connect(f"{path.absolute().as_uri()}?mode=ro", timeout=0, uri=True)
     try:
-        base.execute("BEGIN EXCLUSIVE")
-        base.execute("ROLLBACK")
+        base.execute("SELECT COUNT(*) FROM sqlite_master")
         return None
-    except sqlite3.OperationalError:
-        return _holder(folder) or {}
+    except sqlite3.OperationalError as error:
+        return (_holder(folder) or {}) if "locked" in str(error) else None
     finally:
         base.close()
 
