@@ -8,7 +8,8 @@ import pytest
 import dda
 import shapes
 from dda.beams import point_dipole
-from dda.response.multipoles import multipoles
+from dda.response.multipoles import averaged_multipoles, multipoles
+from dda.response.tmatrix_solve import t_matrix
 from validation.compare import permittivity
 from validation.mie import sphere
 
@@ -62,3 +63,12 @@ def test_other_light_than_a_plane_wave_is_refused():
     solved = dda.solve(system, light, tolerance=1e-2)
     with pytest.raises(dda.InputError, match="plane wave"):
         multipoles(solved)
+
+
+def test_averages_of_a_sphere_are_its_parts_in_any_light():
+    system = ball().system
+    c_ext, c_sca = averaged_multipoles(t_matrix(system, order=2, residual=1e-5))
+    parts = multipoles(ball(), order=2)
+    # a sphere on a lattice of 16 cells is one to about a per cent of the dipole
+    assert np.allclose(c_ext, parts.c_ext, atol=0.01 * parts.c_ext[0, 0])
+    assert np.allclose(c_sca, parts.c_sca, atol=0.01 * parts.c_sca[0, 0])

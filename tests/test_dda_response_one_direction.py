@@ -11,6 +11,7 @@ from dda.response import scattering_amplitude
 from dda.response.far_field import sphere_quadrature
 from dda.response.one_direction import (
     differential_scattering,
+    from_two,
     one_direction,
     radiation_pressure,
 )
@@ -130,3 +131,21 @@ def test_differential_scattering_integrates_to_the_cross_section():
 def test_a_direction_of_no_length_is_refused():
     with pytest.raises(dda.InputError, match="direction"):
         one_direction(tilted_rod(), (0, 0, 0))
+
+
+def test_any_two_orthogonal_polarizations_will_do():
+    system = tilted_rod()
+    both = one_direction(system, (1, 1, 2), tolerance=1e-5)
+    e1, e2 = both.axes
+    one = both.polarized((2 * e1 + 1j * e2) / np.sqrt(5))
+    two = both.polarized((1j * e1 + 2 * e2) / np.sqrt(5))  # conj(e).f = 0
+    again = from_two(one, two, both.error)
+    # sums of the same two solutions: rounding
+    assert np.allclose(again.first.p, both.first.p, atol=1e-9 * abs(both.first.p).max())
+    assert np.allclose(again.second.p, both.second.p, atol=1e-9 * abs(both.first.p).max())
+    assert np.allclose(again.mueller_matrices(ANGLES), both.mueller_matrices(ANGLES), rtol=1e-7)
+
+
+def test_outgoing_directions_lie_at_their_angles():
+    both = ball()
+    assert np.allclose(both.outgoing(ANGLES, 70) @ both.direction, np.cos(np.deg2rad(ANGLES)))

@@ -6,7 +6,7 @@ import pytest
 
 import dda
 from dda.response.tmatrix import TMatrix
-from dda.response.tmatrix_file import load_t_matrix, save_t_matrix
+from dda.response.tmatrix_file import load_t_matrix, save_t_matrix, t_matrix_arrays
 from dda.response.vector_waves import wave_count
 
 
@@ -75,3 +75,17 @@ def test_other_files_are_refused(tmp_path):
         del file["origin"]
     with pytest.raises(dda.InputError, match="cannot be read"):
         load_t_matrix(other)
+
+
+def test_a_group_of_another_file_is_read(tmp_path):
+    t, path = example(), tmp_path / "point.h5"
+    with h5py.File(path, "w") as file:
+        for name, values, _, _ in t_matrix_arrays(t):
+            file[f"t_matrix/{name}"] = values
+    back = load_t_matrix(path, "t_matrix")
+    assert np.array_equal(back.matrix, t.matrix)
+    assert (back.status, back.order_error) == (t.status, t.order_error)
+    with pytest.raises(dda.InputError, match='load group "t_matrix"'):
+        load_t_matrix(path)
+    with pytest.raises(dda.InputError, match="cannot be read"):
+        load_t_matrix(path, "elsewhere")

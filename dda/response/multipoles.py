@@ -10,6 +10,7 @@ from ..errors import InputError
 from ..lattice.solution import Polarization
 from ..light import PlaneWave
 from .far_field import quadrature_order
+from .tmatrix import TMatrix
 from .vector_waves import moments_of, plane_wave_coefficients, real_to_complex, wave_labels
 
 
@@ -100,3 +101,36 @@ def multipoles(polarization: Polarization, order: int | None = None, centre=None
         amplitudes=outgoing,
         centre=middle,
     )
+
+
+def averaged_multipoles(t: TMatrix) -> tuple[np.ndarray, np.ndarray]:
+    """Parts of the orientation averages of C_ext and C_sca by kind and order of multipole.
+
+    Parameters
+    ----------
+    t : TMatrix
+
+    Returns
+    -------
+    c_ext, c_sca : ndarray, shape (2, N)
+        nm^2; rows and columns as in `Multipoles`. Of C_sca the parts are those of the radiating
+        multipole, whatever the light excited.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> from dda.response.tmatrix_solve import t_matrix
+    >>> cells = shapes.voxelize(shapes.sphere(diameter=30, material="gold"), cells=8)
+    >>> c_ext, c_sca = averaged_multipoles(t_matrix(dda.system(cells, wavelength=530)))
+    >>> bool(c_sca[0, 0] > 0.99 * c_sca.sum())  # an electric dipole
+    True
+    """
+    kind, n, _ = t.labels.T
+    place = (1 - kind) * t.order + n - 1
+    factor = 2 * np.pi / t.k**2
+    taken = -factor * np.diag(t.matrix).real
+    radiated = factor * np.sum(abs(t.matrix) ** 2, axis=1)
+    c_ext, c_sca = (
+        np.bincount(place, part, 2 * t.order).reshape(2, t.order) for part in (taken, radiated)
+    )
+    return c_ext, c_sca

@@ -88,6 +88,10 @@ class OneDirection:
         one, two = (self.cross_sections(p) for p in pair)
         return one.c_ext - two.c_ext, one.c_abs - two.c_abs
 
+    def outgoing(self, angles, azimuth: float = 0.0) -> np.ndarray:
+        """Unit vectors of light scattered by angles in degrees, shape (a, 3)."""
+        return scattering_plane(self.direction, *self.axes, np.atleast_1d(angles), azimuth)[0]
+
     def amplitude_matrices(self, angles, azimuth: float = 0.0) -> np.ndarray:
         """Amplitude matrices [[S2, S3], [S4, S1]] (Bohren & Huffman 1983), shape (a, 2, 2).
 
@@ -149,6 +153,42 @@ def one_direction(
         settle(system, plane_wave(direction, e), tolerance=tolerance, limit=limit) for e in (e1, e2)
     )
     return OneDirection(first.polarization, second.polarization, (first.error + second.error) / 2)
+
+
+def from_two(one: Polarization, two: Polarization, error) -> OneDirection:
+    """The response to one direction from solutions for two polarizations.
+
+    Parameters
+    ----------
+    one, two : Polarization
+        For plane waves of one direction, their polarizations orthogonal (``conj(e).f = 0``).
+    error : ndarray, shape (3,)
+        Mean of the solver's errors of C_ext, C_abs and C_sca, nm^2.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> cells = shapes.voxelize(shapes.sphere(diameter=30, material="gold"), cells=8)
+    >>> system = dda.system(cells, wavelength=530)
+    >>> left, right = (dda.settle(system, dda.plane_wave(polarization=p)) for p in ("left", "right"))
+    >>> both = from_two(left.polarization, right.polarization, left.error)
+    >>> bool(abs(both.dichroism()[0]) < 1e-6 * left.sections.c_ext)
+    True
+    """
+    lights: list[PlaneWave] = [one.light, two.light]  # type: ignore[list-item]
+    direction = lights[0].direction
+
+    def linear(e: np.ndarray) -> Polarization:
+        a, b = (np.vdot(light.polarization, e) for light in lights)
+        return replace(
+            one,
+            light=PlaneWave(direction, e.astype(complex)),
+            p=a * one.p + b * two.p,
+            incident=a * one.incident + b * two.incident,
+        )
+
+    e1, e2 = transverse(direction)
+    return OneDirection(linear(e1), linear(e2), np.asarray(error))
 
 
 def _any_transverse(direction) -> np.ndarray:

@@ -50,26 +50,39 @@ def save_t_matrix(t: TMatrix, path: str | Path) -> None:
     draft = path.with_name(path.name + ".new")
     with h5py.File(draft, "w") as file:
         file.attrs["format"] = FORMAT
-        file.attrs["status"] = t.status
         for name, text in _NOTES.items():
             file.attrs[name] = text
-        data = file.create_dataset("matrix", data=t.matrix)
-        data.attrs["unit"] = "1"
-        kind, n, m = t.labels.T
-        names = np.array(_KINDS, dtype=object)[kind]
-        file.create_dataset("wave_kind", data=names, dtype=h5py.string_dtype())
-        file.create_dataset("wave_order_n", data=n)
-        file.create_dataset("wave_degree_m", data=m)
-        place = file.create_dataset("origin", data=t.origin)
-        place.attrs.update(unit="nm", meaning="centre of the waves in the particle's coordinates")
-        for name, (unit, meaning) in _NUMBERS.items():
-            number = file.create_dataset(name, data=float(getattr(t, name)))
-            number.attrs.update(unit=unit, meaning=meaning)
+        for name, values, unit, about in t_matrix_arrays(t):
+            file[name] = values
+            file[name].attrs.update(unit=unit, about=about)
     os.replace(draft, path)
 
 
-def load_t_matrix(path: str | Path) -> TMatrix:
-    """Read a T-matrix from a file of `save_t_matrix`.
+def t_matrix_arrays(t: TMatrix) -> list[tuple[str, np.ndarray, str, str]]:
+    """All that a T-matrix holds, as arrays with names, units and their meaning."""
+    kind, n, m = t.labels.T
+    about = " ".join(f"{text}." for text in _NOTES.values())
+    arrays = [
+        ("matrix", t.matrix, "1", about),
+        ("wave_kind", np.array(_KINDS, dtype="S")[kind], "", "of each row and column"),
+        ("wave_order_n", n, "", "of each row and column"),
+        ("wave_degree_m", m, "", "of each row and column"),
+        ("origin", t.origin, "nm", "centre of the waves in the particle's coordinates"),
+        ("status", np.array(t.status, dtype="S"), "", "of the solver"),
+    ]
+    for name, (unit, meaning) in _NUMBERS.items():
+        arrays.append((name, np.array(float(getattr(t, name))), unit, meaning))
+    return arrays
+
+
+def load_t_matrix(path: str | Path, group: str | None = None) -> TMatrix:
+    """Read a T-matrix from a file of `save_t_matrix`, or from a point's file of a run.
+
+    Parameters
+    ----------
+    path : str or Path
+    group : str, optional
+        Where in the file it is: "t_matrix" in the files of a run.
 
     Raises
     ------
@@ -84,13 +97,17 @@ def load_t_matrix(path: str | Path) -> TMatrix:
     try:
         with h5py.File(path, "r") as file:
             found = file.attrs.get("format", "none")
-            if found != FORMAT:
-                raise InputError(f"{path} is not a T-matrix file: format {found}, not {FORMAT}")
-            numbers = {name: float(file[name][()]) for name in _NUMBERS}
+            if group is None and found != FORMAT:
+                inside = ' (of a run\'s file, load group "t_matrix")' if "t_matrix" in file else ""
+                raise InputError(
+                    f"{path} is not a T-matrix file: format {found}, not {FORMAT}{inside}"
+                )
+            place = file if group is None else file[group]
+            numbers = {name: float(place[name][()]) for name in _NUMBERS}
             return TMatrix(
-                matrix=file["matrix"][()],
-                origin=file["origin"][()],
-                status=str(file.attrs["status"]),
+                matrix=place["matrix"][()],
+                origin=place["origin"][()],
+                status=place["status"][()].decode(),
                 **numbers,
             )
     except (OSError, KeyError) as error:
