@@ -14,21 +14,20 @@ from dda.lattice import System, system
 from dda.lattice.workers import Workers
 from dda.response import Settled, settle
 from dda.response.averages import OrientationAverage
-from dda.response.orientation import tumbling
+from dda.response.orientation import Tumbling, tumbling
 from dda.study.estimate import expected_steps
 from dda.study.geometry import Geometries, Geometry, usable_memory
-from dda.study.lights import lights_of
+from dda.study.lights import light_count, lights_of
 from dda.study.media import Media, media_of
 from dda.study.more import NOTHING_MORE, More
 from dda.study.points import Point
+from dda.study.recycling import Recycled
+from dda.study.scattering import Scattered, of_average, of_direction, over_levels, partner
 
 #: Called with a message and the part of the current point that is done, 0 to 1.
 Watch = Callable[[str, float], None]
 #: Order of the statuses from good to bad, as far as they are known; others are worse.
 _STATUSES = ("converged", "limit", "stalled")
-# Solutions kept for first guesses at the next wavelength, and the cells up to which they are
-# worth their memory.
-_KEPT, _LARGEST_KEPT = 5, 500_000
 
 
 @dataclass
@@ -38,12 +37,11 @@ class Memory:
     Attributes
     ----------
     geometries : Geometries
-    solutions : dict
-        The last dipoles by lattice and light.
+    solutions : Recycled
     """
 
     geometries: Geometries
-    solutions: dict[tuple, list[np.ndarray]] = field(default_factory=dict)
+    solutions: Recycled = field(default_factory=Recycled)
 
 
 @dataclass(frozen=True, eq=False)
@@ -82,19 +80,26 @@ def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf
         What refinement to a target may take.
     """
     geometry = memory.geometries.of(point)
+    memory.solutions.only_for(point.geometry_key)
     finest: list[tuple[float, float]] = []
+    scattered: list[Scattered | None] = []
 
     def solve(across: float) -> Level:
         started = time.perf_counter()
         level = memory.geometries.level(geometry, across)
         if point.averaged:
-            average = _average(point, level, watch)
+            tumbled = _average(point, level, watch)
+            average = tumbled.average
+            assert tumbled.t_matrix is not None
+            scattered.append(of_average(point, average, tumbled.t_matrix))
             finest.append((average.area, average.c_abs + average.c_sca - average.c_ext))
             return _averaged_level(level, average, time.perf_counter() - started)
-        solved = solutions(point, level, memory, watch)
-        balance = float(np.mean([each.sections.balance for each in solved]))
+        solved = solutions(point, level, memory, watch, both=True)
+        count = light_count(point)
+        scattered.append(of_direction(point, solved, count))
+        balance = float(np.mean([each.sections.balance for each in solved[:count]]))
         finest.append((solved[0].sections.area, balance))
-        return _level(level, solved, time.perf_counter() - started)
+        return _level(level, solved, count, time.perf_counter() - started)
 
     target = point.accuracy.target
     if target is None:
@@ -111,7 +116,9 @@ def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf
             seconds=seconds,
         )
     area, balance = finest[-1]
-    return Answer(refined, area, balance, refined.levels[-1].cells)
+    spacings = [level.spacing for level in refined.levels]
+    more = over_levels(spacings, scattered, geometry.size, to_zero=target is not None)
+    return Answer(refined, area, balance, refined.levels[-1].cells, more)
 
 
 def worst(statuses: Iterable[str]) -> str:
@@ -119,20 +126,27 @@ def worst(statuses: Iterable[str]) -> str:
     return max(statuses, key=lambda s: _STATUSES.index(s) if s in _STATUSES else len(_STATUSES))
 
 
-def solutions(point: Point, geometry: Geometry, memory: Memory, watch: Watch) -> list[Settled]:
-    """Solve a point on one lattice, for every incident field of `lights_of`."""
+def solutions(
+    point: Point, geometry: Geometry, memory: Memory, watch: Watch, *, both: bool = False
+) -> list[Settled]:
+    """Solve a point on one lattice, for every incident field of `lights_of`.
+
+    With `both`, the other polarization follows where ``[scattering]`` needs it.
+    """
     label = _label(point, geometry)
     matrix, media = _matrix(point, geometry, watch)
     cells = geometry.cells
     lights = lights_of(point, geometry, matrix.k)
+    if both:
+        lights = (*lights, *partner(point, lights))
     indices = media.relative_index(point.wavelength).values()
     tolerance = tolerance_of(point)
     steps = max(expected_steps(m, max(cells.shape), tolerance) for m in indices)
     monitor = _monitor(label, steps * len(lights), watch)
     out = []
     for number, light in enumerate(lights):
-        key = (id(cells), str(point.direction), str(point.polarization), number, matrix.n)
-        previous = memory.solutions.get(key, [])
+        key = (round(geometry.spacing, 9), point.tables.light.model_dump_json(), number, matrix.n)
+        previous = memory.solutions.nearest(key, point.wavelength)
         settled = settle(
             matrix,
             light,
@@ -141,10 +155,14 @@ def solutions(point: Point, geometry: Geometry, memory: Memory, watch: Watch) ->
             monitor=monitor,
             method=point.solver.method,
         )
-        if matrix.n <= _LARGEST_KEPT:
-            memory.solutions[key] = [settled.polarization.p, *previous[: _KEPT - 1]]
+        memory.solutions.keep(key, point.wavelength, settled.polarization.p)
         out.append(settled)
     return out
+
+
+def system_of(point: Point, geometry: Geometry, watch: Watch) -> System:
+    """Return the system of a point on one lattice."""
+    return _matrix(point, geometry, watch)[0]
 
 
 def _label(point: Point, geometry: Geometry) -> str:
@@ -167,14 +185,14 @@ def _matrix(point: Point, geometry: Geometry, watch: Watch) -> tuple[System, Med
     return matrix, media
 
 
-def _average(point: Point, geometry: Geometry, watch: Watch) -> OrientationAverage:
+def _average(point: Point, geometry: Geometry, watch: Watch) -> Tumbling:
     matrix, _ = _matrix(point, geometry, watch)
     label = _label(point, geometry)
 
     def columns(done: int, of: int) -> None:
         watch(f"{label}: multipole {done} of {of}", done / max(of, 1))
 
-    return tumbling(matrix, tolerance=tolerance_of(point), monitor=columns).average
+    return tumbling(matrix, tolerance=tolerance_of(point), monitor=columns)
 
 
 def _averaged_level(geometry: Geometry, average: OrientationAverage, seconds: float) -> Level:
@@ -197,16 +215,19 @@ def tolerance_of(point: Point) -> float:
     return point.solver.tolerance if target is None else min(point.solver.tolerance, target / 10)
 
 
-def _level(geometry: Geometry, solved: list[Settled], seconds: float) -> Level:
+def _level(geometry: Geometry, solved: list[Settled], count: int, seconds: float) -> Level:
+    """A level from its solutions; the cross sections are the mean of the first `count`."""
+
     def mean(values: Iterable) -> tuple[float, float, float]:
         ext, absorbed, scattered = np.mean(list(values), axis=0)
         return float(ext), float(absorbed), float(scattered)
 
     polarizations = [each.polarization for each in solved]
+    lights = solved[:count]
     return Level(
         spacing=geometry.spacing,
-        sections=mean((s.sections.c_ext, s.sections.c_abs, s.sections.c_sca) for s in solved),
-        solver_error=mean(s.error for s in solved),
+        sections=mean((s.sections.c_ext, s.sections.c_abs, s.sections.c_sca) for s in lights),
+        solver_error=mean(s.error for s in lights),
         cells=polarizations[0].system.n,
         iterations=sum(p.iterations for p in polarizations),
         products=sum(p.products for p in polarizations),
