@@ -170,7 +170,8 @@ def from_two(one: Polarization, two: Polarization, error) -> OneDirection:
     >>> import dda, shapes
     >>> cells = shapes.voxelize(shapes.sphere(diameter=30, material="gold"), cells=8)
     >>> system = dda.system(cells, wavelength=530)
-    >>> left, right = (dda.settle(system, dda.plane_wave(polarization=p)) for p in ("left", "right"))
+    >>> left = dda.settle(system, dda.plane_wave(polarization="left"))
+    >>> right = dda.settle(system, dda.plane_wave(polarization="right"))
     >>> both = from_two(left.polarization, right.polarization, left.error)
     >>> bool(abs(both.dichroism()[0]) < 1e-6 * left.sections.c_ext)
     True

@@ -19,6 +19,7 @@ from dda.study.mistakes import Mistake
 from dda.study.near_region import check_near
 from dda.study.points import Point, points_of
 from dda.study.reader import Study
+from dda.study.scattering import check_scattering
 
 #: |m| k d up to which the cells resolve the wave inside the particle well, and at all
 #: (Draine & Flatau 1994 ask for 1, and for less where the accuracy matters).
@@ -121,6 +122,8 @@ def prepare(study: Study) -> Prepared:
         media = media_of(points[0], geometry.particle.materials)
         check_media(media, [point.wavelength for point in points])
         check_near(study, media, geometry)
+        for tables in {id(point.tables): point.tables for point in points}.values():
+            check_scattering(tables)
         check_cells(geometry, points[0])
         check_beam(points[0], media, geometry, [point.wavelength for point in points])
     except Mistake as mistake:

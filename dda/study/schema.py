@@ -24,6 +24,7 @@ from dda.study.beam_table import BeamTable
 from dda.study.fields import Positive, Table, Vector
 from dda.study.near_table import NearFieldTable
 from dda.study.parts_table import PartTable
+from dda.study.scattering_table import ScatteringTable
 
 #: Polarizations that have a name.
 NAMED_POLARIZATIONS = ("left", "right", "unpolarized")
@@ -296,5 +297,6 @@ class StudyTables(Table):
     solver: SolverTable = SolverTable()
     limits: LimitsTable = LimitsTable()
     near_field: NearFieldTable | None = None
+    scattering: ScatteringTable | None = None
     materials: dict[str, dict[str, Any]] = Field(default_factory=dict)
     vary: dict[str, Any] = Field(default_factory=dict)
