@@ -12,10 +12,16 @@ The main job reads like the method, a line each:
 True
 """
 
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
 from .errors import ComputationError, InputError
-from .lattice import Polarization, System, solve, system
-from .light import PlaneWave, plane_wave
-from .response import CrossSections, Settled, cross_sections, settle
+
+if TYPE_CHECKING:
+    from .lattice import Polarization, System, solve, system
+    from .light import PlaneWave, plane_wave
+    from .report.dataset import open_point, open_run
+    from .response import CrossSections, Settled, cross_sections, settle
 
 __all__ = [
     "ComputationError",
@@ -26,8 +32,35 @@ __all__ = [
     "Settled",
     "System",
     "cross_sections",
+    "open_point",
+    "open_run",
     "plane_wave",
     "settle",
     "solve",
     "system",
 ]
+
+# Where a name lives: its module is imported when it is first asked for, because compiled kernels
+# and data structures take longer to import than a command such as `dda status` to answer.
+_HOMES = {
+    "lattice": ("Polarization", "System", "solve", "system"),
+    "light": ("PlaneWave", "plane_wave"),
+    "report.dataset": ("open_point", "open_run"),
+    "response": ("CrossSections", "Settled", "cross_sections", "settle"),
+}
+_HOME_OF = {name: home for home, names in _HOMES.items() for name in names}
+
+
+def __getattr__(name: str) -> Any:
+    if name in _HOME_OF:
+        found = getattr(import_module(f"dda.{_HOME_OF[name]}"), name)
+    elif name in _HOMES:
+        found = import_module(f"dda.{name}")
+    else:
+        raise AttributeError(f"module 'dda' has no attribute {name!r}")
+    globals()[name] = found
+    return found
+
+
+def __dir__() -> list[str]:
+    return sorted({*globals(), *__all__, "lattice", "light", "response"})

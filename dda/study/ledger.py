@@ -245,6 +245,14 @@ class Ledger:
         for row in self._base.execute("SELECT * FROM points ORDER BY number"):
             yield _entry(row)
 
+    def entry(self, point: int | str) -> Entry | None:
+        """Return a point by its number or its identity."""
+        column = "number" if isinstance(point, int) else "identity"
+        row = self._base.execute(
+            f"SELECT * FROM points WHERE {column} = ? ORDER BY number", (point,)
+        ).fetchone()
+        return None if row is None else _entry(row)
+
     def known(self) -> dict[str, str]:
         """Return the status of every answer by its identity."""
         return dict(self._base.execute("SELECT identity, status FROM answers"))
