@@ -18,7 +18,7 @@ from dda.errors import ComputationError, InputError
 
 if TYPE_CHECKING:
     from dda.report.folder import RunFolder
-    from dda.study.plan import Prepared
+    from dda.study.prepare import Prepared
 
 OK, FAILED, WRONG_INPUT, INTERRUPTED = 0, 1, 2, 130
 
@@ -56,7 +56,7 @@ def run(options: argparse.Namespace) -> int:
     from dda.report.plan_text import study_lines
     from dda.report.progress import working
     from dda.report.table import spectrum_text
-    from dda.study.plan import prepare
+    from dda.study.prepare import prepare
     from dda.study.reader import read_study
 
     study = read_study(options.study)
@@ -101,7 +101,7 @@ def look(options: argparse.Namespace) -> int:
     if options.study.is_dir():
         return _look_at_run(options)
     from dda.report.scene import draw_particle, show_particle
-    from dda.study.plan import prepare_shape
+    from dda.study.prepare import prepare_shape
     from dda.study.reader import read_study
 
     study = read_study(options.study)

@@ -297,7 +297,7 @@ def test_interrupting_keeps_what_is_finished(study):
 
 
 def test_the_runner_yields_a_row_at_a_time(study):
-    from dda.study.plan import prepare
+    from dda.study.prepare import prepare
     from dda.study.reader import read_study
 
     prepared = prepare(read_study(study()))

@@ -15,7 +15,7 @@ from dda.lattice.sectors import sectors
 from dda.materials import find
 from dda.materials.anisotropic import anisotropic, rotation_matrix
 from dda.response.symmetry import find_sectors
-from dda.study.plan import prepare
+from dda.study.prepare import prepare
 from dda.study.reader import study_from_tables
 
 BENT = np.diag([2.4 + 0.1j, 3.1 + 0.2j, 4.2 + 0.3j])

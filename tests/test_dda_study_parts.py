@@ -10,8 +10,8 @@ import pytest
 import shapes
 from dda.errors import InputError
 from dda.study.particle import build_particle
-from dda.study.plan import prepare
 from dda.study.points import points_of
+from dda.study.prepare import prepare
 from dda.study.reader import read_study, study_from_tables
 
 EXAMPLE = Path(__file__).parent.parent / "dda/study/examples/drilled_cube.toml"

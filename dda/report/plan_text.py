@@ -9,7 +9,8 @@ from dda.study.geometry import Geometry
 from dda.study.lights import beam_text
 from dda.study.memory import bytes_text
 from dda.study.particle import notes_of
-from dda.study.plan import Plan, Prepared
+from dda.study.plan import Plan
+from dda.study.prepare import Prepared
 
 #: Characters in a printed line.
 LINE = 100

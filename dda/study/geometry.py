@@ -77,10 +77,22 @@ class Geometry:
     def memory(self, spacing: float | None = None) -> int:
         """Return the bytes that a solve is expected to take, without making the cells."""
         d = self.spacing if spacing is None else spacing
-        box = tuple(math.ceil(length / d) + 2 for length in self.extent)
-        occupied = self.particle.volume() / d**3 + WINDOW / 2 * self.particle.area() / d**2
-        count = min(math.prod(box), math.ceil(occupied))
-        return memory_estimate((box[0], box[1], box[2]), count, self.precision)
+        return memory_estimate(self._box(d), self.count(d), self.precision)
+
+    def count(self, spacing: float) -> int:
+        """Return about how many cells there are, without making them."""
+        body, surface = self._body
+        occupied = body / spacing**3 + WINDOW / 2 * surface / spacing**2
+        return min(math.prod(self._box(spacing)), math.ceil(occupied))
+
+    def _box(self, spacing: float) -> tuple[int, int, int]:
+        x, y, z = (math.ceil(length / spacing) + 2 for length in self.extent)
+        return x, y, z
+
+    @cached_property
+    def _body(self) -> tuple[float, float]:
+        """Volume and area, which may be sampled: nm^3, nm^2."""
+        return self.particle.volume(), self.particle.area()
 
     @cached_property
     def cells(self) -> shapes.Cells:

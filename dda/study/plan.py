@@ -6,20 +6,16 @@ import math
 import time
 from dataclasses import dataclass
 
-import shapes
 from dda.lattice import system
 from dda.lattice.workers import Workers
-from dda.study.estimate import Cost, expected_steps, measure_step
-from dda.study.geometry import WINDOW, Geometries, Geometry, check_cells, geometry_of
+from dda.study.estimate import Cost, measure_step
+from dda.study.geometry import WINDOW
 from dda.study.levels import tolerance_of
-from dda.study.lights import check_beam, light_count, lights_of
-from dda.study.media import Media, check_media, media_of
+from dda.study.lights import light_count, lights_of
 from dda.study.memory import available_memory
-from dda.study.mistakes import Mistake
-from dda.study.near_region import check_near
-from dda.study.points import Point, points_of
+from dda.study.points import Point
+from dda.study.prepare import Prepared, prepare, steps_at
 from dda.study.reader import Study
-from dda.study.scattering import check_scattering
 
 #: |m| k d up to which the cells resolve the wave inside the particle well, and at all
 #: (Draine & Flatau 1994 ask for 1, and for less where the accuracy matters).
@@ -28,47 +24,6 @@ GOOD_MKD, LARGEST_MKD = 0.5, 1.0
 ALIKE = 1e-3
 #: Cells across the thinnest part from which it is well described.
 ENOUGH_ACROSS = 5.0
-
-
-@dataclass(frozen=True)
-class Prepared:
-    """A study that can be run: every input has been checked, nothing has been computed.
-
-    Attributes
-    ----------
-    study : Study
-    points : tuple of Point
-    geometries : Geometries
-    media : Media
-    """
-
-    study: Study
-    points: tuple[Point, ...]
-    geometries: Geometries
-    media: Media
-
-    @property
-    def geometry(self) -> Geometry:
-        """The particle and its lattice."""
-        return self.geometries.of(self.points[0])
-
-    @property
-    def cells(self) -> shapes.Cells:
-        """The cells of the particle; the coarsest ones where a target is asked for."""
-        return self.geometry.cells
-
-    @property
-    def levels(self) -> tuple[float, ...]:
-        """Cells across of the spacings that are sure to be solved, coarse to fine."""
-        geometry = self.geometry
-        if self.points[0].accuracy.target is not None:
-            return tuple(float(across) for across in geometry.ladder()[:3])
-        return (*geometry.coarser(), geometry.size / geometry.spacing)
-
-    @property
-    def spacing(self) -> float:
-        """The finest spacing that is sure to be solved, nm."""
-        return self.geometry.size / self.levels[-1]
 
 
 @dataclass(frozen=True)
@@ -107,46 +62,6 @@ class Plan:
     figures: tuple[Figure, ...]
 
 
-def prepare(study: Study) -> Prepared:
-    """Check everything about a study that can be checked without solving.
-
-    Raises
-    ------
-    InputError
-        With the file, the line and the key at fault.
-    """
-    points = points_of(study)
-    geometries = Geometries()
-    try:
-        geometry = geometries.of(points[0])
-        media = media_of(points[0], geometry.particle.materials)
-        check_media(media, [point.wavelength for point in points])
-        check_near(study, media, geometry)
-        for tables in {id(point.tables): point.tables for point in points}.values():
-            check_scattering(tables)
-        check_cells(geometry, points[0])
-        check_beam(points[0], media, geometry, [point.wavelength for point in points])
-    except Mistake as mistake:
-        raise study.located(mistake) from None
-    return Prepared(study, points, geometries, media)
-
-
-def prepare_shape(study: Study) -> Geometry:
-    """Check the particle of a study alone, and make its cells.
-
-    Raises
-    ------
-    InputError
-    """
-    point = points_of(study)[0]
-    try:
-        geometry = geometry_of(point)
-        check_cells(geometry, point)
-    except Mistake as mistake:
-        raise study.located(mistake) from None
-    return geometry
-
-
 def make_plan(study: Study) -> Plan:
     """Check a study, measure one step of the solver and say what a run would take.
 
@@ -155,8 +70,7 @@ def make_plan(study: Study) -> Plan:
     InputError
     """
     prepared = prepare(study)
-    memory = prepared.geometry.memory(prepared.spacing)
-    return Plan(prepared, memory, available_memory(), _cost(prepared), validity(prepared))
+    return Plan(prepared, prepared.memory, available_memory(), _cost(prepared), validity(prepared))
 
 
 def validity(prepared: Prepared) -> tuple[Figure, ...]:
@@ -247,9 +161,4 @@ def _cost(prepared: Prepared) -> Cost:
 def _steps(prepared: Prepared, point: Point) -> float:
     """Return the expected steps at all spacings, in units of steps at the finest one."""
     indices = prepared.media.relative_index(point.wavelength).values()
-    finest, tolerance = prepared.levels[-1], tolerance_of(point)
-    steps = sum(
-        max(expected_steps(m, across, tolerance) for m in indices) * (across / finest) ** 3
-        for across in prepared.levels
-    )
-    return light_count(point) * steps
+    return light_count(point) * steps_at(indices, prepared.levels, tolerance_of(point))

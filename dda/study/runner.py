@@ -1,25 +1,49 @@
-"""Points in, rows out."""
+"""A point in, its outcome out, whatever happens on the way."""
 
 from __future__ import annotations
 
 import math
 import time
 from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
 
-import numpy as np
-
-from dda.accuracy import Refined
-from dda.errors import ComputationError
+from dda.accuracy import Level, Refined
+from dda.errors import ComputationError, InputError
 from dda.study.geometry import Geometries
 from dda.study.levels import Answer, Memory, Watch, answer, worst
+from dda.study.more import Array
 from dda.study.points import Point
 from dda.study.rows import Row
+from shapes import ShapeError
 
 _STOPPED = {
     "memory": "a finer lattice would not fit in the memory it may use",
     "minutes": "a finer lattice would not end in the time it may take",
     "ladder": "no finer lattice is planned",
 }
+#: Statuses of a row that are not tried again with another solver.
+_GOOD = ("converged", "coarse")
+
+
+@dataclass(frozen=True, eq=False)
+class Outcome:
+    """What came out of a point.
+
+    Attributes
+    ----------
+    row : Row
+    levels : tuple of Level
+        The answers at each spacing, coarse to fine; empty if it failed.
+    arrays : tuple of Array
+        What else the study asked for.
+    tries : int
+        How often it was computed.
+    """
+
+    row: Row
+    levels: tuple[Level, ...] = ()
+    arrays: tuple[Array, ...] = ()
+    tries: int = 1
 
 
 def run_points(
@@ -28,7 +52,7 @@ def run_points(
     """Solve points one after the other.
 
     Cells and solutions are kept from one point to the next as long as the geometry stays the
-    same. A point that fails for a reason of its own gives a row that says so; the others go on.
+    same. A point that fails gives a row that says so; the others go on.
 
     Parameters
     ----------
@@ -45,29 +69,85 @@ def run_points(
         One a point, in order.
     """
     memory = Memory(geometries or Geometries())
-    started = time.perf_counter()
+    budget = Budget(points[0].limits.minutes if points else None)
     for number, point in enumerate(points):
-        seconds = _share(point, started, len(points) - number)
-        yield _row(point, memory, watch or (lambda message, part: None), seconds)
+        seconds = budget.share(len(points) - number)
+        yield compute(point, memory, watch or (lambda message, part: None), seconds).row
 
 
-def _share(point: Point, started: float, left: int) -> float:
-    """Seconds that this point may take of those the run has left."""
-    if point.limits.minutes is None:
-        return math.inf
-    return max(0.0, 60 * point.limits.minutes - (time.perf_counter() - started)) / left
+class Budget:
+    """The minutes that a run may take, shared out over the points that are left."""
+
+    def __init__(self, minutes: float | None, workers: int = 1) -> None:
+        self._seconds = math.inf if minutes is None else 60 * minutes
+        self._workers = workers
+        self._started = time.perf_counter()
+
+    def share(self, left: int) -> float:
+        """Return the seconds that the next of so many points may take."""
+        if math.isinf(self._seconds):
+            return math.inf
+        rest = self._seconds - (time.perf_counter() - self._started)
+        return max(0.0, rest) * self._workers / max(left, 1)
 
 
-def _row(point: Point, memory: Memory, watch: Watch, seconds: float) -> Row:
+def compute(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf) -> Outcome:
+    """Compute a point; if it fails or does not converge, once more with another solver.
+
+    Parameters
+    ----------
+    point : Point
+    memory : Memory
+    watch : callable
+    seconds : float
+        What refinement to a target may take.
+
+    Returns
+    -------
+    Outcome
+        Of the better try. Only an interruption from outside is raised.
+    """
+    started = time.perf_counter()
+    first = _attempt(point, memory, watch, seconds)
+    if first.row.status in _GOOD or first.tries == 0:
+        return replace(first, tries=1)
+    other = "gmres" if point.solver.method == "bicgstab" else "bicgstab"
+    solver = point.solver.model_copy(update={"method": other})
+    left = seconds - (time.perf_counter() - started)
+    second = _attempt(point.at(point.wavelength, solver=solver), memory, watch, left)
+    best = min(first, second, key=_badness)
+    row = best.row
+    if row.status not in _GOOD:
+        row = replace(row, message=f"{row.message}; with another solver ({other}) as well")
+    total = time.perf_counter() - started
+    return replace(best, row=replace(row, seconds=total), tries=2)
+
+
+def _badness(outcome: Outcome) -> tuple[bool, float]:
+    """Order of two tries: an answer before none, then by the solver's share of the error."""
+    row = outcome.row
+    if row.status in _GOOD:
+        return False, -1.0
+    share = (row.c_ext_solver_error_nm2 + row.c_abs_solver_error_nm2) / abs(row.c_ext_nm2 or 1)
+    return not row.answered, share if math.isfinite(share) else math.inf
+
+
+def _attempt(point: Point, memory: Memory, watch: Watch, seconds: float) -> Outcome:
+    """Compute a point; ``tries`` is 0 where another solver cannot help."""
     started = time.perf_counter()
     try:
         found = answer(point, memory, watch, seconds)
     except MemoryError:
-        return _failed(point, memory, started, "out of memory")
-    except (ComputationError, ArithmeticError, np.linalg.LinAlgError) as error:
-        return _failed(point, memory, started, str(error))
+        return Outcome(_failed(point, memory, started, "out of memory"), tries=0)
+    except (InputError, ShapeError) as error:
+        return Outcome(_failed(point, memory, started, str(error)), tries=0)
+    except (ComputationError, ArithmeticError) as error:
+        return Outcome(_failed(point, memory, started, str(error)))
+    except Exception as error:  # a sweep goes on whatever one point brings up
+        reason = f"{type(error).__name__}: {error}"
+        return Outcome(_failed(point, memory, started, reason))
     status, message = _verdict(point, found.refined)
-    return Row(
+    row = Row(
         wavelength_nm=point.wavelength,
         **_numbers(found, point.averaged),
         cells=found.cells,
@@ -82,6 +162,7 @@ def _row(point: Point, memory: Memory, watch: Watch, seconds: float) -> Row:
         varied=point.varied,
         more=found.more.columns,
     )
+    return Outcome(row, found.refined.levels, found.more.arrays)
 
 
 def _numbers(found: Answer, averaged: bool) -> dict[str, float]:
@@ -122,9 +203,13 @@ def _verdict(point: Point, refined: Refined) -> tuple[str, str]:
 
 
 def _failed(point: Point, memory: Memory, started: float, reason: str) -> Row:
+    try:
+        spacing = memory.geometries.of(point).spacing
+    except (ValueError, MemoryError):  # the particle itself may be what failed
+        spacing = math.nan
     return Row(
         wavelength_nm=point.wavelength,
-        spacing_nm=memory.geometries.of(point).spacing,
+        spacing_nm=spacing,
         seconds=time.perf_counter() - started,
         message=reason,
         varied=point.varied,
