@@ -86,6 +86,7 @@ def draw_scattering(path: Path, points: Iterable[tuple[Row, Arrays]], title: str
         Whether there was anything to draw.
     """
     from matplotlib.figure import Figure
+    from matplotlib.ticker import FuncFormatter
 
     shown = list(_with_angles(points))
     if not shown:
@@ -103,9 +104,12 @@ def draw_scattering(path: Path, points: Iterable[tuple[Row, Arrays]], title: str
         upper.plot(angles[order], _differential(arrays)[p][order], **look)
         lower.plot(angles[order], [_over(-m[0, 1], m[0, 0]) for m in matrix], **look)
     upper.set_yscale("log")
+    plain = FuncFormatter(lambda value, _: f"{value:g}")
+    upper.yaxis.set_major_formatter(plain)
+    if _open_up(upper) < 100:  # with few decades the ticks between them help
+        upper.yaxis.set_minor_formatter(FuncFormatter(_few))
     upper.set_ylabel("dC$_{sca}$/dΩ, unpolarized (nm²/sr)")
     upper.legend(frameon=False, fontsize=9)
-    _open_up(upper)
     lower.axhline(0, color="#000000", lw=0.7)
     lower.set_ylim(-1.05, 1.05)
     lower.set_ylabel("degree of linear\npolarization −S$_{12}$/S$_{11}$")
@@ -144,16 +148,31 @@ def _differential(arrays: Arrays) -> np.ndarray:
     return arrays["scattering/mueller"][..., 0, 0] / float(arrays["scattering/k"]) ** 2
 
 
-def _open_up(axes: Any) -> None:
-    """Show at least a factor of ten: a nearly constant curve then looks constant."""
+def _open_up(axes: Any) -> float:
+    """Show at least a factor of ten, so that a nearly constant curve looks it; return the span."""
     low, high = axes.get_ylim()
     if high < 10 * low:
         middle = math.sqrt(low * high)
-        axes.set_ylim(middle / math.sqrt(10), middle * math.sqrt(10))
+        low, high = middle / math.sqrt(10), middle * math.sqrt(10)
+        axes.set_ylim(low, high)
+    return high / low
+
+
+def _few(value: float, _: object) -> str:
+    """Label of 2 and 5 times a power of ten, none of the others.
+
+    >>> _few(20.0, None), _few(30.0, None)
+    ('20', '')
+    """
+    digit = round(value / 10.0 ** math.floor(math.log10(value) + 1e-9))
+    return f"{value:g}" if digit in (2, 5) else ""
 
 
 def _over(value: float, whole: float) -> float:
-    return value / whole if whole > 0 else math.nan
+    """A ratio, zero where it is zero to rounding."""
+    if not whole > 0:
+        return math.nan
+    return float(value / whole) if abs(value) > 1e-12 * whole else 0.0
 
 
 def _cell(value: object) -> str:
