@@ -1,6 +1,6 @@
 """Error bars: refinement in the spacing and extrapolation."""
 
-from .extrapolation import Estimate, extrapolate
+from .extrapolation import Estimate, constants, extrapolate
 from .refinement import LADDER, Level, Refined, combined, refine_at, refine_to, relative_error
 
 __all__ = [
@@ -9,6 +9,7 @@ __all__ = [
     "Level",
     "Refined",
     "combined",
+    "constants",
     "extrapolate",
     "refine_at",
     "refine_to",

@@ -188,3 +188,15 @@ def _observed_order(d: np.ndarray, y: np.ndarray) -> float:
     best = np.argmin(np.abs(np.log(model[:, 0] / (first / second))))
     inside = 0 < best < len(orders) - 1
     return float(orders[best]) if inside else float("nan")
+
+
+def constants() -> dict[str, float]:
+    """Return the numbers on which the error bars rest, by name."""
+    return {
+        "order": _ORDER,
+        "most_levels": _MOST_LEVELS,
+        "scatter": _SCATTER,
+        "leave": _LEAVE,
+        "step": _STEP,
+        "least": _LEAST,
+    }
