@@ -1,4 +1,4 @@
-"""Incident fields beyond the plane wave: a focused Gaussian beam and a point dipole."""
+"""Incident fields beyond the plane wave: a focused beam, a point dipole, sums of plane waves."""
 
 from __future__ import annotations
 
@@ -230,6 +230,34 @@ def point_dipole(position, moment=(0, 0, 1)) -> PointDipole:
     if p.shape != (3,) or not np.isfinite(p).all() or not p.any():
         raise InputError(f"moment must be three finite numbers, not all zero; got {moment}")
     return PointDipole(_place(position, "position"), p)
+
+
+@dataclass(frozen=True, eq=False)
+class PlaneWaves:
+    """A sum of plane waves, ``sum_q v_q exp(i k a_q.(r - c))``.
+
+    Attributes
+    ----------
+    directions : ndarray, shape (q, 3)
+        Unit vectors a.
+    amplitudes : ndarray of complex, shape (q, 3)
+        v, each perpendicular to its direction.
+    centre : ndarray, shape (3,)
+        c, nm.
+    """
+
+    directions: np.ndarray
+    amplitudes: np.ndarray
+    centre: np.ndarray
+
+    def field(self, positions: np.ndarray, k: float) -> np.ndarray:
+        """Electric field at `positions` (n, 3) in nm for wave number `k` (1/nm), (n, 3)."""
+        return _sum_waves(positions - self.centre, k * self.directions, self.amplitudes)
+
+    def magnetic(self, positions: np.ndarray, k: float) -> np.ndarray:
+        """Magnetic field, in units of that of a plane wave of unit amplitude, (n, 3)."""
+        turned = np.cross(self.directions, self.amplitudes)
+        return _sum_waves(positions - self.centre, k * self.directions, turned)
 
 
 def _real_parts(vector: np.ndarray) -> list[tuple[complex, np.ndarray]]:

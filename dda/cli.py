@@ -14,6 +14,7 @@ from importlib.metadata import version
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from dda.cli_runs import add_commands
 from dda.errors import ComputationError, InputError
 
 if TYPE_CHECKING:
@@ -201,7 +202,9 @@ def _near(prepared: Prepared, folder: RunFolder, debug: bool) -> int:
     from dda.report.near_run import run_near
 
     try:
-        return OK if run_near(prepared, folder) else FAILED
+        point, name = prepared.points[0], prepared.study.name
+        good = run_near(point, folder.rows, prepared.geometries, folder.path, name)
+        return OK if good else FAILED
     except KeyboardInterrupt:
         return _complain("interrupted; the spectrum is kept", INTERRUPTED)
     except Exception as error:
@@ -291,6 +294,8 @@ def _parser() -> argparse.ArgumentParser:
 
     sub = add("plan", plan, "say what a study would run, and how long; solve nothing")
     sub.add_argument("study", type=Path, metavar="STUDY.toml")
+
+    add_commands(add)
 
     sub = add("look", look, "draw a study's particle and its cells, or a run's hot spots")
     sub.add_argument("study", type=Path, metavar="STUDY.toml|RUN")

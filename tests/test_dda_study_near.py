@@ -12,7 +12,7 @@ import dda.report.near_run
 from dda.cli import main
 from dda.errors import ComputationError
 from dda.materials import find
-from dda.study.near import peak_of
+from dda.study.near_levels import peak_of
 from dda.study.rows import Row
 from validation.mie import sphere
 
@@ -208,7 +208,7 @@ def test_near_fields_of_another_study_are_put_aside(near):
 @pytest.mark.parametrize(
     ("lines", "words"),
     [
-        ("", 'near_field: give either region = "plane"'),
+        (LINE + 'points = "a.csv"\n', 'near_field: give either region = "plane"'),
         ('region = "plane"\n', 'region = "plane" needs normal, size, step as well'),
         (LINE + "size = 3\n", 'size: not for region = "line"; it takes start, end, step'),
         (LINE + "magnetik = true\n", 'unknown key; did you mean "magnetic"?'),

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from ..lattice.linear_system import System
 from ..lattice.solution import Polarization
 from ..response.near_field import NearField
 
@@ -112,6 +113,21 @@ def power_density(field: NearField, polarization: Polarization, intensity: float
     ``intensity k Im(eps) |E|^2``, eps relative to the host and E over the incident amplitude.
     Lasers can blind and burn: the numbers are for planning, local safety rules decide.
     """
-    system = polarization.system
-    loss = np.append(system.permittivity.imag, 0.0)[field.material]
-    return intensity * system.k * loss * field.e2 * _PER_NM
+    return density_per_e2(polarization.system, intensity)[field.material] * field.e2
+
+
+def density_per_e2(system: System, intensity: float) -> np.ndarray:
+    """Absorbed power density for ``|E|^2 = 1`` in every material, W/m^3; last that of the host, 0.
+
+    Parameters
+    ----------
+    system : System
+    intensity : float
+        Of the incident light, W/m^2.
+
+    Returns
+    -------
+    ndarray, shape (m + 1,)
+        Taken with -1, the host's index in `NearField.material`, it is zero.
+    """
+    return intensity * system.k * np.append(system.permittivity.imag, 0.0) * _PER_NM

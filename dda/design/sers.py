@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
+import math
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -12,9 +13,14 @@ from shapes import Particle
 from ..errors import InputError
 from ..lattice.linear_system import System
 from ..lattice.solution import Polarization, solve
-from ..light import plane_wave, transverse
 from ..response.far_field import sphere_quadrature
 from ..response.near_field import fields_at
+from .light_modes import LightModes, light_modes
+
+Solver = Callable[[System, object], Polarization]
+
+# Part of the mean square of the incident fields that may be left out of an average.
+_NEGLECT = 1e-5
 
 # Angles of the polarization that average products of four field components exactly.
 _TURNS = np.deg2rad([0.0, 60.0, 120.0])
@@ -77,6 +83,8 @@ class Sers:
         Of the maximum, nm.
     trusted : ndarray of bool, shape (n,)
         See `dda.response.near_field.NearField`.
+    mean_error, maximum_error : float
+        From the average over orientations, if there was one; the cells' error is not in them.
     """
 
     factor: np.ndarray
@@ -84,6 +92,8 @@ class Sers:
     maximum: float
     place: np.ndarray
     trusted: np.ndarray
+    mean_error: float = 0.0
+    maximum_error: float = 0.0
 
 
 def sers_on_surface(
@@ -123,11 +133,10 @@ def sers_averaged(
     points: np.ndarray,
     areas: np.ndarray,
     *,
-    directions: np.ndarray | None = None,
-    weights: np.ndarray | None = None,
     particle: Particle | None = None,
     tolerance: float = 1e-4,
     limit: int = 2000,
+    solver: Solver | None = None,
     progress: Callable[[int, int], None] | None = None,
 ) -> Sers:
     """SERS factors averaged over directions of incidence and all linear polarizations.
@@ -142,50 +151,108 @@ def sers_averaged(
         nm.
     areas : ndarray, shape (n,)
         nm^2.
-    directions : ndarray, shape (m, 3), optional
-        Unit vectors of incidence; by default the 18 of a quadrature that is exact for
-        spherical harmonics up to degree 5, enough for particles below half a wavelength.
-    weights : ndarray, shape (m,), optional
-        Of the directions; equal by default if directions are given.
     particle, tolerance, limit
         As in `fields_at` and `dda.solve`.
+    solver : callable, optional
+        Gives the `Polarization` for a system and a light, instead of `dda.solve`.
     progress : callable, optional
         Called with the number of solves done and of all.
 
     Returns
     -------
     Sers
+        Its orientation errors come from fewer directions and fewer modes.
 
     Notes
     -----
-    Each direction takes two solves a wavelength; fields of other polarizations are sums of the
-    two, and the mean over three of them, 60 degrees apart, is that over all.
+    Plane waves from everywhere are made of few fields (`dda.design.light_modes`), some ten to
+    thirty, which are solved for at both wavelengths; a quadrature over directions then costs
+    nothing. Fields of other polarizations are sums of two, and the mean over three of them,
+    60 degrees apart, is that over all.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> sphere = shapes.sphere(diameter=30, material="gold")
+    >>> cells = shapes.voxelize(sphere, cells=8)
+    >>> systems = [dda.system(cells, wavelength=w, host="water") for w in (540, 560)]
+    >>> found = sers_averaged(*systems, np.array([[20.0, 0, 0]]), np.ones(1), particle=sphere)
+    >>> found.mean > 10 * found.mean_error
+    True
     """
-    if directions is None:
-        directions, weights = sphere_quadrature(3)
-    directions = np.asarray(directions, float).reshape(-1, 3)
-    weights = np.ones(len(directions)) if weights is None else np.asarray(weights, float)
-    if len(weights) != len(directions) or not weights.sum() > 0:
-        raise InputError("give one weight for each direction, with a sum above 0")
-    total = np.zeros(len(points))
+
+    def solved_by_default(system: System, light: object) -> Polarization:
+        return solve(system, light, tolerance=tolerance, limit=limit)
+
+    kept = [modes_of(system) for system in (laser, stokes)]
+    all_solves, done = sum(len(modes.lights) for modes in kept), 0
     trusted = np.ones(len(points), bool)
-    done, solves = 0, 4 * len(directions)
-    for direction, weight in zip(directions, weights / weights.sum(), strict=True):
-        pairs = []
-        for system in (laser, stokes):
-            pair = []
-            for polarization in transverse(direction):
-                light = plane_wave(direction, polarization)
-                solved = solve(system, light, tolerance=tolerance, limit=limit)
-                found = fields_at(solved, points, particle=particle)
-                trusted &= found.trusted
-                pair.append(found.e)
-                done += 1
-                if progress is not None:
-                    progress(done, solves)
-            pairs.append(pair)
-        total += weight * turned_mean(pairs[0], pairs[1])
-    return summed_up(total, points, areas, trusted)
+    fields = []
+    for system, modes in zip((laser, stokes), kept, strict=True):
+        found = np.empty((len(modes.lights), len(points), 3), complex)
+        for row, light in enumerate(modes.lights):
+            solved = (solver or solved_by_default)(system, light)
+            near = fields_at(solved, points, particle=particle)
+            found[row], trusted = near.e, trusted & near.trusted
+            done += 1
+            if progress is not None:
+                progress(done, all_solves)
+        fields.append(found)
+    order = max(_order(system.k, np.ptp(system.positions, axis=0)) for system in (laser, stokes))
+    fewer = [_stronger(modes) for modes in kept]
+    counts = [len(modes.lights) for modes in kept]
+    best = _mean_factor(kept, fields, counts, order)
+    others = [
+        _mean_factor(kept, fields, counts, order - 2),
+        _mean_factor(kept, fields, fewer, order),
+    ]
+    top = int(np.argmax(best))
+    mean = float(np.average(best, weights=areas))
+    return replace(
+        summed_up(best, points, areas, trusted),
+        mean_error=sum(abs(float(np.average(o, weights=areas)) - mean) for o in others),
+        maximum_error=sum(abs(float(o[top] - best[top])) for o in others),
+    )
+
+
+def modes_of(system: System) -> LightModes:
+    """Fields whose sums are plane waves from everywhere, for the box of a system's cells."""
+    d, positions = system.cells.spacing, system.positions
+    low, high = positions.min(axis=0) - d / 2, positions.max(axis=0) + d / 2
+    return modes_of_box(system.k, high - low, (low + high) / 2)
+
+
+def modes_of_box(k: float, extent: np.ndarray, centre: np.ndarray) -> LightModes:
+    """The same for any box; lengths in nm."""
+    directions, weights = sphere_quadrature(_order(k, extent))
+    return light_modes(directions, weights, k=k, extent=extent, centre=centre, neglect=_NEGLECT)
+
+
+def _order(k: float, extent: np.ndarray) -> int:
+    """Order of the quadrature over directions: products of four waves across the particle."""
+    return 6 + math.ceil(k * float(np.linalg.norm(extent)))
+
+
+def _stronger(modes: LightModes) -> int:
+    """How many modes would be kept if ten times as much were neglected."""
+    left = 1 - np.cumsum(modes.strength)
+    return int(np.count_nonzero(left > 10 * _NEGLECT)) + 1
+
+
+def _mean_factor(
+    modes: Sequence[LightModes], fields: Sequence[np.ndarray], counts: Sequence[int], order: int
+) -> np.ndarray:
+    """Mean factor at points from the fields (m, n, 3) of the first so many modes, (n,)."""
+    directions, weights = sphere_quadrature(order)
+    found = [m.coefficients(directions)[:c] for m, c in zip(modes, counts, strict=True)]
+    total = np.zeros(fields[0].shape[1])
+    for number, weight in enumerate(weights / weights.sum()):
+        pairs = [
+            np.einsum("mj,mnc->jnc", coefficients[:, number], field[:count])
+            for coefficients, field, count in zip(found, fields, counts, strict=True)
+        ]
+        total += weight * turned_mean(*pairs)
+    return total
 
 
 def turned_mean(laser, stokes) -> np.ndarray:

@@ -1,14 +1,12 @@
-"""The near field's files in a run's folder, kept up to date wavelength by wavelength."""
+"""The near field's files in a run's folder: written aside, put in place when all are there."""
 
 from __future__ import annotations
 
-import contextlib
 import csv
 import io
 import os
 import secrets
 import shutil
-from collections.abc import Iterator
 from dataclasses import astuple, dataclass, field, fields
 from pathlib import Path
 
@@ -16,21 +14,27 @@ import numpy as np
 
 from dda.errors import InputError
 from dda.report.field_map import draw_field_map
-from dda.report.files import write_aside
-from dda.report.near_hdf5 import vectors_of, wave_names, write_box, write_surface
+from dda.report.near_hdf5 import (
+    heat_of,
+    vectors_of,
+    wave_names,
+    write_body,
+    write_box,
+    write_surface,
+)
 from dda.study.near import NearAnswer, Sampled
 from dda.study.near_numbers import Number
 from shapes import Particle
 
 TABLE, BOX, SURFACE = "near_field.csv", "near_field.h5", "near_field_surface.h5"
-NUMBERS = "near_field_numbers.csv"
+HEAT, NUMBERS = "near_field_heat.h5", "near_field_numbers.csv"
 # Rows of the table that are made into text at a time.
 _AT_ONCE = 50_000
 
 
 @dataclass
 class NearFolder:
-    """Writes answers as they come; every file is whole whenever one looks.
+    """Collects the files of a near field in a folder aside; `finish` puts them in their place.
 
     Attributes
     ----------
@@ -49,74 +53,101 @@ class NearFolder:
     title: str
     numbers: list[Number] = field(default_factory=list)
     files: list[str] = field(default_factory=list)
+    _aside: Path | None = None
 
     def add(self, answer: NearAnswer, numbers: list[Number]) -> None:
         """Write one wavelength."""
-        first = not self.files
         if answer.region.region.kind == "box":
-            with self._growing(BOX, first) as part:
-                write_box(part, answer, self.title)
+            write_box(self._file(BOX), answer, self.title)
         else:
-            with self._growing(TABLE, first) as part:
-                _append_rows(part, answer)
-        with self._growing(SURFACE, first) as part:
-            write_surface(part, answer, np.add(*self.particle.bounds) / 2, self.title)
+            _append_rows(self._file(TABLE), answer)
+        centre = np.add(*self.particle.bounds) / 2
+        write_surface(self._file(SURFACE), answer, centre, self.title)
+        if answer.heat is not None:
+            write_body(self._file(HEAT), answer, self.title)
         if answer.region.region.kind == "plane":
             self._draw(answer)
-        self.add_numbers(numbers)
-
-    def add_numbers(self, numbers: list[Number]) -> None:
-        """Write the table of numbers again, with more of them."""
         self.numbers += numbers
+
+    def finish(self) -> None:
+        """Put all files in their place, the table of numbers last: with it they are complete.
+
+        Raises
+        ------
+        InputError
+            A file cannot be written.
+        """
         text = io.StringIO()
         writer = csv.writer(text, lineterminator="\n")
         writer.writerow([column.name for column in fields(Number)])
         for number in self.numbers:
             writer.writerow([_cell(value) for value in astuple(number)])
-        write_aside(self.path / NUMBERS, text.getvalue().encode())
-        self._note(NUMBERS)
+        self._file(NUMBERS).write_text(text.getvalue(), encoding="utf-8")
+        assert self._aside is not None
+        try:
+            (self.path / NUMBERS).unlink(missing_ok=True)
+            for name in self.files:
+                os.replace(self._aside / name, self.path / name)
+        except OSError as error:
+            raise InputError(f"{self.path}: cannot be written: {error.strerror}") from error
+        finally:
+            self.discard()
+
+    def discard(self) -> None:
+        """Remove what is aside."""
+        if self._aside is not None:
+            shutil.rmtree(self._aside, ignore_errors=True)
+        self._aside = None
 
     def _draw(self, answer: NearAnswer) -> None:
-        name = f"near_field_{answer.wavelength:g}.png"
+        region, stem = answer.region, f"{answer.wavelength:g}.png"
+        title = f"{self.title}, {answer.wavelength:g} nm"
         draw_field_map(
-            self.path / name,
-            answer.region.region,
-            answer.region.best.e2,
+            self._file(f"near_field_{stem}"),
+            region.region,
+            region.best.e2,
             particle=self.particle,
-            trusted=answer.region.best.trusted,
-            title=f"{self.title}, {answer.wavelength:g} nm",
+            trusted=region.best.trusted,
+            title=title,
         )
-        self._note(name)
+        heat = heat_of(answer, region)
+        if heat is not None and heat[0].max() > 0:
+            draw_field_map(
+                self._file(f"near_field_heat_{stem}"),
+                region.region,
+                heat[0],
+                particle=self.particle,
+                trusted=region.best.trusted | (region.material < 0),
+                label="absorbed power density (W/m³)",
+                title=title,
+                logarithmic=False,
+            )
 
-    @contextlib.contextmanager
-    def _growing(self, name: str, first: bool) -> Iterator[Path]:
-        """Give a copy of a file to be added to; it takes the file's place afterwards."""
-        final = self.path / name
-        part = final.with_name(f".{name}.{secrets.token_hex(4)}.part")
+    def _file(self, name: str) -> Path:
+        """Return where a file is written first."""
         try:
-            if final.exists() and not first:
-                shutil.copyfile(final, part)
-            yield part
-            os.replace(part, final)
+            if self._aside is None:
+                self.path.mkdir(parents=True, exist_ok=True)
+                aside = self.path / f".near_field.{secrets.token_hex(4)}.part"
+                aside.mkdir()
+                self._aside = aside
         except OSError as error:
-            raise InputError(f"{final}: cannot be written: {error.strerror or error}") from error
-        finally:
-            part.unlink(missing_ok=True)
-        self._note(name)
-
-    def _note(self, name: str) -> None:
+            raise InputError(f"{self.path}: cannot be written: {error.strerror}") from error
         if name not in self.files:
             self.files.append(name)
+        return self._aside / name
 
 
-def columns_of(sampled: Sampled) -> list[str]:
-    """Return the columns of ``near_field.csv``.
+def columns_of(sampled: Sampled, heat: bool = False) -> list[str]:
+    """Return the columns of ``near_field.csv``; those of heat, in W/m^3, where it is asked for.
 
     The components are those of the finer lattice: of the total field (``ex``, ``hx``) and of the
     scattered one (``ex_scattered``). For unpolarized light those of the first of the two
     incident waves start with ``first_``, those of the second with ``second_``.
     """
     names = ["wavelength_nm", "x_nm", "y_nm", "z_nm", "e2", "e2_error", "trusted", "material"]
+    if heat:
+        names += ["heat_w_per_m3", "heat_error_w_per_m3"]
     for wave in wave_names(sampled):
         for letter, _ in vectors_of(sampled, 0):
             kind, _, rest = letter.partition("_")
@@ -128,10 +159,12 @@ def columns_of(sampled: Sampled) -> list[str]:
 
 def _append_rows(path: Path, answer: NearAnswer) -> None:
     sampled = answer.region
-    columns = columns_of(sampled)
+    heat = heat_of(answer, sampled)
+    columns = columns_of(sampled, heat is not None)
     best, points = sampled.best, sampled.region.points
     names = np.array([*answer.materials, "host"])[sampled.material]
-    parts = [
+    parts = [] if heat is None else [np.stack(heat, axis=1)]
+    parts += [
         vector.view(float).reshape(len(points), 6)
         for wave in range(len(sampled.fields))
         for _, vector in ((n, np.ascontiguousarray(v)) for n, v in vectors_of(sampled, wave))

@@ -20,6 +20,7 @@ _CONVENTIONS = {
     "components": "x, y, z on the last axis; of the finer lattice",
     "material": "index into the attribute materials; -1 is the host",
     "trusted": "0 where the error is not known",
+    "heat": "absorbed power density; zero in the host",
 }
 
 
@@ -57,6 +58,7 @@ def write_box(path: Path, answer: NearAnswer, title: str) -> None:
             _put(group, f"{name}_nm", axis, "nm")
         _put_e2(group, sampled, shape)
         group["material"] = sampled.material.reshape(shape)
+        _put_heat(group, answer, sampled, shape)
         for wave, label in enumerate(wave_names(sampled)):
             for name, vector in vectors_of(sampled, wave):
                 stem = f"{label}_{name}" if label else name
@@ -74,6 +76,31 @@ def write_surface(path: Path, answer: NearAnswer, centre: np.ndarray, title: str
         _put(group, "points_nm", answer.surface.region.points, "nm")
         _put(group, "areas_nm2", answer.cover.areas, "nm^2")
         _put_e2(group, answer.surface, (-1,))
+
+
+def write_body(path: Path, answer: NearAnswer, title: str) -> None:
+    """Add a group for the wavelength with |E|^2 and heat at the middles of the cells."""
+    import h5py
+
+    assert answer.body is not None
+    assert answer.heat is not None
+    with h5py.File(path, "a") as file:
+        group = _group(file, answer, title)
+        group.attrs["intensity_W_per_m2"] = answer.heat.intensity
+        group.attrs["absorbed_power_W"] = answer.heat.total
+        group.attrs["absorbed_power_error_W"] = answer.heat.total_error
+        _put(group, "points_nm", answer.body.region.points, "nm")
+        _put_e2(group, answer.body, (-1,))
+        group["material"] = answer.body.material
+        _put_heat(group, answer, answer.body, (-1,))
+
+
+def heat_of(answer: NearAnswer, sampled: Sampled) -> tuple[np.ndarray, np.ndarray] | None:
+    """Return the absorbed power density at points and its error bar, W/m^3; None if not asked."""
+    if answer.heat is None:
+        return None
+    per_e2 = answer.heat.density[sampled.material]
+    return per_e2 * sampled.best.e2, per_e2 * sampled.best.e2_error
 
 
 def read_surfaces(path: Path) -> list[StoredSurface]:
@@ -135,6 +162,13 @@ def _put_e2(group: Any, sampled: Sampled, shape: tuple[int, ...]) -> None:
     _put(group, "e2", best.e2.reshape(shape), "incident |E|^2")
     _put(group, "e2_error", best.e2_error.reshape(shape), "incident |E|^2")
     group["trusted"] = best.trusted.astype(np.uint8).reshape(shape)
+
+
+def _put_heat(group: Any, answer: NearAnswer, sampled: Sampled, shape: tuple[int, ...]) -> None:
+    heat = heat_of(answer, sampled)
+    if heat is not None:
+        _put(group, "heat", heat[0].reshape(shape), "W/m^3")
+        _put(group, "heat_error", heat[1].reshape(shape), "W/m^3")
 
 
 def _put(group: Any, name: str, values: np.ndarray, unit: str) -> None:

@@ -4,34 +4,58 @@ from __future__ import annotations
 
 import math
 import sys
+from collections.abc import Sequence
+from pathlib import Path
 
 from dda.design.heat import CAUTION
-from dda.report.folder import RunFolder
 from dda.report.near_folder import NearFolder
 from dda.report.progress import ProgressBar
-from dda.study.near import NearAnswer, NearRun, SersAnswer, near_steps
-from dda.study.near_numbers import Number, numbers_of, numbers_of_sers
-from dda.study.plan import Prepared
+from dda.study.geometry import Geometries
+from dda.study.near import NearAnswer, NearRun
+from dda.study.near_emitters import EmitterAnswer
+from dda.study.near_numbers import Number, numbers_of, numbers_of_emitter, numbers_of_sers
+from dda.study.near_plan import near_steps
+from dda.study.near_sers import SersAnswer
+from dda.study.points import Point
+from dda.study.rows import Row
 
 #: Share of points of unknown error from which it is worth a remark.
 _MANY = 0.02
 
 
-def run_near(prepared: Prepared, folder: RunFolder) -> bool:
-    """Compute the near field and write it into the folder of a finished spectrum.
+def run_near(
+    point: Point, rows: Sequence[Row], geometries: Geometries, path: Path, title: str
+) -> bool:
+    """Compute the near field of a point whose spectrum is known, and write it into a folder.
+
+    One unit of work: the files are in their place when it returns, ``near_field_numbers.csv``
+    last, and none of them if it ends early.
+
+    Parameters
+    ----------
+    point : Point
+        Any of the points that share their tables; its wavelength does not matter.
+    rows : sequence of Row
+        The spectrum of these points.
+    geometries : Geometries
+        Where cells that are already made may be found.
+    path : Path
+        The folder; made if need be.
+    title : str
+        Of the pictures.
 
     Returns
     -------
     bool
         Whether the solver converged everywhere.
     """
-    table = prepared.study.tables.near_field
+    table = point.tables.near_field
     assert table is not None
-    near = NearFolder(folder.path, prepared.geometry.particle, prepared.study.name)
+    near = NearFolder(path, geometries.of(point).particle, title)
     good = True
     try:
         with ProgressBar(near_steps(table)) as bar:
-            run = NearRun(prepared, folder.rows, bar.watch, bar.advance)
+            run = NearRun(point, rows, geometries, bar.watch, bar.advance)
             for answer in run.answers():
                 numbers = numbers_of(answer, table.threshold)
                 near.add(answer, numbers)
@@ -39,12 +63,18 @@ def run_near(prepared: Prepared, folder: RunFolder) -> bool:
                 good &= _warn(answer.status, answer.wavelength)
             sers = run.sers()
             if sers is not None:
-                near.add_numbers(numbers_of_sers(sers))
+                near.numbers += numbers_of_sers(sers)
                 print("\n" + sers_text(sers), flush=True)
                 good &= _warn(sers.status, sers.laser)
+            for emitter in run.emitters():
+                near.numbers += numbers_of_emitter(emitter)
+                print("\n" + emitter_text(emitter), flush=True)
+        near.finish()
     finally:
-        if near.files:
-            print(f"\nwritten to {near.path}: {', '.join(near.files)}", flush=True)
+        near.discard()
+    if table.sers is not None or table.heat is not None:
+        print(f"\ncaution: {CAUTION}")
+    print(f"\nwritten to {near.path}: {', '.join(near.files)}", flush=True)
     return good
 
 
@@ -56,6 +86,9 @@ def near_text(answer: NearAnswer, numbers: list[Number]) -> str:
         f"{answer.spacing:.3g} and {answer.coarser:.3g} nm)"
     ]
     for where in dict.fromkeys(number.where for number in numbers):
+        if where == "particle":
+            lines += _heat_lines([n for n in numbers if n.where == where])
+            continue
         found = {n.quantity: n for n in numbers if n.where == where}
         place = where
         if where == "surface":
@@ -78,14 +111,44 @@ def sers_text(answer: SersAnswer) -> str:
     best = answer.best
     lines = [
         f"SERS, laser {answer.laser:g} nm, Stokes line {answer.stokes:.1f} nm, "
-        f"{answer.height:.3g} nm over the surface: |E(laser)|^2 |E(Stokes)|^2",
+        f"{answer.height:.3g} nm over the surface: |E(laser)|^2 |E(Stokes)|^2"
+        + (", mean over all orientations of the particle" if answer.averaged else ""),
         f"    mean           {best.mean:.4g} ± {answer.mean_error:.2g}",
         f"    maximum        {best.maximum:.4g} ± {answer.maximum_error:.2g} at {_at(best.place)}",
     ]
     doubtful = 1 - float(best.trusted.mean())
     if doubtful > _MANY:
         lines.append(f"    at {100 * doubtful:.0f} % of the points the error is not known")
-    return "\n".join([*lines, f"caution: {CAUTION}"])
+    return "\n".join(lines)
+
+
+def emitter_text(answer: EmitterAnswer) -> str:
+    """Return the decay rates of an emitter in words."""
+    emitter = answer.emitter
+    turned = "averaged over its orientations"
+    if emitter.orientation != "average":
+        turned = "along " + "[" + ", ".join(f"{c:g}" for c in emitter.orientation) + "]"
+    numbers = numbers_of_emitter(answer)
+    width = max(len(number.quantity) for number in numbers)
+    return "\n".join(
+        [
+            f"emitter {answer.number} at {_at(emitter.position)}, {turned}, "
+            f"{answer.wavelength:g} nm, quantum yield {emitter.quantum_yield:g} in the host",
+            *(f"    {n.quantity:<{width}}  {n.value:.4g} ± {n.error:.2g}" for n in numbers),
+        ]
+    )
+
+
+def _heat_lines(numbers: list[Number]) -> list[str]:
+    found = {n.quantity: n for n in numbers}
+    lines = [f"  heat, at {found['incident intensity'].value:.4g} W/m^2"]
+    for name in ("absorbed power", "absorbed power density, maximum"):
+        if name in found:
+            n = found[name]
+            at = "" if math.isnan(n.x_nm) else f" at {_at((n.x_nm, n.y_nm, n.z_nm))}"
+            unit = n.unit.replace("m3", "m^3")
+            lines.append(f"    {name:<32} {n.value:.4g} ± {n.error:.2g} {unit}{at}")
+    return lines
 
 
 def _doubt(where: str, share: float) -> str:

@@ -101,9 +101,13 @@ def check_beam(
 
 
 def check_clear(
-    place: np.ndarray, geometry: Geometry, key: tuple[str | int, ...], what: str
+    place: np.ndarray,
+    geometry: Geometry,
+    key: tuple[str | int, ...],
+    what: str,
+    spacings: float = CLOSEST,
 ) -> None:
-    """Refuse a source of light within `CLOSEST` spacings of the particle.
+    """Refuse a source of light closer than so many spacings to the particle.
 
     Raises
     ------
@@ -112,7 +116,7 @@ def check_clear(
     cells = geometry.cells
     full = cells.positions[cells.window.sum(axis=1) >= 0.5]
     away = float(np.linalg.norm(full - centre_of(geometry) - place, axis=1).min())
-    least = CLOSEST * cells.spacing
+    least = spacings * cells.spacing
     if away < least:
         raise Mistake(
             key,

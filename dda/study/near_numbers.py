@@ -8,7 +8,9 @@ from dataclasses import dataclass
 import numpy as np
 
 from dda.response.hot_spots import field_numbers, find_hot_spots
-from dda.study.near import NearAnswer, Sampled, SersAnswer
+from dda.study.near import NearAnswer, Sampled
+from dda.study.near_emitters import EmitterAnswer
+from dda.study.near_sers import SersAnswer
 
 #: Hot spots that are listed one by one.
 LISTED = 6
@@ -27,7 +29,7 @@ class Number:
     ----------
     wavelength_nm : float
     where : str
-        "surface", "plane", "box", "line" or "points"
+        "surface", "plane", "box", "line", "points", "particle" or "emitter 1"
     quantity : str
     value, error : float
         The error bar is NaN where none is known.
@@ -57,24 +59,69 @@ def numbers_of(answer: NearAnswer, threshold: float | None) -> list[Number]:
     threshold : float or None
         ``|E|^2`` that a hot spot exceeds; half of the largest where None.
     """
-    surface = _describe(answer.wavelength, answer.surface, answer.cover.areas, threshold)
-    if answer.region is answer.surface:
-        return surface
-    return surface + _describe(answer.wavelength, answer.region, None, threshold)
+    numbers = _describe(answer.wavelength, answer.surface, answer.cover.areas, threshold)
+    if answer.region is not answer.surface:
+        numbers += _describe(answer.wavelength, answer.region, None, threshold)
+    return numbers + _heat(answer)
 
 
 def numbers_of_sers(answer: SersAnswer) -> list[Number]:
     """Return mean and maximum of SERS factors."""
     place = tuple(float(c) for c in answer.best.place)
     at = (answer.laser, "surface")
+    name = "SERS factor of all orientations" if answer.averaged else "SERS factor"
     doubtful = 1 - float(np.mean(answer.best.trusted))
     return [
-        Number(*at, "SERS factor, mean", answer.best.mean, answer.mean_error),
-        Number(*at, "SERS factor, maximum", answer.best.maximum, answer.maximum_error, "", *place),
+        Number(*at, f"{name}, mean", answer.best.mean, answer.mean_error),
+        Number(*at, f"{name}, maximum", answer.best.maximum, answer.maximum_error, "", *place),
         Number(*at, "SERS, Stokes wavelength", answer.stokes, unit="nm"),
         Number(*at, "SERS, height", answer.height, unit="nm"),
         Number(*at, "SERS, share of points with unknown error", doubtful),
     ]
+
+
+def numbers_of_emitter(answer: EmitterAnswer) -> list[Number]:
+    """Return the decay rates of an emitter."""
+    place = tuple(float(c) for c in answer.emitter.position)
+    rates, error = answer.rates, answer.error
+
+    def number(quantity: str, value: float, wrong: float) -> Number:
+        where = f"emitter {answer.number}"
+        return Number(answer.wavelength, where, quantity, value, wrong, "", *place)
+
+    return [
+        number("radiative decay rate over that in the host", rates.radiative, error.radiative),
+        number("decay rate by absorption over the radiative one in the host", rates.absorbed,
+               error.absorbed),
+        number("total decay rate over that in the host", answer.total_change,
+               answer.total_change_error),
+        number("quantum yield", answer.quantum_yield, answer.yield_error),
+    ]  # fmt: skip
+
+
+def _heat(answer: NearAnswer) -> list[Number]:
+    heat, body = answer.heat, answer.body
+    if heat is None or body is None:
+        return []
+    inside = body.material >= 0
+    per_e2 = heat.density[body.material][inside]
+    e2, error = (per_e2 * values[inside] for values in (body.best.e2, body.best.e2_error))
+    at = (answer.wavelength, "particle")
+    out = [
+        Number(*at, "incident intensity", heat.intensity, unit="W/m2"),
+        Number(*at, "absorbed power", heat.total, heat.total_error, "W"),
+    ]
+    if len(e2):
+        top = int(e2.argmax())
+        place = tuple(float(c) for c in body.region.points[inside][top])
+        doubtful = 1 - float(np.mean(body.best.trusted[inside]))
+        name = "absorbed power density"
+        out += [
+            Number(*at, f"{name}, maximum", float(e2[top]), float(error[top]), "W/m3", *place),
+            Number(*at, f"{name}, mean", float(e2.mean()), float(error.mean()), "W/m3"),
+            Number(*at, f"{name}, share of points with unknown error", doubtful),
+        ]
+    return out
 
 
 def chosen_points(sampled: Sampled) -> np.ndarray:

@@ -2,19 +2,25 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
+from dataclasses import replace
+from pathlib import Path
 
 import numpy as np
 
 from dda.design.sers import stokes_wavelength
 from dda.errors import InputError
+from dda.materials.anisotropic import AnisotropicMaterial
 from dda.response.near_points import Region, box, line, plane, read_points
 from dda.response.surface_points import SurfacePoints, cover_surface
 from dda.study.geometry import Geometry
+from dda.study.lights import check_beam, check_clear
 from dda.study.media import Media, check_media
 from dda.study.mistakes import Mistake
+from dda.study.near_levels import coarser_across
 from dda.study.near_table import NearFieldTable
-from dda.study.reader import Study
+from dda.study.points import Point
 from shapes import Particle
 
 #: Height in spacings at which the error is known on smooth bodies, whatever way they face.
@@ -23,21 +29,35 @@ CLEAR = 1.5
 _MOST_PIECES, _EVER = 120, 400
 
 
-def check_near(study: Study, media: Media, geometry: Geometry) -> None:
+def check_near(point: Point, media: Media, geometry: Geometry) -> None:
     """Find the mistakes of ``[near_field]`` before anything is solved.
+
+    Parameters
+    ----------
+    point : Point
+        Any of its combination of varied keys.
+    media : Media
+    geometry : Geometry
 
     Raises
     ------
     Mistake
     """
-    table = study.tables.near_field
+    table = point.tables.near_field
     if table is None:
         return
-    if study.tables.light.orientation == "average":
+    if point.averaged:
         raise Mistake(
             ("near_field",),
             'near fields are those of one direction of light; leave out orientation = "average"',
         )
+    for name, material in media.particle.items():
+        if isinstance(material, AnisotropicMaterial):
+            raise Mistake(
+                ("near_field",),
+                f'near fields of anisotropic materials such as "{name}" are not known to this '
+                "program yet; leave out the table, or use an isotropic material",
+            )
     if table.kind == "surface":
         if table.step is not None and not geometry.size / _EVER <= table.step <= geometry.size / 4:
             raise Mistake(
@@ -46,14 +66,46 @@ def check_near(study: Study, media: Media, geometry: Geometry) -> None:
                 f"use {geometry.size / _EVER:.2g} to {geometry.size / 4:.2g} nm",
             )
     else:
-        region_of(table, study)
-    numbers = [w for w in table.wavelengths if w != "peak"]
+        region_of(table, point.folder)
+    numbers = [float(w) for w in table.wavelengths if w != "peak"]
     _check_media(media, numbers, ("near_field", "wavelengths"))
+    check_beam(point, media, geometry, numbers)
+    beam = point.tables.light.beam
     if table.sers is not None:
-        _check_media(media, sers_wavelengths(table), ("near_field", "sers"))
+        two = sers_wavelengths(table)
+        _check_media(media, two, ("near_field", "sers"))
+        check_beam(point, media, geometry, two)
+        if table.sers.orientation == "average" and beam is not None:
+            raise Mistake(
+                ("near_field", "sers", "orientation"),
+                "the average over orientations is that of plane waves; leave out light.beam",
+            )
+    focused = beam is not None and beam.gaussian
+    if table.heat is not None and table.heat.power_mw is not None and not focused:
+        raise Mistake(
+            ("near_field", "heat", "power_mw"),
+            "only a focused beam has a power: give light.beam = {waist_nm = 400}, or "
+            "intensity_w_per_cm2 instead of power_mw",
+        )
+    _check_emitters(point, table, media, geometry)
 
 
-def region_of(table: NearFieldTable, study: Study) -> Region:
+def _check_emitters(point: Point, table: NearFieldTable, media: Media, geometry: Geometry) -> None:
+    for number, emitter in enumerate(table.emitters):
+        key = ("near_field", "emitters", number)
+        if emitter.wavelength_nm is not None:
+            _check_media(media, [emitter.wavelength_nm], (*key, "wavelength_nm"))
+        place = np.asarray(emitter.position, float)
+        if point.accuracy.target is not None:
+            # How fine the cells will be is not known yet: only the particle's inside is refused.
+            check_clear(place, geometry, (*key, "position"), "emitter", 0.9)
+            continue
+        coarser = replace(geometry, spacing=geometry.size / coarser_across(geometry))
+        for level in (coarser, geometry):
+            check_clear(place, level, (*key, "position"), "emitter")
+
+
+def region_of(table: NearFieldTable, folder: Path) -> Region:
     """Return the points of a region other than the surface, from the particle's centre, nm.
 
     Raises
@@ -64,7 +116,7 @@ def region_of(table: NearFieldTable, study: Study) -> Region:
     size, step = table.size or (), table.step or 0.0
     try:
         if table.points is not None:
-            return read_points(study.folder / table.points)
+            return read_points(folder / table.points)
         if table.kind == "line":
             return line(table.start, table.end, step)
         if table.kind == "box":
@@ -84,6 +136,14 @@ def cover(table: NearFieldTable, particle: Particle, spacing: float) -> SurfaceP
     own = table.step if table.kind == "surface" else None
     height = CLEAR * spacing if table.height is None else table.height
     return cover_surface(particle, own or max(spacing, least), height)
+
+
+def surface_pieces(table: NearFieldTable, geometry: Geometry) -> int:
+    """Return about how many pieces `cover` will make."""
+    own = table.step if table.kind == "surface" else None
+    step = own or max(geometry.spacing, geometry.size / _MOST_PIECES)
+    # a surface cuts about 1.5 squares of a lattice for each of its own size
+    return math.ceil(1.5 * geometry.particle.area() / step**2)
 
 
 def surface_region(surface: SurfacePoints, centre: np.ndarray) -> Region:
@@ -107,7 +167,7 @@ def sers_wavelengths(table: NearFieldTable) -> tuple[float, float]:
     return table.sers.laser_nm, stokes
 
 
-def _check_media(media: Media, wavelengths: Sequence, key: tuple[str, ...]) -> None:
+def _check_media(media: Media, wavelengths: Sequence, key: tuple[str | int, ...]) -> None:
     if not wavelengths:
         return
     try:

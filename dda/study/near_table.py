@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import Annotated, Any, Literal
 
 from pydantic import AfterValidator, BeforeValidator, Field, model_validator
@@ -63,6 +64,48 @@ class SersTable(Table):
     laser_nm: Positive
     shift_per_cm: Annotated[Positive, AfterValidator(_shift)]
     height_nm: Positive | None = None
+    orientation: Literal["fixed", "average"] = "fixed"
+
+
+def _axis(value: Any) -> Any:
+    if value == "average":
+        return value
+    numbers = value if isinstance(value, list | tuple) else ()
+    good = [c for c in numbers if isinstance(c, int | float) and not isinstance(c, bool)]
+    if len(numbers) != 3 or len(good) != 3 or not any(good) or not all(map(math.isfinite, good)):
+        raise ValueError(f'{value!r} is no orientation; give a vector [x, y, z] or "average"')
+    return tuple(float(c) for c in value)
+
+
+class EmitterTable(Table):
+    """``[[near_field.emitters]]``: a dipole beside the particle, place from its centre.
+
+    ``quantum_yield`` is that in the host alone; ``wavelength_nm`` that of the emitted light, those
+    of ``[near_field]`` by default.
+    """
+
+    position: Vector
+    orientation: Annotated[
+        tuple[float, float, float] | Literal["average"], BeforeValidator(_axis)
+    ] = "average"
+    quantum_yield: Annotated[float, Field(strict=True, gt=0, le=1)] = 1.0
+    wavelength_nm: Positive | None = None
+
+
+class HeatTable(Table):
+    """``[near_field] heat``: how strong the light is; at the focus of a beam, or its power."""
+
+    intensity_w_per_cm2: Positive | None = None
+    power_mw: Positive | None = None
+
+    @model_validator(mode="after")
+    def _one_of_two(self) -> HeatTable:
+        if (self.intensity_w_per_cm2 is None) == (self.power_mw is None):
+            raise ValueError(
+                "give intensity_w_per_cm2 = 1000, or power_mw = 1 for a Gaussian beam, one of the "
+                "two"
+            )
+        return self
 
 
 class NearFieldTable(Table):
@@ -85,21 +128,23 @@ class NearFieldTable(Table):
     threshold: Positive | None = None
     magnetic: Annotated[bool, Field(strict=True)] = False
     sers: SersTable | None = None
+    emitters: tuple[EmitterTable, ...] = ()
+    heat: HeatTable | None = None
 
     @property
     def kind(self) -> str:
-        """Which of "plane", "box", "line", "surface" and "points" is asked for."""
-        return self.region or "points"
+        """Which of "plane", "box", "line", "surface" (the default) and "points" is asked for."""
+        return self.region or ("surface" if self.points is None else "points")
 
     @model_validator(mode="after")
     def _one_region(self) -> NearFieldTable:
-        if (self.region is None) == (self.points is None):
+        if self.region is not None and self.points is not None:
             raise ValueError(
                 'give either region = "plane" ("box", "line", "surface") or points = "FILE.csv", '
                 "one of the two"
             )
         kind = self.kind
-        what = f'region = "{kind}"' if self.region else "points"
+        what = "points" if kind == "points" else f'region = "{kind}"'
         missing = [key for key in NEEDED[kind] if getattr(self, key) is None]
         if missing:
             raise ValueError(f"{what} needs {', '.join(missing)} as well")

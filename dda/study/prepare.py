@@ -97,8 +97,8 @@ def prepare(study: Study) -> Prepared:
         geometry = geometries.of(points[0])
         media = media_of(points[0], geometry.particle.materials)
         check_media(media, [point.wavelength for point in points])
-        check_near(study, media, geometry)
         check_cells(geometry, points[0])
+        check_near(points[0], media, geometry)
         check_beam(points[0], media, geometry, [point.wavelength for point in points])
     except Mistake as mistake:
         raise study.located(mistake) from None
