@@ -249,12 +249,14 @@ class LightTable(Table):
 class AccuracyTable(Table):
     """``[accuracy]``: the error to reach, or how fine the cells are.
 
-    ``target`` is relative, on C_ext and C_abs at each wavelength.
+    ``target`` is relative, on C_ext and C_abs at each wavelength. With ``preview``, coarse
+    answers of all points come first.
     """
 
     target: Annotated[float, Field(strict=True, ge=1e-4, le=0.5, allow_inf_nan=False)] | None = None
     cells: Annotated[int, Field(strict=True, ge=1, le=10_000)] | None = None
     spacing: Positive | None = None
+    preview: Annotated[bool, Field(strict=True)] = False
 
     @model_validator(mode="after")
     def _one_of_three(self) -> AccuracyTable:
@@ -284,6 +286,7 @@ class SolverTable(Table):
     method: Literal["cocg", "cocr", "bicgstab", "gmres"] = "cocg"
     precision: Literal["double", "single"] = "double"
     threads: Annotated[int, Field(strict=True, ge=1, le=4096)] | None = None
+    processes: Annotated[int, Field(strict=True, ge=1, le=4096)] | None = None
 
 
 class StudyTables(Table):
