@@ -8,7 +8,7 @@ import pytest
 import dda
 import shapes
 from dda.response.averages import orientation_average
-from dda.response.tmatrix_solve import t_matrix
+from dda.response.tmatrix_solve import expected_columns, t_matrix
 from dda.response.vector_waves import wave_labels
 from validation.compare import permittivity
 from validation.ebcm import spheroid
@@ -138,3 +138,12 @@ def test_progress_and_bad_orders():
     assert seen[-1] == (6, 6)
     with pytest.raises(dda.InputError, match="order 99"):
         t_matrix(system("cube"), order=99)
+
+
+def test_the_number_of_columns_is_known_beforehand():
+    for body in (shapes.cube(edge=20, rounding=2), shapes.helix(20, 15, 1.5, 8)):
+        system = dda.system(shapes.voxelize(body, cells=6), 560.0, 1.33)
+        seen = []
+        t_matrix(system, order=2, monitor=lambda done, of, seen=seen: seen.append((done, of)))
+        columns = expected_columns(system, order=2)
+        assert seen[-1] == (columns, columns)

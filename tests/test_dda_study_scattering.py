@@ -12,7 +12,7 @@ import dda
 from dda.cli import main
 from dda.response.tmatrix_file import load_t_matrix
 from dda.study.levels import Memory, answer
-from dda.study.plan import prepare
+from dda.study.plan import make_plan, prepare
 from dda.study.point_file import write_point
 from dda.study.reader import study_from_tables
 from validation.compare import permittivity
@@ -243,3 +243,17 @@ def test_the_other_polarization_is_orthogonal():
         assert np.isclose(np.linalg.norm(other.polarization), 1)
     bare = replace(point, tables=point.tables.model_copy(update={"scattering": None}))
     assert partner(bare, [wave]) == ()
+
+
+def test_the_plan_counts_the_other_polarization_and_the_columns():
+    def steps(text):
+        return sum(make_plan(written(text)).cost.steps)
+
+    text = BALL.replace("cells = 16", "cells = 8")
+    single = text.replace("LIGHT", "polarization = [1, 0, 0]")
+    alone = steps(single[: single.index("[scattering]")])
+    assert steps(single) == pytest.approx(2 * alone)
+    assert steps(text.replace("LIGHT", LIGHTS[0])) == pytest.approx(2 * alone)
+    # a sphere's cells have every symmetry: orders 1 to 3 take 1 + 2 + 3 waves of either kind at
+    # most, and there is one electric dipole at least
+    assert 0.5 * alone < steps(text.replace("LIGHT", AVERAGE)) < 12 * alone

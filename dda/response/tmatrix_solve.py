@@ -94,12 +94,27 @@ def t_matrix(
     if order is not None and not 1 <= order <= LARGEST_ORDER:
         raise InputError(f"multipole order {order} is not from 1 to {LARGEST_ORDER}")
     work = _Work(system, find_sectors(system, symmetry), tolerance, residual, limit, monitor)
-    present = order or min(LARGEST_ORDER, max(first_order(system.k * work.radius), 2))
+    present = order or work.first_order
     work.extend(present)
     while order is None and work.tail > tolerance * work.scale and present < LARGEST_ORDER:
         present += 1
         work.extend(present)
     return work.result(extended=order is None)
+
+
+def expected_columns(system: System, order: int | None = None) -> int:
+    """Number of waves that `t_matrix` solves, if no more orders turn out to be needed.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> cells = shapes.voxelize(shapes.cube(edge=20, rounding=2, material="gold"), cells=6)
+    >>> expected_columns(dda.system(cells, wavelength=560))  # of 16, and most of them alike
+    4
+    """
+    work = _Work(system, find_sectors(system), 0.0, None, 0, None)
+    work.order = order or work.first_order
+    return len(work.chosen(1))
 
 
 @dataclass(frozen=True, eq=False)
@@ -132,11 +147,8 @@ class _Work:
     def extend(self, order: int) -> None:
         """Solve the columns of all orders up to this one that are not there yet."""
         first, self.order = self.order + 1, order
-        self.signs = _wave_sectors(order + 1, self.sectors)
-        self.rotations = [real_rotation_matrix(order, g) for g in self.turns]
         before = len(self.waves)
-        for n in range(first, order + 1):
-            self.waves += self._choose(n)
+        self.waves += self.chosen(first)
         self._balance(before)
         new = self.waves[before:]
         coefficients = np.stack([self._padded(w.coefficients) for w in new])
@@ -163,6 +175,17 @@ class _Work:
             self.values[j] = column.value
         self.matrix = self._assemble()
         self.tail = self._tail()
+
+    @property
+    def first_order(self) -> int:
+        """The order to begin with."""
+        return min(LARGEST_ORDER, max(first_order(self.system.k * self.radius), 2))
+
+    def chosen(self, first: int) -> list[_Wave]:
+        """The waves to solve of the orders from `first` to the present one."""
+        self.signs = _wave_sectors(self.order + 1, self.sectors)
+        self.rotations = [real_rotation_matrix(self.order, g) for g in self.turns]
+        return [wave for n in range(first, self.order + 1) for wave in self._choose(n)]
 
     def result(self, extended: bool) -> TMatrix:
         system = self.system

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 from dda.lattice import system
 from dda.lattice.workers import Workers
+from dda.study.column_cost import measure_columns
 from dda.study.estimate import Cost, measure_step
 from dda.study.geometry import WINDOW
 from dda.study.levels import tolerance_of
@@ -16,6 +17,7 @@ from dda.study.memory import available_memory
 from dda.study.points import Point
 from dda.study.prepare import Prepared, prepare, steps_at
 from dda.study.reader import Study
+from dda.study.scattering import partner_count
 
 #: |m| k d up to which the cells resolve the wave inside the particle well, and at all
 #: (Draine & Flatau 1994 ask for 1, and for less where the accuracy matters).
@@ -150,15 +152,18 @@ def _cost(prepared: Prepared) -> Cost:
             workers=Workers(point.solver.threads),
         )
         setup = time.perf_counter() - started
-    steps = tuple(_steps(prepared, point) for point in prepared.points)
-    return Cost(
-        setup * len(prepared.levels),
-        measure_step(matrix, lights_of(point, prepared.geometry, matrix.k)[0]),
-        steps,
-    )
+    solves = 0.0
+    if point.averaged:
+        measured = measure_columns(matrix)
+        step, solves = measured.step_seconds, measured.columns
+    else:
+        step = measure_step(matrix, lights_of(point, prepared.geometry, matrix.k)[0])
+    steps = tuple(_steps(prepared, point, solves) for point in prepared.points)
+    return Cost(setup * len(prepared.levels), step, steps)
 
 
-def _steps(prepared: Prepared, point: Point) -> float:
+def _steps(prepared: Prepared, point: Point, columns: float) -> float:
     """Return the expected steps at all spacings, in units of steps at the finest one."""
     indices = prepared.media.relative_index(point.wavelength).values()
-    return light_count(point) * steps_at(indices, prepared.levels, tolerance_of(point))
+    solves = columns if point.averaged else light_count(point) + partner_count(point)
+    return solves * steps_at(indices, prepared.levels, tolerance_of(point))

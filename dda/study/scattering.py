@@ -18,6 +18,7 @@ from dda.response.multipoles import averaged_multipoles, multipoles
 from dda.response.one_direction import OneDirection, from_two, radiation_pressure
 from dda.response.tmatrix import TMatrix
 from dda.response.tmatrix_file import t_matrix_arrays
+from dda.study.lights import light_count
 from dda.study.mistakes import Mistake
 from dda.study.more import NOTHING_MORE, Array, More
 from dda.study.points import Point
@@ -82,12 +83,18 @@ def check_scattering(tables: StudyTables) -> None:
 
 def partner(point: Point, lights: Sequence) -> tuple[PlaneWave, ...]:
     """Return the plane wave of the other polarization where ``[scattering]`` needs it too."""
-    table = point.tables.scattering
-    if table is None or not table.both_polarizations or len(lights) != 1:
+    if not partner_count(point):
         return ()
     (light,) = lights
     other = np.cross(light.direction, light.polarization.conj())
     return (PlaneWave(light.direction, other),)
+
+
+def partner_count(point: Point) -> int:
+    """Return how many plane waves `partner` adds to the solves of a point."""
+    table = point.tables.scattering
+    single = not point.averaged and light_count(point) == 1
+    return int(table is not None and table.both_polarizations and single)
 
 
 def of_direction(point: Point, solved: Sequence[Settled], count: int) -> Scattered | None:
