@@ -8,6 +8,7 @@ from dda.report.progress import duration_text
 from dda.study.geometry import Geometry
 from dda.study.lights import beam_text
 from dda.study.memory import bytes_text
+from dda.study.near_plan import NearPlan
 from dda.study.particle import notes_of
 from dda.study.plan import Plan
 from dda.study.prepare import Prepared
@@ -41,6 +42,8 @@ def plan_text(plan: Plan) -> str:
             ),
         ]
     )
+    if plan.near is not None:
+        lines += _aligned([("near field", _near_text(plan, plan.near))])
     lines += ["", "validity"]
     lines += _aligned(
         [
@@ -49,6 +52,18 @@ def plan_text(plan: Plan) -> str:
         ]
     )
     return "\n".join(lines)
+
+
+def _near_text(plan: Plan, near: NearPlan) -> str:
+    """Return what the near field takes beside the spectrum, in words."""
+    seconds = near.steps * plan.cost.step_seconds + near.evaluation
+    combinations = len({id(point.tables) for point in plan.prepared.points})
+    each = f", for each of {combinations} combinations" if combinations > 1 else ""
+    return (
+        f"{near.solves} solves more on two lattices and {near.points} points{each}: about "
+        f"{duration_text(seconds)}, known to a factor of three; {bytes_text(near.memory)} of "
+        f"memory, {bytes_text(near.disk)} of files"
+    )
 
 
 def study_lines(prepared: Prepared) -> list[str]:

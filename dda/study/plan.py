@@ -14,6 +14,7 @@ from dda.study.geometry import WINDOW
 from dda.study.levels import tolerance_of
 from dda.study.lights import light_count, lights_of
 from dda.study.memory import available_memory
+from dda.study.near_plan import NearPlan, near_plan
 from dda.study.points import Point
 from dda.study.prepare import Prepared, prepare, steps_at
 from dda.study.reader import Study
@@ -55,6 +56,8 @@ class Plan:
         Bytes that are there.
     cost : Cost
     figures : tuple of Figure
+    near : NearPlan or None
+        Of one combination of varied keys, where near fields are asked for.
     """
 
     prepared: Prepared
@@ -62,6 +65,7 @@ class Plan:
     available: int
     cost: Cost
     figures: tuple[Figure, ...]
+    near: NearPlan | None = None
 
 
 def make_plan(study: Study) -> Plan:
@@ -72,7 +76,10 @@ def make_plan(study: Study) -> Plan:
     InputError
     """
     prepared = prepare(study)
-    return Plan(prepared, prepared.memory, available_memory(), _cost(prepared), validity(prepared))
+    finest = prepared.geometries.level(prepared.geometry, prepared.levels[-1])
+    near = near_plan(prepared.points[len(prepared.points) // 2], finest, prepared.media)
+    cost, figures = _cost(prepared), validity(prepared)
+    return Plan(prepared, prepared.memory, available_memory(), cost, figures, near)
 
 
 def validity(prepared: Prepared) -> tuple[Figure, ...]:
