@@ -10,6 +10,13 @@ The main job reads like the method, a line each:
 >>> response = dda.cross_sections(polarization)
 >>> 3700 < response.c_ext < 3850  # nm^2; the Mie series gives 3798
 True
+
+A colloid, whose particles tumble, from one T-matrix:
+
+>>> t = dda.t_matrix(system)
+>>> average = dda.orientation_average(t)
+>>> bool(abs(average.c_ext / response.c_ext - 1) < 0.01)  # a sphere looks alike from everywhere
+True
 """
 
 from importlib import import_module
@@ -22,22 +29,48 @@ if TYPE_CHECKING:
     from .light import PlaneWave, plane_wave
     from .report.dataset import open_point, open_run
     from .response import CrossSections, Settled, cross_sections, settle
+    from .response.averages import OrientationAverage, orientation_average
+    from .response.directions import quadrature_average
+    from .response.mueller import averaged_mueller_matrix, mueller_matrix
+    from .response.multipoles import Multipoles, averaged_multipoles, multipoles
+    from .response.one_direction import OneDirection, one_direction, radiation_pressure
+    from .response.pair import Pair, pair
+    from .response.tmatrix import TMatrix
+    from .response.tmatrix_file import load_t_matrix, save_t_matrix
+    from .response.tmatrix_solve import t_matrix
 
 __all__ = [
     "ComputationError",
     "CrossSections",
     "InputError",
+    "Multipoles",
+    "OneDirection",
+    "OrientationAverage",
+    "Pair",
     "PlaneWave",
     "Polarization",
     "Settled",
     "System",
+    "TMatrix",
+    "averaged_mueller_matrix",
+    "averaged_multipoles",
     "cross_sections",
+    "load_t_matrix",
+    "mueller_matrix",
+    "multipoles",
+    "one_direction",
     "open_point",
     "open_run",
+    "orientation_average",
+    "pair",
     "plane_wave",
+    "quadrature_average",
+    "radiation_pressure",
+    "save_t_matrix",
     "settle",
     "solve",
     "system",
+    "t_matrix",
 ]
 
 # Where a name lives: its module is imported when it is first asked for, because compiled kernels
@@ -47,6 +80,15 @@ _HOMES = {
     "light": ("PlaneWave", "plane_wave"),
     "report.dataset": ("open_point", "open_run"),
     "response": ("CrossSections", "Settled", "cross_sections", "settle"),
+    "response.averages": ("OrientationAverage", "orientation_average"),
+    "response.directions": ("quadrature_average",),
+    "response.mueller": ("averaged_mueller_matrix", "mueller_matrix"),
+    "response.multipoles": ("Multipoles", "averaged_multipoles", "multipoles"),
+    "response.one_direction": ("OneDirection", "one_direction", "radiation_pressure"),
+    "response.pair": ("Pair", "pair"),
+    "response.tmatrix": ("TMatrix",),
+    "response.tmatrix_file": ("load_t_matrix", "save_t_matrix"),
+    "response.tmatrix_solve": ("t_matrix",),
 }
 _HOME_OF = {name: home for home, names in _HOMES.items() for name in names}
 

@@ -129,6 +129,15 @@ def averaged_mueller_matrix(t: TMatrix, angles) -> np.ndarray:
     ----------
     Mishchenko, M. I. (1991), J. Opt. Soc. Am. A 8, 871.
     Khlebtsov, N. G. (1992), Appl. Opt. 31, 5359.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> cells = shapes.voxelize(shapes.rod(40, 16, material="gold"), cells=10)
+    >>> t = dda.t_matrix(dda.system(cells, wavelength=700))
+    >>> forward, aside = averaged_mueller_matrix(t, [0, 90])
+    >>> bool(0.2 < -aside[0, 1] / aside[0, 0] < 0.5)  # a needle depolarizes: 1/3
+    True
     """
     theta = np.deg2rad(np.atleast_1d(np.asarray(angles, float)))
     order = t.order

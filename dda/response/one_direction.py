@@ -228,6 +228,15 @@ def radiation_pressure(polarization: Polarization) -> RadiationPressure:
     Notes
     -----
     ``C_pr = C_ext a - int n dC_sca`` (Bohren & Huffman 1983, section 4.5, as a vector).
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> cells = shapes.voxelize(shapes.sphere(diameter=30, material="gold"), cells=8)
+    >>> solved = dda.solve(dda.system(cells, wavelength=530), dda.plane_wave((0, 0, 1)))
+    >>> pressure = radiation_pressure(solved)
+    >>> bool(pressure.c_pr[2] > 1000 * abs(pressure.c_pr[0]))  # along the light
+    True
     """
     system = polarization.system
     light: PlaneWave = polarization.light  # type: ignore[assignment]

@@ -156,6 +156,16 @@ def pair(first: TMatrix, second: TMatrix, separation) -> Pair:
     ``f_1 = T_1 (p_1 + A_12 f_2)`` and the same for the second (Waterman & Truell 1961; Peterson &
     Strom 1973). Narrow gaps need many multipoles: give `t_matrix` an order of about 5/acosh(1 +
     gap/diameter) for a per cent, and a residual.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> cells = shapes.voxelize(shapes.sphere(diameter=30, material="gold"), cells=8)
+    >>> t = dda.t_matrix(dda.system(cells, wavelength=530), order=3)
+    >>> both = pair(t, t, (60, 0, 0))
+    >>> c_ext, _, _ = both.cross_sections((0, 0, 1), (1, 0, 0))
+    >>> bool(c_ext > 2 * t.cross_sections((0, 0, 1), (1, 0, 0))[0])  # they help each other
+    True
     """
     if first.wavelength != second.wavelength or first.n_host != second.n_host:
         raise InputError(

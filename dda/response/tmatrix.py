@@ -78,6 +78,16 @@ class TMatrix:
         ----------
         rotation : array_like, shape (3, 3)
             Orthogonal matrix; with determinant -1 it gives the mirror image of the particle.
+
+        Examples
+        --------
+        >>> import dda, shapes
+        >>> cells = shapes.voxelize(shapes.rod(40, 16, axis="z", material="gold"), cells=10)
+        >>> along_z = dda.t_matrix(dda.system(cells, wavelength=600))
+        >>> along_x = along_z.rotated([[0, 0, 1], [0, 1, 0], [-1, 0, 0]])
+        >>> light = (0, 0, 1), (1, 0, 0)
+        >>> along_x.cross_sections(*light)[0] > 3 * along_z.cross_sections(*light)[0]
+        True
         """
         turn = csr_array(rotation_matrix(self.order, rotation))
         return replace(self, matrix=turn @ (turn.conj() @ self.matrix.T).T)

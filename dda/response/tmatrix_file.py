@@ -43,6 +43,17 @@ def save_t_matrix(t: TMatrix, path: str | Path) -> None:
     ----------
     t : TMatrix
     path : str or Path
+
+    Examples
+    --------
+    >>> import tempfile, dda, shapes
+    >>> cells = shapes.voxelize(shapes.sphere(diameter=30, material="gold"), cells=6)
+    >>> t = dda.t_matrix(dda.system(cells, wavelength=530))
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     save_t_matrix(t, folder + "/sphere.h5")
+    ...     again = load_t_matrix(folder + "/sphere.h5")
+    >>> again.order, again.wavelength
+    (3, 530.0)
     """
     import h5py
 

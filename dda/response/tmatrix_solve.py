@@ -109,8 +109,8 @@ def expected_columns(system: System, order: int | None = None) -> int:
     --------
     >>> import dda, shapes
     >>> cells = shapes.voxelize(shapes.cube(edge=20, rounding=2, material="gold"), cells=6)
-    >>> expected_columns(dda.system(cells, wavelength=560))  # of 16, and most of them alike
-    4
+    >>> expected_columns(dda.system(cells, wavelength=560))  # of 16 waves; the others look alike
+    6
     """
     work = _Work(system, find_sectors(system), 0.0, None, 0, None)
     work.order = order or work.first_order
