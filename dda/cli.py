@@ -12,14 +12,10 @@ import sys
 from collections.abc import Callable, Sequence
 from importlib.metadata import version
 from pathlib import Path
-from typing import TYPE_CHECKING
 
-from dda.cli_runs import add_commands
+from dda import cli_run
+from dda.cli_read import add_commands
 from dda.errors import ComputationError, InputError
-
-if TYPE_CHECKING:
-    from dda.report.folder import RunFolder
-    from dda.study.prepare import Prepared
 
 OK, FAILED, WRONG_INPUT, INTERRUPTED = 0, 1, 2, 130
 
@@ -48,38 +44,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except Exception as error:
         if options.debug:
             raise
-        return _report(error)
-
-
-def run(options: argparse.Namespace) -> int:
-    """``dda run``: check, solve wavelength by wavelength, write as it goes."""
-    from dda.report.folder import RunFolder
-    from dda.report.plan_text import study_lines
-    from dda.report.progress import working
-    from dda.report.table import spectrum_text
-    from dda.study.prepare import prepare
-    from dda.study.reader import read_study
-
-    study = read_study(options.study)
-    folder = RunFolder(options.out or Path(options.study.stem), study)
-    folder.check()
-    with working("checking the study and making the cells"):
-        prepared = prepare(study)
-    print("\n".join(study_lines(prepared)), flush=True)
-    for figure in _cautions(prepared):
-        print(figure, file=sys.stderr)
-    interrupted = _solve(prepared, folder)
-    if folder.rows:
-        print()
-        print(spectrum_text(folder.rows))
-        print(f"\nwritten to {folder.path}: {', '.join(folder.files)}")
-    if interrupted:
-        kept = f"{len(folder.rows)} of {len(prepared.points)} wavelengths are kept"
-        return _complain(f"interrupted; {kept}", INTERRUPTED)
-    for complaint in _complaints(folder):
-        print(f"dda: {complaint}", file=sys.stderr)
-    near = _near(prepared, folder, options.debug)
-    return near or (OK if all(row.converged for row in folder.rows) else FAILED)
+        return report_error(error)
 
 
 def plan(options: argparse.Namespace) -> int:
@@ -177,81 +142,8 @@ def _sheet(options: argparse.Namespace) -> int:
     return OK
 
 
-def _solve(prepared: Prepared, folder: RunFolder) -> bool:
-    """Solve all points; return whether the user interrupted. What is finished is on disk."""
-    from dda.report.progress import ProgressBar
-    from dda.study.runner import run_points
-
-    folder.begin()
-    try:
-        with ProgressBar(len(prepared.points)) as bar:
-            for row in run_points(prepared.points, bar.watch, prepared.geometries):
-                folder.add(row)
-                bar.advance()
-    except KeyboardInterrupt:
-        return True
-    finally:
-        folder.close()
-    return False
-
-
-def _near(prepared: Prepared, folder: RunFolder, debug: bool) -> int:
-    """Near fields, if they are asked for; the spectrum is safe on disk whatever happens here."""
-    if prepared.study.tables.near_field is None or not folder.rows:
-        return OK
-    from dda.report.near_run import run_near
-
-    try:
-        point, name = prepared.points[0], prepared.study.name
-        good = run_near(point, folder.rows, prepared.geometries, folder.path, name)
-        return OK if good else FAILED
-    except KeyboardInterrupt:
-        return _complain("interrupted; the spectrum is kept", INTERRUPTED)
-    except Exception as error:
-        if debug:
-            raise
-        code = _report(error)
-        return _complain("the near field failed; the spectrum is kept", code)
-
-
-def _cautions(prepared: Prepared) -> list[str]:
-    from dda.study.plan import validity
-
-    return [
-        f"dda: caution: {figure.name} {figure.value}: {figure.remark}"
-        for figure in validity(prepared)
-        if not figure.good
-    ]
-
-
-def _complaints(folder: RunFolder) -> list[str]:
-    """Return a line for the failed wavelengths and one for those that did not converge."""
-    failed = [row for row in folder.rows if not row.answered]
-    coarse = [row for row in folder.rows if row.status == "coarse"]
-    doubtful = [
-        row for row in folder.rows if row.answered and not row.converged and row not in coarse
-    ]
-    lines = []
-    if failed:
-        where = ", ".join(f"{row.wavelength_nm:g}" for row in failed)
-        lines.append(f"no answer at {where} nm: {failed[0].message}")
-    if coarse:
-        where = ", ".join(f"{row.wavelength_nm:g}" for row in coarse)
-        lines.append(
-            f"the target was not reached at {where} nm; at {coarse[0].wavelength_nm:g} nm "
-            f"{coarse[0].message}. The error bars hold all the same"
-        )
-    if doubtful:
-        where = ", ".join(f"{row.wavelength_nm:g}" for row in doubtful)
-        lines.append(
-            f"the solver did not converge at {where} nm: {doubtful[0].message} at "
-            f"{doubtful[0].wavelength_nm:g} nm. These rows are marked in the table and ringed in "
-            "the figure; do not rely on them"
-        )
-    return lines
-
-
-def _report(error: Exception) -> int:
+def report_error(error: Exception) -> int:
+    """Tell the user of an error, and return the exit code."""
     from shapes import ShapeError
 
     if isinstance(error, InputError | ShapeError):
@@ -288,9 +180,7 @@ def _parser() -> argparse.ArgumentParser:
         sub.set_defaults(command=command)
         return sub
 
-    sub = add("run", run, "compute the spectrum of a study")
-    sub.add_argument("study", type=Path, metavar="STUDY.toml")
-    sub.add_argument("--out", type=Path, metavar="DIR", help="default: named after the study")
+    cli_run.add_command(add)
 
     sub = add("plan", plan, "say what a study would run, and how long; solve nothing")
     sub.add_argument("study", type=Path, metavar="STUDY.toml")

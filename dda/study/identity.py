@@ -15,6 +15,7 @@ from dda.errors import InputError
 from dda.materials.anisotropic import AnisotropicMaterial
 from dda.study.media import media_of
 from dda.study.points import Point
+from dda.study.rows import Row
 
 #: Raised whenever the same study gives other numbers than before: answers of another revision are
 #: computed again.
@@ -67,6 +68,25 @@ def fingerprints(points: Sequence[Point]) -> list[str]:
             text = f"{start}\n{point.wavelength!r}\n{values}"
             found.append(hashlib.sha256(text.encode()).hexdigest()[:32])
     return found
+
+
+def near_fingerprint(point: Point, rows: Sequence[Row]) -> str:
+    """Return the fingerprint of a combination's near field, which the spectrum's peak may decide.
+
+    Parameters
+    ----------
+    point : Point
+    rows : sequence of Row
+        The spectrum of its combination.
+    """
+    start = _of_tables(point, {})
+    near = point.tables.near_field
+    assert near is not None
+    text = near.model_dump_json()
+    if near.points is not None:
+        text += _digest(point.folder / near.points)
+    spectrum = [(row.wavelength_nm, f"{row.c_ext_nm2:.9g}", row.spacing_nm) for row in rows]
+    return hashlib.sha256(f"{start}\n{text}\n{spectrum}".encode()).hexdigest()[:32]
 
 
 def _of_tables(point: Point, digests: dict[Path, str]) -> str:

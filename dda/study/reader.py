@@ -107,7 +107,11 @@ def read_study(path: str | Path) -> Study:
         line for every mistake found.
     """
     path = Path(path)
-    text = _read(path)
+    return study_from_text(_read(path), path)
+
+
+def study_from_text(text: str, path: Path) -> Study:
+    """Check the text of a study file; ``path`` tells where relative paths start."""
     try:
         data = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
