@@ -136,5 +136,8 @@ def _modes(wavelength: float, geometry: Geometry, media: Media) -> int:
 
 
 def _part(geometry: Geometry) -> float:
-    """Part of a solve that a field of one parity takes on a particle with mirror planes."""
-    return 0.5 ** sum(geometry.particle.mirrors())
+    """Part of a solve that a field of one parity takes on a particle with mirror planes.
+
+    A plane wave along an axis is the sum of two of them, and that is what is measured.
+    """
+    return 0.5 if any(geometry.particle.mirrors()) else 1.0
