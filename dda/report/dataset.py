@@ -186,7 +186,7 @@ class Layout:
     dims: tuple[str, ...]
     shape: tuple[int, ...]
     order: np.ndarray
-    coordinates: dict[str, tuple[tuple[str, ...], np.ndarray]]
+    coordinates: Mapping[str, tuple[tuple[str, ...], np.ndarray]]
 
 
 def layout_of(entries: Sequence[Entry]) -> Layout:

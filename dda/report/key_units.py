@@ -55,7 +55,7 @@ def unit_of(name: str, tables: Mapping[str, Any]) -> str | None:
         return _KNOWN[plain]
     if words[0] != "particle":
         return None
-    units = {unit for shape in _shapes(words, tables) if (unit := _unit(shape, words[-1]))}
+    units = {unit for shape in _shapes(words, tables) if (unit := _unit(shape, str(words[-1])))}
     if len(units) == 1:
         return units.pop()
     return next((unit for end, unit in _ENDINGS.items() if plain.endswith(f".{end}")), None)

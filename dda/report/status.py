@@ -144,7 +144,7 @@ def read_status(folder: Path, most: int = 10) -> Status:
             Task(e.varied, e.wavelength_nm, worker, max(0.0, now - begun))
             for e, worker, begun in running[:most]
         ),
-        next=_next(folder, held=holder is not None, left=total - done),
+        next=_next(folder, holder is not None, total - done, counts),
     )
 
 
@@ -199,8 +199,11 @@ def _seconds_left(
     return max(0.0, pace * left - begun) / max(1, len({worker for _, worker, _ in running}))
 
 
-def _next(folder: Path, held: bool, left: int) -> str:
+def _next(folder: Path, held: bool, left: int, counts: Mapping[str, int]) -> str:
     place = shlex.quote(str(folder))
     if held:
         return f"dda watch {place}"
-    return f"dda run {place}" if left else f"dda export {place} --to csv"
+    if left:
+        return f"dda run {place}"
+    again = counts["failed"] + counts["not converged"]
+    return f"dda run {place} --again" if again else f"dda export {place} --to csv"

@@ -73,7 +73,10 @@ def next_text(status: Status) -> str:
     """Return what the command `Status.next` is for."""
     if status.holder is not None:
         return "to watch it"
-    return "to go on" if status.done < status.total else "to have its table"
+    if status.done < status.total:
+        return "to go on"
+    again = status.counts["failed"] + status.counts["not converged"]
+    return "to compute those points again" if again else "to have its table"
 
 
 def place(varied: Mapping[str, Any], wavelength: float) -> str:
