@@ -6,7 +6,7 @@ import pytest
 from dda.errors import InputError
 from dda.lattice.convolution import Convolution
 from dda.lattice.green import radial_table, tensor
-from dda.lattice.kernel import kernel, padded_shape
+from dda.lattice.kernel import Kernel, kernel, padded_shape
 from dda.lattice.workers import Workers
 
 SHAPES = [(1, 1, 1), (5, 1, 1), (1, 1, 6), (3, 4, 5), (7, 2, 3), (6, 6, 6), (11, 3, 1), (2, 9, 7)]
@@ -103,3 +103,24 @@ def test_unknown_library_is_refused():
     table, _, _ = problem((2, 2, 2))
     with pytest.raises(InputError, match="scipy"):
         Convolution(kernel((2, 2, 2), table), fft="unknown")
+
+
+@pytest.mark.parametrize("shape", SHAPES)
+def test_double_precision_on_a_single_precision_kernel(shape):
+    """Nothing but the kernel's rounding is left, 6e-8 of its largest elements."""
+    table, index, p = problem(shape)
+    single = kernel(shape, table, "single")
+    mixed = Convolution(single, dtype=complex)(index, p, np.empty_like(p))
+    again = Kernel(single.shape, single.padded, single.spectrum.astype(complex))
+    expected = Convolution(again)(index, p, np.empty_like(p))
+    assert mixed.dtype == complex
+    assert np.linalg.norm(mixed - expected) <= 1e-13 * max(np.linalg.norm(expected), 1e-30)
+
+
+def test_released_buffers_come_back():
+    shape = (6, 5, 4)
+    table, index, p = problem(shape)
+    convolution = Convolution(kernel(shape, table))
+    first = convolution(index, p, np.empty_like(p))
+    convolution.release()
+    assert np.array_equal(convolution(index, p, np.empty_like(p)), first)

@@ -5,7 +5,11 @@ import pytest
 from scipy.sparse.linalg import aslinearoperator
 
 from dda.lattice import krylov
-from dda.lattice.krylov import Subspace, cocg
+from dda.lattice.krylov import Iteration, Subspace
+
+
+def cocg(operator, b, preconditioner=None, **rules):
+    return krylov.cocg(operator, b, preconditioner, Iteration(**rules))
 
 
 def complex_symmetric(n, seed, shift=3.0):
@@ -129,7 +133,9 @@ def test_every_method_solves_and_counts(method):
             counted.append(1)
             return a @ v
 
-    result = krylov.METHODS[method](Operator(), b, lambda r: r / np.diag(a), tolerance=1e-9)
+    result = krylov.METHODS[method](
+        Operator(), b, lambda r: r / np.diag(a), Iteration(tolerance=1e-9)
+    )
     assert result.status == "converged"
     # A residual of 1e-9 and a condition number below 10.
     assert result.x == pytest.approx(np.linalg.solve(a, b), rel=1e-6, abs=1e-9)
@@ -140,9 +146,8 @@ def test_every_method_solves_and_counts(method):
 def test_every_method_stops_when_told_to(method):
     a = np.diag(np.linspace(1, 100, 300)).astype(complex)
     b = np.ones(300, complex)
-    result = krylov.METHODS[method](
-        aslinearoperator(a), b, tolerance=1e-12, monitor=lambda step, x, residual: True
-    )
+    rules = Iteration(tolerance=1e-12, monitor=lambda step, x, residual: True)
+    result = krylov.METHODS[method](aslinearoperator(a), b, None, rules)
     assert result.status == "stopped"
     assert 0 < np.linalg.norm(a @ result.x - b) < np.linalg.norm(b)
 
@@ -166,3 +171,60 @@ def test_subspace_that_nearly_holds_the_solution():
     assert np.all(abs(known.vectors @ rest) < 1e-10)
     assert abs(b @ early.x - b @ exact) < 0.1 * early.residual * abs(b @ exact)
     assert Subspace.of(operator, [0 * b]) is None
+
+
+@pytest.mark.parametrize("method", sorted(krylov.METHODS))
+def test_single_precision_products_reach_double_answers(method):
+    """With the residual corrected in double; without, single precision stays above 1e-7."""
+    a, b = complex_symmetric(70, 9)
+    low, high = aslinearoperator(a.astype(np.complex64)), aslinearoperator(a)
+    rules = Iteration(tolerance=1e-11, exact=high)
+    result = krylov.iterate(method, low, b, None, rules)
+    assert result.status == "converged"
+    assert result.x.dtype == np.complex128
+    true = np.linalg.norm(b - a @ result.x) / np.linalg.norm(b)
+    assert true < 1.1e-11  # the residual is that of the answer, rounded in single precision
+    assert result.x == pytest.approx(np.linalg.solve(a, b), rel=1e-9, abs=1e-10)
+
+
+def test_renewed_residuals_cost_few_steps():
+    a, b = complex_symmetric(300, 10, shift=1.6)
+    low, high = aslinearoperator(a.astype(np.complex64)), aslinearoperator(a)
+    plain = cocg(high, b, tolerance=1e-9)
+    mixed = krylov.iterate("cocg", low, b, None, Iteration(tolerance=1e-9, exact=high))
+    assert mixed.status == "converged"
+    # Restarting from scratch at every renewal takes half as many again.
+    assert mixed.iterations <= 1.15 * plain.iterations
+
+
+def test_mixed_precision_monitor_sees_the_whole_iterate():
+    a, b = complex_symmetric(60, 11)
+    exact = np.linalg.solve(a, b)
+    errors = []
+
+    def monitor(step, x, residual):
+        errors.append(np.linalg.norm(x - exact))
+        return False
+
+    rules = Iteration(tolerance=1e-9, exact=aslinearoperator(a), monitor=monitor)
+    krylov.iterate("cocr", aslinearoperator(a.astype(np.complex64)), b, None, rules)
+    assert errors[-1] < 1e-7 * np.linalg.norm(exact)
+    assert max(errors[len(errors) // 2 :]) < 1e-2 * np.linalg.norm(exact)
+
+
+def test_idr_takes_no_more_steps_than_its_theory_allows():
+    """At most n + n/s products for n unknowns, in exact arithmetic."""
+    a, b = complex_symmetric(60, 12)
+    for shadow in (1, 2, 8):
+        rules = Iteration(tolerance=1e-10, shadow=shadow)
+        result = krylov.idr(aslinearoperator(a), b, None, rules)
+        assert result.status == "converged"
+        assert result.products <= 60 + 60 // shadow + 1
+
+
+def test_breakdown_goes_on_with_another_method():
+    a = np.array([[0, 1], [1, 0]], complex)
+    b = np.array([1, 0], complex)
+    result = krylov.iterate("cocg", aslinearoperator(a), b, None, Iteration(tolerance=1e-10))
+    assert result.status == "converged"
+    assert result.x == pytest.approx([0, 1], abs=1e-9)

@@ -183,3 +183,32 @@ def test_monitor_sees_every_step():
     assert len(steps) >= done.polarization.iterations - 1
     # the step that ends the iteration by itself is not shown
     assert max(steps) >= done.polarization.iterations - 1
+
+
+def test_mixed_precision_gives_the_answers_of_double():
+    """To a residual of 1e-6: the cross sections to 1e-5 of their values, half the kernel."""
+    cells = shapes.voxelize(shapes.sphere(60, "gold"), cells=10)
+    found = {}
+    for precision in ("double", "mixed"):
+        system = dda.system(cells, 700, "water", precision=precision)
+        found[precision] = dda.solve(system, LIGHT, tolerance=1e-6)
+        assert found[precision].status == "converged"
+        assert found[precision].p.dtype == np.complex128
+    mixed, double = (cross_sections(found[k]) for k in ("mixed", "double"))
+    assert values(mixed) == pytest.approx(values(double), rel=1e-5)
+    # the residual it states is that of the double-precision system, up to its rounded kernel
+    rest = found["double"].incident - found["double"].system.matvec(found["mixed"].p)
+    scale = found["double"].system.precondition
+    true = np.linalg.norm(scale(rest)) / np.linalg.norm(scale(found["double"].incident))
+    assert true < 1.5e-6
+    kernels = [found[k].system.convolution.kernel.spectrum.nbytes for k in ("mixed", "double")]
+    assert 2 * kernels[0] == kernels[1]
+
+
+@pytest.mark.parametrize("method", ["cocr", "idr"])
+def test_mixed_precision_with_other_methods(method):
+    system = make(shapes.sphere(40, "gold"), 540, 9, precision="mixed")
+    exact = cross_sections(solve_dense(make(shapes.sphere(40, "gold"), 540, 9), LIGHT))
+    done = settle(system, LIGHT, method=method)
+    assert done.polarization.status == "converged"
+    assert np.all(off(done, exact) <= 3 * done.error + 1e-6 * exact.c_ext)

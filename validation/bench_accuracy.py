@@ -9,7 +9,7 @@ import numpy as np
 import dda
 import shapes
 from dda.lattice import relative_system
-from dda.lattice.krylov import cocg
+from dda.lattice.krylov import Iteration, cocg
 from dda.lattice.workers import available_threads
 from validation.bench_product import WholeGrid
 from validation.compare import permittivity
@@ -92,7 +92,8 @@ def plain_way(particle: shapes.Particle, across: int, patience: float) -> tuple[
         return time.perf_counter() - begin > patience
 
     b = light.field(system.positions, system.k)
-    found = cocg(Operator, b.ravel(), tolerance=RESIDUAL, limit=MOST_STEPS, monitor=late)
+    rules = Iteration(tolerance=RESIDUAL, limit=MOST_STEPS, monitor=late)
+    found = cocg(Operator, b.ravel(), rules=rules)
     c_ext = 4 * np.pi * system.k * float(np.vdot(b.ravel(), found.x).imag)
     return c_ext, found.iterations, found.residual
 

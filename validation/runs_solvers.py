@@ -10,7 +10,7 @@ import numpy as np
 import dda
 import shapes
 from dda.lattice import System, relative_system
-from dda.lattice.krylov import METHODS
+from dda.lattice.krylov import METHODS, Iteration
 from dda.lattice.sectors import Sector, sectors
 from dda.response.settled import SectionsGoal
 from validation.compare import permittivity
@@ -84,9 +84,7 @@ def _run(system: System, method: str, preconditioned: bool) -> _Run:
             sector,
             b,
             sector.precondition if preconditioned else None,
-            tolerance=1e-6,
-            limit=_LIMIT,
-            monitor=watch,
+            Iteration(tolerance=1e-6, limit=_LIMIT, monitor=watch),
         )
         watch.look(result.iterations, result.x)
         goal.add(watch)

@@ -30,6 +30,11 @@ class Kernel:
     padded: tuple[int, int, int]
     spectrum: np.ndarray = field(repr=False)
 
+    @property
+    def parts(self) -> np.ndarray:
+        """The spectrum as real numbers, real and imaginary parts in turn along the last axis."""
+        return self.spectrum.view(self.spectrum.real.dtype)
+
 
 def kernel(shape: tuple[int, int, int], table: RadialTable, precision: str = "double") -> Kernel:
     """Transform the Green tensor of `table` for a box of `shape` cells.

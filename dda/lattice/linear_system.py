@@ -50,6 +50,8 @@ class System:
     convolution : Convolution
     tensors : ndarray of complex, shape (m, 3, 3), or None
         Permittivities relative to the host if a material is anisotropic.
+    mixed : bool
+        Products are in single precision, solutions and their residuals in double.
     """
 
     cells: Cells
@@ -62,6 +64,12 @@ class System:
     convolution: Convolution = field(repr=False)
     table: RadialTable = field(repr=False)
     tensors: np.ndarray | None = field(default=None, repr=False)
+    mixed: bool = False
+
+    @property
+    def answer_dtype(self) -> np.dtype:
+        """Complex number type of solutions."""
+        return np.dtype(np.complex128) if self.mixed else self.dtype
 
     @property
     def mirrors(self) -> tuple[bool, bool, bool]:
@@ -148,7 +156,8 @@ def system(
         Needed by "ldr" alone.
     layer_damping : float
         Strength of the loss in layers between a metal and a dielectric (see Notes); 0 is none.
-    precision : {"double", "single"}
+    precision : {"double", "mixed", "single"}
+        With "mixed", products are in single precision and the residual is corrected in double.
     fft : {"auto", "scipy", "ducc0"}
     workers : Workers, optional
         Threads to use; all cores by default.
@@ -253,6 +262,7 @@ def relative_system(
         k,
         int(sum((n - 1) ** 2 for n in cells.shape)),
     )
+    mixed = precision == "mixed"
     convolution = Convolution(kernel(cells.shape, table, precision), None, fft, workers)
     return System(
         cells,
@@ -260,11 +270,12 @@ def relative_system(
         float(n_host),
         permittivity,
         index,
-        alpha_inverse.astype(convolution.dtype),
+        alpha_inverse if mixed else alpha_inverse.astype(convolution.dtype),
         alpha_inverse.inverse().astype(convolution.dtype),
         convolution,
         table,
         tensors,
+        mixed,
     )
 
 
@@ -339,7 +350,8 @@ def memory_estimate(shape: tuple[int, int, int], n: int, precision: str = "doubl
     half = (lx // 2 + 1) * (ly // 2 + 1) * (lz // 2 + 1)
     kernel = 6 * half * item
     assembly = 3 * half * 16  # one component and its transforms, always in double precision
-    columns = 3 * lx * shape[1] * shape[2] * item
-    vectors = 8 * 3 * n * item
+    # Mixed precision has residuals, and the buffers they take, in double.
+    columns = 3 * lx * shape[1] * shape[2] * (8 if precision == "single" else 16)
+    vectors = (8 * item + (24 if precision == "mixed" else 0)) * 3 * n
     cells = 180 * n
     return int(max(kernel + assembly, kernel + columns + vectors) + cells)

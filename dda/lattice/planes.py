@@ -70,7 +70,7 @@ def multiply(spectrum, block, places, shape, folded, signs, turned):  # pragma: 
     lx, ly, lz = shape
     half_z = lz - 1 if folded[2] else lz // 2
     s, v = spectrum.reshape(-1), block.reshape(-1)
-    one = s.dtype.type(1)
+    one = v.dtype.type(1)
     s_stride = spectrum.shape[2] * spectrum.shape[3]
     v_stride = ly * block.shape[3]
     for g in range(len(places)):
@@ -97,7 +97,7 @@ def multiply(spectrum, block, places, shape, folded, signs, turned):  # pragma: 
 def _forwards(s, i, s_stride, v, j, v_stride, n, xy, xz, yz):  # pragma: no cover - compiled
     whole = n - n % WIDTH
     for z in range(0, 2 * whole, 2 * WIDTH):
-        times(s, i + z, s_stride, v, j + z, v_stride, xy, xz, yz, False)
+        times(s, i + z, s_stride, v, j + z, v_stride, xy, xz, yz, False)  # type: ignore[call-arg]
     for z in range(2 * whole, 2 * n, 2):
         _single(s, i + z, s_stride, v, j + z, v_stride, xy, xz, yz)
 
@@ -107,7 +107,7 @@ def _backwards(s, i, s_stride, v, j, v_stride, n, xy, xz, yz):  # pragma: no cov
     whole = n - n % WIDTH
     for z in range(0, 2 * whole, 2 * WIDTH):
         first = j - z - 2 * (WIDTH - 1)
-        times(s, i + z, s_stride, v, first, v_stride, xy, xz, yz, True)
+        times(s, i + z, s_stride, v, first, v_stride, xy, xz, yz, True)  # type: ignore[call-arg]
     for z in range(2 * whole, 2 * n, 2):
         _single(s, i + z, s_stride, v, j - z, v_stride, xy, xz, yz)
 

@@ -7,7 +7,7 @@ mirror, and the system never mixes them. Each is known from the cells on one sid
 from __future__ import annotations
 
 import itertools
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 
 import numpy as np
@@ -50,6 +50,11 @@ class Sector:
     def dtype(self) -> np.dtype:
         """Complex number type of the products."""
         return self.convolution.dtype
+
+    @cached_property
+    def exact(self) -> Exact | None:
+        """The same operator in double precision where this one is in single; see `System.mixed`."""
+        return Exact(self) if self.system.mixed else None
 
     @cached_property
     def index(self) -> np.ndarray:
@@ -105,6 +110,34 @@ class Sector:
         """``alpha r``: the block-diagonal preconditioner."""
         v = np.ascontiguousarray(vector, self.dtype).reshape(-1, 3)
         return self.alpha.apply(v, np.empty_like(v)).reshape(vector.shape)
+
+
+class Exact:
+    """A sector in double precision, for residuals; it holds no buffers between products.
+
+    Parameters
+    ----------
+    sector : Sector
+        With products in single precision.
+    """
+
+    def __init__(self, sector: Sector):
+        single = sector.convolution
+        double = Convolution(
+            single.kernel, single.axes, single.fft.name, single.workers, np.complex128
+        )
+        self._single = single
+        self._sector = replace(sector, convolution=double)
+        self.system, self.signs = sector.system, sector.signs
+        self.shape, self.dtype = sector.shape, double.dtype
+        self.fold, self.unfold = self._sector.fold, self._sector.unfold
+
+    def matvec(self, vector: np.ndarray) -> np.ndarray:
+        """``(alpha^-1 - G)`` within the sector."""
+        self._single.release()
+        out = self._sector.matvec(vector)
+        self._sector.convolution.release()
+        return out
 
 
 def sectors(system: System, mirrors: tuple[bool, bool, bool] | None = None) -> list[Sector]:

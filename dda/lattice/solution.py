@@ -7,9 +7,9 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from .krylov import METHODS, KrylovResult, Subspace, cocg, gmres
+from .krylov import Iteration, KrylovResult, Subspace, iterate
 from .linear_system import System
-from .sectors import Sector, sectors
+from .sectors import sectors
 from .settling import Goal
 
 # From good to bad; a solution is as good as its worst part.
@@ -86,7 +86,7 @@ def solve(
     goal : Goal, optional
         Stops a sector when what is asked for has settled, whatever the residual; see
         `dda.response.settled`.
-    method : {"cocg", "cocr", "bicgstab", "gmres"}
+    method : {"cocg", "cocr", "bicgstab", "gmres", "idr"}
         Krylov method; GMRES takes over where another breaks down.
 
     Returns
@@ -101,7 +101,7 @@ def solve(
     incident = light.field(system.positions, system.k)
     parts = light.linear_parts() if hasattr(light, "linear_parts") else [(1.0, light)]
     found = sectors(system, mirrors)
-    p = np.zeros((system.n, 3), system.dtype)
+    p = np.zeros((system.n, 3), system.answer_dtype)
     results: list[tuple[KrylovResult, float]] = []
     whole = float(np.linalg.norm(incident))
     extra = 0
@@ -110,25 +110,25 @@ def solve(
             incident if len(parts) == 1 else coefficient * part.field(system.positions, system.k)
         )
         for sector in found:
-            b = sector.fold(field_)
+            home = sector.exact or sector
+            b = home.fold(field_)
             share = float(np.linalg.norm(b)) / whole
-            if share < 1e-7 * (1 if system.dtype == np.complex128 else 100):
+            if share < 1e-7 * (1 if b.dtype == np.complex128 else 100):
                 continue  # the light has no part of this parity
-            guess = sector.fold(start) if start is not None and len(parts) == 1 else None
+            guess = home.fold(start) if start is not None and len(parts) == 1 else None
             known = None
             if len(previous) and guess is None:
                 known = Subspace.of(sector, [sector.fold(v) for v in previous])
                 extra += len(known.vectors) if known else 0
-            watch = goal.watch(sector, field_, monitor) if goal else None
+            watch = goal.watch(home, field_, monitor) if goal else None
             if watch and known:
                 watch.start_is_known()
-            result = _solve_sector(
-                method, sector, b, tolerance, limit, guess, known, watch or monitor
-            )
+            rules = Iteration(tolerance, limit, guess, known, watch or monitor, sector.exact)
+            result = iterate(method, sector, b, sector.precondition, rules)
             if goal and watch:
                 watch.look(result.iterations, result.x)
                 goal.add(watch)
-            p += sector.unfold(result.x)
+            p += home.unfold(result.x)
             results.append((result, share))
     return Polarization(
         system,
@@ -139,32 +139,6 @@ def solve(
         extra + sum(r.products for r, _ in results),
         float(np.sqrt(sum((r.residual * share) ** 2 for r, share in results))),
         max((_STATUS_OF.get(r.status, r.status) for r, _ in results), key=_badness),
-    )
-
-
-def _solve_sector(
-    method, sector: Sector, b, tolerance, limit, start, subspace, monitor
-) -> KrylovResult:
-    options = {"tolerance": tolerance, "limit": limit, "monitor": monitor}
-    if subspace is None:
-        first = METHODS[method](sector, b, sector.precondition, start=start, **options)
-    elif method == "cocg":
-        first = cocg(sector, b, sector.precondition, subspace=subspace, **options)
-    else:  # the others take no more than a first guess from it
-        start = np.zeros_like(b)
-        subspace.start(start, b.copy())
-        first = METHODS[method](sector, b, sector.precondition, start=start, **options)
-    if first.status != "stalled":
-        return first
-    options["limit"] = max(1, limit - first.iterations)
-    second = gmres(sector, b, sector.precondition, start=first.x, **options)
-    return KrylovResult(
-        second.x,
-        second.residual,
-        first.iterations + second.iterations,
-        first.products + second.products,
-        second.status,
-        np.concatenate([first.history, second.history]),
     )
 
 

@@ -24,6 +24,7 @@ def times(typingctx, s, i, s_stride, v, j, v_stride, xy_sign, xz_sign, yz_sign, 
     s : ndarray of float, 1D
         Real and imaginary parts in turn. Those of xx begin at `i`, those of yy, zz, xy, xz, yz
         every `s_stride` further on.
+        May be of lower precision than `v`.
     v : ndarray of float, 1D
         The same for x, y, z from `j` on, every `v_stride`.
     xy_sign, xz_sign, yz_sign : float
@@ -36,8 +37,9 @@ def times(typingctx, s, i, s_stride, v, j, v_stride, xy_sign, xz_sign, yz_sign, 
     reverse = backwards.literal_value
 
     def generate(context, builder, signature, arguments):
-        real = context.get_value_type(signature.args[0].dtype)
-        lanes = ir.VectorType(real, 2 * WIDTH)
+        kinds = [signature.args[k].dtype for k in (0, 3)]
+        vectors = [ir.VectorType(context.get_value_type(kind), 2 * WIDTH) for kind in kinds]
+        lanes = vectors[1]
         data = [
             context.make_array(signature.args[k])(context, builder, arguments[k]).data
             for k in (0, 3)
@@ -46,12 +48,12 @@ def times(typingctx, s, i, s_stride, v, j, v_stride, xy_sign, xz_sign, yz_sign, 
         def pointer(array, begin, stride, number):
             shift = builder.mul(stride, ir.Constant(stride.type, number))
             place = builder.gep(data[array], [builder.add(begin, shift)])
-            return builder.bitcast(place, lanes.as_pointer())
+            return builder.bitcast(place, vectors[array].as_pointer())
 
-        def load(*where):
-            loaded = builder.load(pointer(*where))
-            loaded.align = real_bytes
-            return loaded
+        def load(array, *where):
+            loaded = builder.load(pointer(array, *where))
+            loaded.align = kinds[array].bitwidth // 8
+            return loaded if kinds[array] == kinds[1] else builder.fpext(loaded, lanes)
 
         def shuffled(vector, order):
             mask = ir.Constant(ir.VectorType(ir.IntType(32), len(order)), order)
@@ -71,7 +73,6 @@ def times(typingctx, s, i, s_stride, v, j, v_stride, xy_sign, xz_sign, yz_sign, 
                 out = builder.fadd(out, term, flags=_FAST)
             return out
 
-        real_bytes = 8 if signature.args[0].dtype == types.float64 else 4
         lanes_of = range(WIDTH)[::-1] if reverse else range(WIDTH)
         real_parts = [2 * k for k in lanes_of for _ in range(2)]
         imaginary_parts = [2 * k + 1 for k in lanes_of for _ in range(2)]
@@ -88,7 +89,7 @@ def times(typingctx, s, i, s_stride, v, j, v_stride, xy_sign, xz_sign, yz_sign, 
         for row, columns in enumerate(((0, 3, 4), (3, 1, 5), (4, 5, 2))):
             terms = [mul(parts[m][0], vector[c]) for c, m in enumerate(columns)]
             terms += [mul(parts[m][1], turned[c]) for c, m in enumerate(columns)]
-            builder.store(total(terms), pointer(1, j, v_stride, row)).align = real_bytes
+            builder.store(total(terms), pointer(1, j, v_stride, row)).align = kinds[1].bitwidth // 8
         return context.get_dummy_value()
 
     signature = types.void(s, i, s_stride, v, j, v_stride, xy_sign, xz_sign, yz_sign, backwards)

@@ -283,8 +283,8 @@ class SolverTable(Table):
     """
 
     tolerance: Annotated[float, Field(strict=True, gt=0, lt=1, allow_inf_nan=False)] = 1e-3
-    method: Literal["cocg", "cocr", "bicgstab", "gmres"] = "cocg"
-    precision: Literal["double", "single"] = "double"
+    method: Literal["cocg", "cocr", "bicgstab", "gmres", "idr"] = "cocg"
+    precision: Literal["double", "mixed", "single"] = "double"
     threads: Annotated[int, Field(strict=True, ge=1, le=4096)] | None = None
     processes: Annotated[int, Field(strict=True, ge=1, le=4096)] | None = None
 
