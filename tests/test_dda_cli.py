@@ -45,6 +45,18 @@ def study(tmp_path, monkeypatch):
     return write
 
 
+#: What a run folder holds.
+FILES = {
+    "about.json",
+    "ledger.sqlite",
+    "lock.sqlite",
+    "points",
+    "spectrum.csv",
+    "spectrum.png",
+    "study.toml",
+}
+
+
 def _rows(folder):
     with Path(folder, "spectrum.csv").open(newline="") as file:
         return list(csv.DictReader(file))
@@ -63,7 +75,7 @@ def test_run_writes_a_spectrum_a_picture_and_a_copy(study, capsys):
     np.testing.assert_allclose(c_ext, c_abs + c_sca, rtol=1e-7)  # nine digits are written
     np.testing.assert_allclose(c_ext / q_ext, np.pi * 10**2, rtol=1e-6)
     assert c_ext.argmax() == 1  # the plasmon of a small gold sphere in water lies near 520 nm
-    assert sorted(os.listdir("results/one")) == ["spectrum.csv", "spectrum.png", "study.toml"]
+    assert set(os.listdir("results/one")) == FILES
     assert Path("results/one/study.toml").read_text() == STUDY
     assert Path("results/one/spectrum.png").read_bytes().startswith(b"\x89PNG")
     printed = capsys.readouterr()
@@ -191,7 +203,7 @@ def test_finished_wavelengths_are_kept_when_one_fails(study, capsys, monkeypatch
     rows = _rows("out")
     assert [row["status"] for row in rows] == ["converged", "failed", "converged"]
     assert rows[1]["c_ext_nm2"] == ""
-    assert rows[1]["message"] == "it broke down"
+    assert rows[1]["message"] == "it broke down; with another solver (bicgstab) as well"
     assert "no answer at 520 nm: it broke down" in capsys.readouterr().err
 
 
@@ -205,13 +217,25 @@ def test_an_unconverged_wavelength_says_so(study, capsys, monkeypatch):
     assert "did not converge at 480, 520, 560 nm" in capsys.readouterr().err
 
 
-def test_a_mistake_of_the_program_is_no_traceback(study, capsys, monkeypatch):
+def test_a_mistake_of_the_program_ends_no_sweep(study, capsys, monkeypatch):
     from dda.study import levels
 
     def broken(*_, **__):
         raise KeyError("nothing a user did")
 
     monkeypatch.setattr(levels, "settle", broken)
+    assert main(["run", study(), "--out", "out"]) == 1
+    said = capsys.readouterr().err
+    assert "KeyError" in said
+    assert "Traceback" not in said
+    assert [row["status"] for row in _rows("out")] == ["failed"] * 3
+
+
+def test_a_mistake_of_the_program_is_no_traceback(study, capsys, monkeypatch):
+    def broken(*_, **__):
+        raise KeyError("nothing a user did")
+
+    monkeypatch.setattr("dda.study.prepare.prepare", broken)
     assert main(["run", study(), "--out", "out"]) == 1
     said = capsys.readouterr().err
     assert "a mistake in the program" in said
@@ -290,10 +314,10 @@ def test_interrupting_keeps_what_is_finished(study):
     out, err = process.communicate(timeout=60)
     assert process.returncode == 130
     assert "Traceback" not in err
-    assert "of 4001 wavelengths are kept" in err
+    assert "of 4001 points are kept" in err
     assert 1 <= len(_rows("out")) < 4001
     assert "written to out" in out
-    assert sorted(os.listdir("out")) == ["spectrum.csv", "spectrum.png", "study.toml"]
+    assert set(os.listdir("out")) == FILES
 
 
 def test_the_runner_yields_a_row_at_a_time(study):
