@@ -33,6 +33,7 @@ _REST = 10.0
 _ASSETS = {
     "/": ("watch.html", "text/html"),
     "/watch.js": ("watch.js", "text/javascript"),
+    "/watch_plot.js": ("watch_plot.js", "text/javascript"),
     "/watch.css": ("watch.css", "text/css"),
 }
 _HEADERS = {

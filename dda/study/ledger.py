@@ -369,9 +369,13 @@ class Ledger:
         try:
             base.execute("SELECT COUNT(*) FROM sqlite_master")
             return base
-        except sqlite3.OperationalError:
-            # The log's index can be neither found nor made: nobody writes, nobody can.
+        except sqlite3.OperationalError as error:
             base.close()
+            if "locked" in str(error):
+                raise InputError(f"{self.path}: is busy; try again in a moment") from None
+            # else its log's index can be neither found nor made: nobody writes, nobody can
+        except sqlite3.DatabaseError:
+            return base  # no ledger, or a damaged one: the caller finds out
         log = self.path.with_name(f"{LEDGER}-wal")
         if not (log.exists() and log.stat().st_size):
             return _connect(self.path, "mode=ro&immutable=1")
