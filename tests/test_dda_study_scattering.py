@@ -198,6 +198,7 @@ def test_without_the_table_there_is_nothing():
         ("angles = {from = 90, to = 0, step = 10}", "above to"),
         ("angles = {from = 0, to = 180, step = 0}", "step"),
         ("angles = {from = 0, to = 180, step = 0.01}", "more than"),
+        ("angles = {from = 0, until = 180, step = 5}", "takes from, to and step"),
         ('angles = "all"', "list of angles"),
         ("angles = [0, 30, 30]", "twice"),
         ("angles = []", "list of angles"),

@@ -13,7 +13,7 @@ from dda.light import PlaneWave
 from dda.response import Settled
 from dda.response.averages import OrientationAverage
 from dda.response.far_field import scattering_amplitude
-from dda.response.mueller import averaged_mueller_matrix
+from dda.response.mueller import averaged_mueller_matrix, mueller_matrix
 from dda.response.multipoles import averaged_multipoles, multipoles
 from dda.response.one_direction import OneDirection, from_two, radiation_pressure
 from dda.response.tmatrix import TMatrix
@@ -311,8 +311,8 @@ def _by_angle(
 ) -> tuple[np.ndarray, list[Array]]:
     assert table.angles is not None
     azimuths = [azimuth + turn for azimuth in table.azimuths]
-    matrices = np.stack([both.mueller_matrices(table.angles, a) for a in azimuths])
     amplitudes = np.stack([both.amplitude_matrices(table.angles, a) for a in azimuths])
+    matrices = mueller_matrix(amplitudes)
     outgoing = [both.outgoing(table.angles, a) for a in azimuths]
     pattern = np.mean(
         [[(abs(scattering_amplitude(w, n)) ** 2).sum(axis=1) for n in outgoing] for w in waves],

@@ -33,6 +33,8 @@ class AngleRange(Table):
 
 def _angles(value: Any) -> Any:
     if isinstance(value, dict):
+        if set(value) != {"from", "to", "step"}:
+            raise ValueError(f"takes from, to and step, not {', '.join(value) or 'nothing'}")
         table = AngleRange.model_validate(value)
         count = math.floor((table.stop - table.start) / table.step + 1e-9) + 1
         value = tuple(round(table.start + i * table.step, 9) for i in range(count))
