@@ -1,7 +1,6 @@
 """Runs for the tests of what reads them: a ledger with made-up answers."""
 
 import hashlib
-import math
 
 from dda.study.ledger import Answered, Entry, Ledger
 from dda.study.point_file import write_point
@@ -69,8 +68,3 @@ def with_file(folder, ledger, entry, levels, arrays=()):
     row = answer(entry).row
     ledger.record(entry.identity, Answered(row, file=file, checksum=checksum))
     return file
-
-
-def same(a, b):
-    """Whether two numbers are equal, or both unknown."""
-    return a == b or (math.isnan(a) and math.isnan(b))

@@ -12,10 +12,16 @@ from pathlib import Path
 from dda.errors import InputError
 from dda.study.ledger import Ledger
 
+#: A folder of VTK files has this one.
+PARTICLE = "particle.vtu"
+
 
 @dataclass(frozen=True)
 class Format:
-    """A format: the ending of its file, and what writes a run (or a point of it) into it."""
+    """A format: the ending of its file, and what writes a run (or a point of it) into it.
+
+    A format without a suffix is a folder of files.
+    """
 
     suffix: str
     write: Callable[[Path, Path, int | None], None]
@@ -63,37 +69,58 @@ def export(
     with Ledger(folder) as ledger:
         if next(ledger.rows(), None) is None:
             raise InputError(f"{folder}: no point is finished yet, so there is nothing to export")
-    path = _named(out or Path(folder.resolve().name), name)
-    if path.exists() and not replace:
-        raise InputError(f"{path}: is there already; give another --out, or --replace")
-    if path.exists() and path.is_dir() != (name == "vtk"):
-        kind = "a folder" if path.is_dir() else "a file"
-        raise InputError(f"{path}: {kind} of that name is in the way; give another --out")
+    path = _named(out or _default(folder, name), name)
+    _check_place(path, wanted, replace)
     aside = path.with_name(f".{path.stem}.{secrets.token_hex(4)}{wanted.suffix}")
+    old = aside.with_name(f"{aside.name}.old")
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
         wanted.write(folder, aside, point)
         if path.is_dir():
-            shutil.rmtree(path)
+            os.replace(path, old)
         os.replace(aside, path)
     except OSError as error:
         raise InputError(f"{path}: cannot be written: {error.strerror or error}") from error
     finally:
-        if aside.is_dir():
-            shutil.rmtree(aside)
-        aside.unlink(missing_ok=True)
+        for rest in (aside, old):
+            if rest.is_dir():
+                shutil.rmtree(rest)
+            elif rest.exists():
+                rest.unlink()
     return path
+
+
+def _check_place(path: Path, wanted: Format, replace: bool) -> None:
+    """Refuse a place where something is that may not be replaced."""
+    if not path.exists():
+        return
+    if not replace:
+        raise InputError(f"{path}: is there already; give another --out, or --replace")
+    if path.is_dir() != (not wanted.suffix):
+        kind = "a folder" if path.is_dir() else "a file"
+        raise InputError(f"{path}: {kind} of that name is in the way; give another --out")
+    if path.is_dir() and not (path / PARTICLE).is_file():
+        raise InputError(
+            f"{path}: is no folder that an export has made, so it is not replaced; give another "
+            "--out"
+        )
+
+
+def _default(folder: Path, name: str) -> Path:
+    stem = folder.resolve().name
+    return Path(stem if FORMATS[name].suffix else f"{stem}_{name}")
 
 
 def _named(path: Path, name: str) -> Path:
     """Give a path the suffix of its format, unless it has one; not that of another format."""
     suffix = FORMATS[name].suffix
     for other, known in FORMATS.items():
-        if path.suffix == known.suffix and known.suffix != suffix:
+        if other != name and known.suffix and path.suffix == known.suffix:
+            has = f"has {suffix}" if suffix else "makes a folder"
             raise InputError(
-                f"{path}: {known.suffix} is the ending of --to {other}; --to {name} has {suffix}"
+                f"{path}: {known.suffix} is the ending of --to {other}; --to {name} {has}"
             )
-    return path if path.suffix == suffix else path.with_name(path.name + suffix)
+    return path if path.suffix == suffix or not suffix else path.with_name(path.name + suffix)
 
 
 def _write_csv(folder: Path, path: Path, _: int | None) -> None:
@@ -118,5 +145,5 @@ def _write_vtk(folder: Path, path: Path, point: int | None) -> None:
 FORMATS = {
     "csv": Format(".csv", _write_csv),
     "netcdf": Format(".nc", _write_netcdf),
-    "vtk": Format(".vtk", _write_vtk),
+    "vtk": Format("", _write_vtk),
 }

@@ -13,6 +13,7 @@ import numpy as np
 import shapes
 from dda.errors import InputError
 from dda.report.near_folder import BOX, SURFACE, TABLE
+from dda.report.status_text import place as place_text
 from dda.study.geometry import WINDOW
 from dda.study.ledger import Ledger
 from dda.study.particle import build_particle
@@ -42,7 +43,7 @@ class Sheet:
     about: dict[str, str] = field(default_factory=dict)
 
 
-def write_vtk(run: Path, path: Path, point: int | None = None) -> int:
+def write_vtk(run: Path, path: Path, point: int | None = None) -> None:
     """Make a folder of VTK files from a run; origin is the centre of the particle's bounds.
 
     Parameters
@@ -55,19 +56,15 @@ def write_vtk(run: Path, path: Path, point: int | None = None) -> int:
         The number of the point whose particle is written; by default that of the first one that
         has an answer.
 
-    Returns
-    -------
-    int
-        The number of that point.
-
     Raises
     ------
     InputError
         No point is finished, or there is no such point.
     """
-    number, cells, centre = _cells_of(run, point)
+    name, cells, centre = _cells_of(run, point)
     path.mkdir()
-    _save(path, Sheet("particle", _voxels(cells, centre), _about_cells(cells)))
+    about = {"point": name, **_about_cells(cells)}
+    _save(path, Sheet("particle", _voxels(cells, centre), about))
     for name in (BOX, TABLE, SURFACE):
         for file in sorted(run.rglob(name)):
             inner = file.parent.relative_to(run)
@@ -76,11 +73,10 @@ def write_vtk(run: Path, path: Path, point: int | None = None) -> int:
             (path / inner).mkdir(parents=True, exist_ok=True)
             for sheet in _READERS[name](file):
                 _save(path / inner, sheet)
-    return number
 
 
-def _cells_of(run: Path, number: int | None) -> tuple[int, shapes.Cells, np.ndarray]:
-    """The cells of a point as it was solved last, and the centre of its particle."""
+def _cells_of(run: Path, number: int | None) -> tuple[str, shapes.Cells, np.ndarray]:
+    """Which point it is, its cells as it was solved last, and the centre of its particle."""
     with Ledger(run) as ledger:
         study, about = ledger.study(), ledger.about()
         found = (
@@ -97,7 +93,8 @@ def _cells_of(run: Path, number: int | None) -> tuple[int, shapes.Cells, np.ndar
     own = StudyTables.model_validate(tables.vary.applied(tables.data, values))
     particle = build_particle(own.particle, place.parent)
     cells = shapes.voxelize(particle, spacing=row.spacing_nm, window=WINDOW)
-    return number, cells, np.add(*particle.bounds) / 2
+    name = f"{number}: {place_text(row.varied, row.wavelength_nm)}"
+    return name, cells, np.add(*particle.bounds) / 2
 
 
 def _voxels(cells: shapes.Cells, centre: np.ndarray) -> Any:
