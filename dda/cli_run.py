@@ -71,10 +71,10 @@ def run(options: argparse.Namespace) -> int:
             near = _near(prepared, folder, options.debug)
         except KeyboardInterrupt:
             _summarize(folder)
-            kept = f"{len(folder.rows)} of {len(prepared.points)} points are kept"
+            kept = _kept(folder, prepared)
             return _complain(f"interrupted; {kept}, the same command goes on", INTERRUPTED)
         except ComputationError as error:
-            kept = f"{len(folder.rows)} of {len(prepared.points)} points are kept"
+            kept = _kept(folder, prepared)
             return _complain(f"{error}\ndda: {kept}; the same command goes on", FAILED)
         finally:
             folder.close()
@@ -202,6 +202,12 @@ def _closing(outcomes: Any) -> Iterator[Any]:
         yield outcomes
     finally:
         outcomes.close()
+
+
+def _kept(folder: RunFolder, prepared: Prepared) -> str:
+    if not folder.opened:
+        return "all points that were finished before are kept"
+    return f"{len(folder.rows)} of {len(prepared.points)} points are kept"
 
 
 def _summarize(folder: RunFolder) -> None:

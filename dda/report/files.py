@@ -6,7 +6,7 @@ import os
 import secrets
 from pathlib import Path
 
-from dda.errors import InputError
+from dda.errors import write_error
 
 
 def write_aside(path: Path, content: bytes) -> None:
@@ -22,6 +22,8 @@ def write_aside(path: Path, content: bytes) -> None:
     ------
     InputError
         The file cannot be written; what was there before is still there.
+    ComputationError
+        The disk is full or fails; the same holds.
     """
     aside = path.with_name(f".{path.name}.{secrets.token_hex(4)}.part")
     try:
@@ -31,6 +33,6 @@ def write_aside(path: Path, content: bytes) -> None:
             os.fsync(file.fileno())
         os.replace(aside, path)
     except OSError as error:
-        raise InputError(f"{path}: cannot be written: {error.strerror}") from error
+        raise write_error(path, error) from error
     finally:
         aside.unlink(missing_ok=True)

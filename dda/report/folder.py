@@ -14,7 +14,7 @@ from itertools import groupby
 from pathlib import Path
 from typing import Any
 
-from dda.errors import InputError
+from dda.errors import InputError, write_error
 from dda.report.figures import draw_spectrum
 from dda.report.files import write_aside
 from dda.report.scattering import draw_scattering, scattering_table
@@ -26,7 +26,7 @@ from dda.study.point_file import read_point
 from dda.study.points import Point
 from dda.study.prepare import Prepared
 from dda.study.reader import Study
-from dda.study.rows import Row
+from dda.study.rows import Row, as_preview
 from dda.study.store import Store, versions
 
 TABLE, PICTURE, STUDY, ABOUT = "spectrum.csv", "spectrum.png", "study.toml", "about.json"
@@ -58,6 +58,11 @@ class RunFolder:
         return [self._rows[number] for number in sorted(self._rows)]
 
     @property
+    def opened(self) -> bool:
+        """Whether it is known what the folder holds."""
+        return self._store is not None
+
+    @property
     def store(self) -> Store:
         """The store, once the folder is open."""
         assert self._store is not None
@@ -85,15 +90,20 @@ class RunFolder:
         ------
         InputError
             It cannot be made, or someone else holds it.
+        ComputationError
+            The disk is full or fails.
         """
         try:
             self.path.mkdir(parents=True, exist_ok=True)
         except OSError as error:
-            raise InputError(f"{self.path}: cannot be made: {error.strerror}") from error
+            raise write_error(self.path, error) from error
         self._store = Store(self.path, prepared, again, others)
         self._total = len(prepared.points)
         self._rows = dict(self.store.ledger.rows())
-        self._put_aside()
+        try:
+            self._put_aside()
+        except OSError as error:
+            raise write_error(self.path, error) from error
         write_aside(self.path / STUDY, self.study.text.encode())
         write_aside(self.path / ABOUT, json.dumps(versions(), indent=1).encode())
 
@@ -108,7 +118,7 @@ class RunFolder:
         if done.task.number == number:
             self._rows[number] = row
         elif number not in self._rows:
-            self._rows |= {n: r for n, r in self.store.ledger.rows() if n == number}
+            self._rows[number] = as_preview(row)
         if time.monotonic() > self._next:
             self._write_table()
 

@@ -18,7 +18,7 @@ from pathlib import Path
 from typing import Any
 
 from dda.errors import ComputationError, InputError
-from dda.study.rows import Row
+from dda.study.rows import Row, as_preview
 
 LEDGER = "ledger.sqlite"
 #: Raised when the tables below change.
@@ -114,21 +114,26 @@ class Ledger:
         self.path = folder / LEDGER
         if not write and not self.path.is_file():
             raise InputError(f"{folder}: no run of a study ({LEDGER} is not there)")
-        new = not self.path.exists()
         self._aside: tempfile.TemporaryDirectory | None = None
         self._base = _connect(self.path) if write else self._reader()
         try:
-            if new:
+            # a process that was killed at once may leave a file with nothing in it
+            empty = not self._base.execute("SELECT COUNT(*) FROM sqlite_master").fetchone()[0]
+            if empty and not write:
+                raise InputError(f"{folder}: no study was begun in it yet")
+            if empty:
                 self._make()
             self._check_format()
         except sqlite3.DatabaseError as error:
-            self._base.close()
+            self.close()
+            if _is_the_disk(error):
+                raise self._unwritable(error) from None
             raise InputError(
                 f"{self.path}: damaged, or no ledger ({error}); move it away and run the study "
                 "again to begin anew, or bring a copy back"
             ) from None
-        except InputError:
-            self._base.close()
+        except BaseException:
+            self.close()
             raise
 
     def __enter__(self) -> Ledger:
@@ -297,8 +302,7 @@ class Ledger:
             if both[0] is not None:
                 yield number, _row(both[:4], json.loads(text))
             else:
-                status = "preview" if both[4] in ("converged", "coarse") else both[4]
-                yield number, _row((status, *both[5:]), json.loads(text))
+                yield number, as_preview(_row(both[4:], json.loads(text)))
 
     def tally(self) -> dict[str, tuple[int, float, float]]:
         """Return number, weight and seconds of the points of each status.
@@ -416,8 +420,12 @@ class Ledger:
             if self._base.in_transaction:
                 self._base.execute("ROLLBACK")
             if isinstance(error, sqlite3.OperationalError):
-                raise ComputationError(f"{self.path}: cannot be written: {error}") from None
+                raise self._unwritable(error) from None
             raise
+
+    def _unwritable(self, error: sqlite3.Error) -> ComputationError:
+        reason = "the disk is full" if _code(error) == sqlite3.SQLITE_FULL else str(error)
+        return ComputationError(f"{self.path}: cannot be written: {reason}")
 
 
 def _connect(path: Path, how: str = "") -> sqlite3.Connection:
@@ -431,6 +439,15 @@ def _connect(path: Path, how: str = "") -> sqlite3.Connection:
     except sqlite3.OperationalError as error:
         raise InputError(f"{path}: cannot be opened: {error}") from None
     return base
+
+
+def _is_the_disk(error: sqlite3.Error) -> bool:
+    """Whether the disk is full or fails; the ledger itself may be whole."""
+    return _code(error) in (sqlite3.SQLITE_FULL, sqlite3.SQLITE_IOERR)
+
+
+def _code(error: sqlite3.Error) -> int:
+    return getattr(error, "sqlite_errorcode", 0) & 0xFF  # Python's own complaints have none
 
 
 def _entry(columns: Sequence[Any]) -> Entry:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import json
 import os
 import platform
@@ -35,17 +36,15 @@ class Lock:
 
     def __init__(self, folder: Path) -> None:
         self._folder = folder
-        self._base = sqlite3.connect(folder / LOCK, timeout=0.5, isolation_level=None)
         try:
-            self._base.execute("PRAGMA journal_mode = DELETE")
-            self._base.execute("BEGIN EXCLUSIVE")
-        except sqlite3.OperationalError as error:
-            self._base.close()
+            self._base = _locked(folder / LOCK)
+        except sqlite3.DatabaseError as error:
             if "locked" in str(error):
                 raise InputError(f"{folder}: {_sentence(folder)}") from None
             raise InputError(f"{folder / LOCK}: cannot be written: {error}") from None
         holder = {"process": os.getpid(), "machine": platform.node(), "since": time.time()}
-        (folder / HOLDER).write_text(json.dumps(holder), encoding="utf-8")
+        with contextlib.suppress(OSError):  # a full disk; the lock holds without its name
+            (folder / HOLDER).write_text(json.dumps(holder), encoding="utf-8")
 
     def __enter__(self) -> Lock:
         return self
@@ -57,6 +56,17 @@ class Lock:
         """Let others have the folder."""
         (self._folder / HOLDER).unlink(missing_ok=True)
         self._base.close()  # the file stays: one removed now might be held by the next already
+
+
+def _locked(path: Path) -> sqlite3.Connection:
+    base = sqlite3.connect(path, timeout=0.5, isolation_level=None)
+    try:
+        base.execute("PRAGMA journal_mode = DELETE")
+        base.execute("BEGIN EXCLUSIVE")
+    except BaseException:
+        base.close()
+        raise
+    return base
 
 
 def holder_of(folder: Path) -> dict[str, object] | None:

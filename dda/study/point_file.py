@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 
 from dda.accuracy import Level
-from dda.errors import ComputationError
+from dda.errors import ComputationError, write_error
 from dda.study.more import Array
 
 FOLDER = "points"
@@ -85,7 +85,7 @@ def write_point(
             os.fsync(file.fileno())
         os.replace(aside, path)
     except OSError as error:
-        raise ComputationError(f"{path}: cannot be written: {error.strerror}") from error
+        raise ComputationError(str(write_error(path, error))) from error
     finally:
         if aside.exists():
             aside.unlink()

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field, fields
+from dataclasses import dataclass, field, fields, replace
 from typing import Any
 
 
@@ -98,3 +98,8 @@ class Row:
 
 #: The columns that every table has.
 COLUMNS = tuple(f.name for f in fields(Row) if f.name not in ("varied", "more"))
+
+
+def as_preview(row: Row) -> Row:
+    """Return a coarse answer as what stands for a point until its own answer is there."""
+    return replace(row, status="preview") if row.status in ("converged", "coarse") else row
