@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
+from dataclasses import replace
 
 import numpy as np
 
@@ -88,7 +89,10 @@ def check_beam(
         return
     key = ("light", "beam", "waist_nm" if beam.gaussian else "position")
     if not beam.gaussian:
-        check_clear(np.asarray(beam.position), geometry, key, "dipole")
+        # The coarsest lattice that tells the error must know the light as well.
+        across = min(geometry.coarser(), default=geometry.size / geometry.spacing)
+        coarsest = replace(geometry, spacing=geometry.size / across)
+        check_clear(np.asarray(beam.position), coarsest, key, "dipole")
         return
     for wavelength in wavelengths:
         k = 2 * np.pi * float(np.real(media.host.index(np.array([wavelength]))[0])) / wavelength

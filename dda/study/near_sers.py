@@ -61,12 +61,15 @@ def sers_answer(table: NearFieldTable, levels: NearLevels) -> SersAnswer:
     statuses: list[str] = []
     coarse, fine = (solve(wavelengths, level, surface, levels, statuses) for level in pair)
     wider = widening(pair)
+    # Differences of both signs must not cancel in the mean.
+    apart = float(np.average(np.abs(coarse.factor - fine.factor), weights=surface.areas))
+    largest = max(abs(coarse.maximum - fine.maximum), apart / fine.mean * fine.maximum)
     return SersAnswer(
         *wavelengths,
         surface.height,
         fine,
-        wider * abs(coarse.mean - fine.mean) + fine.mean_error,
-        wider * abs(coarse.maximum - fine.maximum) + fine.maximum_error,
+        wider * apart + fine.mean_error,
+        wider * largest + fine.maximum_error,
         worst(statuses),
         averaged,
     )

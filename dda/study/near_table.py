@@ -92,6 +92,12 @@ class EmitterTable(Table):
     wavelength_nm: Positive | None = None
 
 
+def _several(value: Any) -> Any:
+    if isinstance(value, dict):
+        raise ValueError("each emitter is a table of its own: [[near_field.emitters]]")
+    return value
+
+
 class HeatTable(Table):
     """``[near_field] heat``: how strong the light is; at the focus of a beam, or its power."""
 
@@ -128,7 +134,7 @@ class NearFieldTable(Table):
     threshold: Positive | None = None
     magnetic: Annotated[bool, Field(strict=True)] = False
     sers: SersTable | None = None
-    emitters: tuple[EmitterTable, ...] = ()
+    emitters: Annotated[tuple[EmitterTable, ...], BeforeValidator(_several)] = ()
     heat: HeatTable | None = None
 
     @property
