@@ -118,7 +118,8 @@ class Crew:
             process = context.Process(
                 target=_work, args=(theirs, self.threads, os.getpid()), daemon=True
             )
-            process.start()
+            with _deaf():
+                process.start()
         finally:
             for name, value in before.items():
                 if value is None:
@@ -164,6 +165,19 @@ class Crew:
             ),
             tries=_LOST,
         )
+
+
+@contextlib.contextmanager
+def _deaf() -> Iterator[None]:
+    """Hold Ctrl-C back for a moment; a process that is started meanwhile never hears it."""
+    if not hasattr(signal, "pthread_sigmask"):
+        yield
+        return
+    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+    try:
+        yield
+    finally:
+        signal.pthread_sigmask(signal.SIG_SETMASK, before)
 
 
 def _dismiss(crew: Sequence[_Worker]) -> None:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from itertools import groupby
 from pathlib import Path
 from typing import Any
@@ -15,6 +15,7 @@ from dda.errors import InputError
 from dda.materials.anisotropic import AnisotropicMaterial
 from dda.study.media import media_of
 from dda.study.points import Point
+from dda.study.reader import Study
 from dda.study.rows import Row
 
 #: Raised whenever the same study gives other numbers than before: answers of another revision are
@@ -70,6 +71,17 @@ def fingerprints(points: Sequence[Point]) -> list[str]:
     return found
 
 
+def files_of(study: Study) -> dict[str, str]:
+    """Return the files that a study names, and the fingerprints of their contents.
+
+    Parameters
+    ----------
+    study : Study
+    """
+    names = sorted({text for text in _texts(study.data) if _is_file(study.folder / text)})
+    return {name: _digest(study.folder / name) for name in names}
+
+
 def near_fingerprint(point: Point, rows: Sequence[Row]) -> str:
     """Return the fingerprint of a combination's near field, which the spectrum's peak may decide.
 
@@ -97,9 +109,7 @@ def _of_tables(point: Point, digests: dict[Path, str]) -> str:
         if path not in digests:
             digests[path] = _digest(path)
         files[name] = digests[path]
-    whole = {"answers": ANSWERS, "tables": tables, "files": list(files.values())}
-    for name in files:  # contents count, names do not
-        whole["tables"] = _replaced(whole["tables"], name)
+    whole = {"answers": ANSWERS, "tables": _plain(tables, files)}
     return json.dumps(whole, sort_keys=True, default=str)
 
 
@@ -116,15 +126,39 @@ def _files(table: Any) -> Iterator[str]:
             yield from _files(value)
 
 
-def _replaced(table: Any, name: str) -> Any:
+def _plain(table: Any, files: Mapping[str, str]) -> Any:
+    """Tables with the contents of files instead of their names, and 60 written as 60.0."""
     if isinstance(table, dict):
         return {
-            key: "(file)" if key in ("mesh", "voxels") and value == name else _replaced(value, name)
+            key: files.get(value, value)
+            if key in ("mesh", "voxels") and isinstance(value, str)
+            else _plain(value, files)
             for key, value in table.items()
         }
     if isinstance(table, list | tuple):
-        return [_replaced(value, name) for value in table]
+        return [_plain(value, files) for value in table]
+    if isinstance(table, int) and not isinstance(table, bool):
+        return float(table)
     return table
+
+
+def _texts(table: Any) -> Iterator[str]:
+    """All texts of a table."""
+    if isinstance(table, str):
+        yield table
+    elif isinstance(table, Mapping):
+        for value in table.values():
+            yield from _texts(value)
+    elif isinstance(table, list | tuple):
+        for value in table:
+            yield from _texts(value)
+
+
+def _is_file(path: Path) -> bool:
+    try:
+        return path.is_file()
+    except (OSError, ValueError):  # a text that cannot be a name
+        return False
 
 
 def _digest(path: Path) -> str:

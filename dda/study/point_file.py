@@ -74,6 +74,26 @@ def write_point(
         The file cannot be written.
     """
     content = _content(identity, about, levels, arrays)
+    return _write(folder, identity, content), hashlib.sha256(content).hexdigest()
+
+
+def copy_point(source: Path, folder: Path, identity: str) -> str:
+    """Copy the file of a point from one run folder to another, whole or not at all.
+
+    Returns
+    -------
+    str
+        The path relative to the folder.
+
+    Raises
+    ------
+    ComputationError
+        The file cannot be written.
+    """
+    return _write(folder, identity, (source / place_of(identity)).read_bytes())
+
+
+def _write(folder: Path, identity: str, content: bytes) -> str:
     name = place_of(identity)
     path = folder / name
     aside = path.with_name(f".{path.name}.{secrets.token_hex(4)}.part")
@@ -87,9 +107,8 @@ def write_point(
     except OSError as error:
         raise ComputationError(str(write_error(path, error))) from error
     finally:
-        if aside.exists():
-            aside.unlink()
-    return name, hashlib.sha256(content).hexdigest()
+        aside.unlink(missing_ok=True)
+    return name
 
 
 def read_point(path: Path) -> dict[str, np.ndarray]:

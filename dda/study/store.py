@@ -14,11 +14,11 @@ from typing import Any
 from dda.accuracy import constants
 from dda.study.engines import Done, Task
 from dda.study.geometry import WINDOW
-from dda.study.identity import ANSWERS, fingerprints
+from dda.study.identity import ANSWERS, files_of, fingerprints
 from dda.study.ledger import Answered, Entry, Ledger
 from dda.study.lock import Lock
 from dda.study.mistakes import dotted
-from dda.study.point_file import damaged, place_of, write_point
+from dda.study.point_file import FOLDER, copy_point, damaged, write_point
 from dda.study.points import Point
 from dda.study.prepare import Prepared
 
@@ -130,9 +130,11 @@ class Store:
         self.changes = [] if before is None else _changes(before[1], tables)
         if before is not None:
             self.changes += _changes(before[2], versions())
+            self.changes += self._changed_files()
         self._ledger.begin(self._study.text, tables, versions())
         self._ledger.note("study file", str(self._study.path.absolute()))
         self._ledger.note("name", self._study.name)
+        self._ledger.note("files", json.dumps(files_of(self._study)))
         previews = preview_points(prepared)
         entries = [
             Entry(number, identity, preview, point.wavelength, point.varied, weight)
@@ -153,15 +155,25 @@ class Store:
         known = self._ledger.known()
         self.reused = sum(e.identity in known for e in entries)
         numbers = [[*chain] for chain in prepared.chains]
-        self.chains = _left(numbers, [e.identity for e in entries], prepared.points, known)
+        first: list[list[Task]] = []
         if previews:
             # no coarse answer where there is a finer one
             identities = ["" if e.identity in known else e.preview or "" for e in entries]
             first = _left(numbers, identities, previews, {**known, "": ""})
-            shifted = [[replace(t, number=t.number + len(entries)) for t in c] for c in first]
-            self.chains = shifted + self.chains
+            first = [[replace(t, number=t.number + len(entries)) for t in c] for c in first]
+        # a coarse answer may be another point's own
+        known |= {task.identity: "" for chain in first for task in chain}
+        left = _left(numbers, [e.identity for e in entries], prepared.points, known)
+        self.chains = first + left
+
+    def _changed_files(self) -> list[str]:
+        before = json.loads(self._ledger.about().get("files", "{}"))
+        now = files_of(self._study)
+        return [f"{name}: its content" for name in now if before.get(name, now[name]) != now[name]]
 
     def _check_files(self) -> list[str]:
+        for half in (*self.folder.glob(".*.part"), *self.folder.glob(f"{FOLDER}/*/.*.part")):
+            half.unlink()  # a process was killed while it wrote; we are the only one here
         bad = damaged(self.folder, self._ledger.files())
         self._ledger.forget(identity for identity, _, _ in bad)
         return [f"{name}: {what}" for _, name, what in bad]
@@ -188,11 +200,7 @@ class Store:
                     if answered.file is not None and answered.checksum is not None:
                         if damaged(other, [(identity, answered.file, answered.checksum)]):
                             continue
-                        target = self.folder / place_of(identity)
-                        target.parent.mkdir(parents=True, exist_ok=True)
-                        aside = target.with_suffix(".part")
-                        shutil.copyfile(other / answered.file, aside)
-                        aside.replace(target)
+                        copy_point(other, self.folder, identity)
                     self._ledger.record(identity, answered)
 
 

@@ -22,6 +22,9 @@ _FIXED = {
     "limits": "limits hold for the whole study",
     "near_field.points": "one list of points holds for the whole study",
     "light.wavelengths": "[light] takes a list or a range of wavelengths as it is",
+    "solver.threads": "it changes no answer",
+    "solver.processes": "it holds for the whole study",
+    "accuracy.preview": "it holds for the whole study",
 }
 
 Key = tuple[str | int, ...]
@@ -121,6 +124,9 @@ def read_vary(table: Mapping[str, Any]) -> Vary:
             raise Mistake(("vary", *axis.written), f"{axis.name} is varied twice")
     if zipped:
         _check_lengths(axes)
+    else:
+        for axis in axes:
+            _check_twice(axis)
     vary = Vary(axes, zipped)
     if len(vary) > MOST_POINTS:
         raise Mistake(("vary",), f"{len(vary)} combinations; at most {MOST_POINTS} are computed")
@@ -169,9 +175,6 @@ def _values(value: Any, key: Key) -> Sequence[Any]:
         raise Mistake(key, "should be a list of values or a range {from = 40, to = 80, step = 10}")
     if not value:
         raise Mistake(key, "the list of values is empty")
-    for number, one in enumerate(value):
-        if one in value[:number]:
-            raise Mistake(key, f"the value {one!r} is listed twice")
     return value
 
 
@@ -194,6 +197,14 @@ def _range(value: Mapping[str, Any], key: Key) -> list[float]:
     return [round(start + i * step, 12) for i in range(count)]
 
 
+def _check_twice(axis: Axis) -> None:
+    seen = set()
+    for value in axis.values:
+        if (text := repr(value)) in seen:
+            raise Mistake(("vary", *axis.written), f"the value {text} is listed twice")
+        seen.add(text)
+
+
 def _check_lengths(axes: Sequence[Axis]) -> None:
     for axis in axes[1:]:
         if len(axis.values) != len(axes[0].values):
@@ -207,6 +218,8 @@ def _check_lengths(axes: Sequence[Axis]) -> None:
 def _put(tables: Any, key: Key, value: Any, axis: Axis) -> Any:
     """Return tables with a value at a key; what is not on the way is shared."""
     word, *rest = key
+    if isinstance(word, int) and isinstance(tables, Mapping):
+        word = str(word)  # the label of a voxel image
     if isinstance(word, int):
         if not isinstance(tables, list) or word >= len(tables):
             raise Mistake(("vary", *axis.written), f"{axis.name}: the study has no such entry")
