@@ -19,9 +19,9 @@ from dda.study.runner import Budget, Outcome, compute
 
 #: Bytes that a worker process takes before it solves anything (measured: 230 to 270 MiB).
 PROCESS = 300 * 2**20
-# Seconds of computing that pay for starting processes, and what a cell and step of the solver
-# takes on a machine of today: a guess that only decides whether to measure.
-_WORTH, _NOMINAL = 20.0, 1e-7
+# Seconds of computing that pay for starting processes, and what a cell and step of the solver,
+# and a point besides, take on a machine of today: a guess that only decides whether to measure.
+_WORTH, _NOMINAL, _POINT = 15.0, 1e-7, 0.05
 # Processes must promise this much more than threads.
 _GAIN = 1.1
 
@@ -60,8 +60,10 @@ Begun = Callable[[Task, str], None]
 class Engine(Protocol):
     """Computes chains of tasks in any order; a chain's tasks help one another."""
 
-    #: How many points are computed at once.
-    workers: int
+    @property
+    def workers(self) -> int:
+        """How many points are computed at once."""
+        ...
 
     def run(self, chains: Sequence[Sequence[Task]], begun: Begun, watch: Watch) -> Iterator[Done]:
         """Yield every task once, as soon as it is done."""
@@ -117,7 +119,8 @@ def choose(prepared: Prepared, chains: Sequence[Sequence[Task]]) -> Engine:
     fit = usable_memory(point) // (prepared.memory + PROCESS)
     processes = min(cores // (threads or 1), fit, len(tasks))
     left = sum(prepared.weights[task.number % len(prepared.weights)] for task in tasks)
-    if processes < 2 or left * _NOMINAL < _WORTH or prepared.cells.n > 10**6:
+    guess = left * _NOMINAL + len(tasks) * _POINT
+    if processes < 2 or guess < _WORTH or prepared.cells.n > 10**6:
         return Here(prepared.geometries)
     if threads is None:
         one, all_ = (_step(prepared, n) for n in (1, cores))
