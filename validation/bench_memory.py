@@ -20,7 +20,7 @@ def memory(cells: int) -> list[Figure]:
     """Bytes per cell of the box at the peak of a whole job."""
     figures = []
     for body, most in BODIES.items():
-        for precision in ("double", "single"):
+        for precision in ("double", "mixed", "single"):
             found = in_a_child(cells, precision, body)
             name = f"{body}, {found['shape'][0]}^3 cells, {precision}: "
             both = max(found["describing"], found["solving"])

@@ -115,22 +115,26 @@ class Convolution:
         self.workers.run(share, self.workers.split(y.stored, grain=8))
 
     def _planes(self, worker: int, start: int, stop: int) -> None:
-        x, y, z = self.axes
+        _, y, z = self.axes
         columns, fft = self._buffers(), self.fft
-        real = self._signs.dtype
-        shape, spectrum = (x.places, y.places, z.places), self.kernel.parts
         for places in self._groups(start, stop):
             block = self._blocks[worker][: len(places)]
             plane, filled = block[..., : z.places], block[:, :, : y.stored, : z.places]
             planes.pad(columns, y.stored, z.stored, places, block)
             z.transform(fft, filled, 3, 1, True)
             y.transform(fft, plane, 2, 1, True)
-            planes.multiply(
-                spectrum, block.view(real), places, shape, self._folded, self._signs, self._turned
-            )
+            self.multiply(block, places)
             y.transform(fft, plane, 2, 1, False)
             z.transform(fft, filled, 3, 1, False)
             planes.truncate(block, y.stored, z.stored, places, columns)
+
+    def multiply(self, block: np.ndarray, places: np.ndarray) -> None:
+        """Multiply transformed planes of dipoles (g, 3, y, z) with the transformed interaction."""
+        x, y, z = self.axes
+        planes.multiply(
+            self.kernel.parts, block.view(self._signs.dtype), places,
+            (x.places, y.places, z.places), self._folded, self._signs, self._turned,
+        )  # fmt: skip
 
     def _groups(self, start: int, stop: int) -> list[np.ndarray]:
         order = self._order[start:stop]
