@@ -198,27 +198,17 @@ class Ledger:
 
     def record(self, identity: str, answered: Answered) -> None:
         """Keep an answer; it is on disk when this returns."""
-        row = answered.row
-        numbers = asdict(row)
-        for name in ("status", "message", "seconds", "varied"):
-            numbers.pop(name)
+        self.record_all([(identity, answered)])
+
+    def record_all(self, answers: Iterable[tuple[str, Answered]]) -> None:
+        """Keep many answers at once: all of them, or none if this is cut short."""
         with self._change() as base:
-            base.execute(
-                "INSERT OR REPLACE INTO answers VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
-                (
-                    identity,
-                    row.status,
-                    json.dumps(numbers),
-                    row.message,
-                    row.seconds,
-                    answered.tries,
-                    time.time(),
-                    answered.worker,
-                    answered.file,
-                    answered.checksum,
-                ),
-            )
-            base.execute("DELETE FROM running WHERE identity = ?", (identity,))
+            for identity, answered in answers:
+                base.execute(
+                    "INSERT OR REPLACE INTO answers VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+                    (identity, *_columns(answered)),
+                )
+                base.execute("DELETE FROM running WHERE identity = ?", (identity,))
 
     def forget(self, identities: Iterable[str]) -> None:
         """Remove answers, so that they are computed again."""
@@ -448,6 +438,16 @@ def _is_the_disk(error: sqlite3.Error) -> bool:
 
 def _code(error: sqlite3.Error) -> int:
     return getattr(error, "sqlite_errorcode", 0) & 0xFF  # Python's own complaints have none
+
+
+def _columns(answered: Answered) -> tuple[Any, ...]:
+    """The columns of an answer after its identity."""
+    row = answered.row
+    numbers = asdict(row)
+    for name in ("status", "message", "seconds", "varied"):
+        numbers.pop(name)
+    told = row.status, json.dumps(numbers), row.message, row.seconds, answered.tries
+    return *told, time.time(), answered.worker, answered.file, answered.checksum
 
 
 def _entry(columns: Sequence[Any]) -> Entry:
