@@ -9,7 +9,7 @@ from dda.beams import gaussian_beam
 from dda.errors import InputError
 from dda.materials import find
 from dda.response import smeared
-from dda.response.near_error import refined
+from dda.response.near_error import refined_field
 from dda.response.near_field import fields_at
 from dda.response.smeared import SmearedField
 from validation.mie import sphere
@@ -123,7 +123,7 @@ def test_fields_of_mirror_points_are_mirrored(fine):
 def test_error_bars_hold(coarse, fine, exact):
     d = fine.system.cells.spacing
     points = np.concatenate([around(c * d) for c in (1, 1.5, 2, 3, 6, -2.5, -4, -6)])
-    best = refined([fields_at(s, points, particle=PARTICLE) for s in (fine, coarse)])
+    best = refined_field([fields_at(s, points, particle=PARTICLE) for s in (fine, coarse)])
     off = np.abs(best.e2 - e2(exact.fields(points)[0])) / best.e2_error
     assert best.trusted.all()
     assert (off < 1).mean() > 0.9
@@ -135,18 +135,18 @@ def test_error_bars_hold(coarse, fine, exact):
 
 def test_error_bar_of_a_point_inside_the_window_is_marked(coarse, fine):
     points = around(0.3 * fine.system.cells.spacing, 20)
-    best = refined([fields_at(s, points, particle=PARTICLE) for s in (coarse, fine)])
+    best = refined_field([fields_at(s, points, particle=PARTICLE) for s in (coarse, fine)])
     assert not best.trusted.any()
 
 
 def test_error_bars_refuse_what_cannot_be_compared(coarse, fine):
     one = fields_at(fine, around(5.0, 10))
     with pytest.raises(InputError, match="two spacings"):
-        refined([one])
+        refined_field([one])
     with pytest.raises(InputError, match="same points"):
-        refined([one, fields_at(coarse, around(6.0, 10))])
+        refined_field([one, fields_at(coarse, around(6.0, 10))])
     with pytest.raises(InputError, match="too close"):
-        refined([one, one])
+        refined_field([one, one])
 
 
 @pytest.mark.parametrize("surface", ["whole", "cell"])

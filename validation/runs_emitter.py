@@ -31,8 +31,8 @@ rate, and 10 % of the total one at 8 cells of the finer spacing or more.
 """
     columns = (
         "sphere, dipole", "source", "height, nm (cells)", "total: reference", "error 17 / 24, %",
-        "extrapolated, % ± bar", "radiative: reference", "error 17 / 24, %", "extrapolated, % ± bar",
-        "yield: reference / ours", "verdict",
+        "extrapolated, % ± bar", "radiative: reference", "error 17 / 24, %",
+        "extrapolated, % ± bar", "yield: reference / ours", "verdict",
     )  # fmt: skip
     rows = []
     cases = (

@@ -12,7 +12,7 @@ import dda
 import shapes
 from dda.lattice.solution import Polarization
 from dda.response.hot_spots import field_numbers
-from dda.response.near_error import refined
+from dda.response.near_error import refined_field
 from dda.response.near_field import fields_at
 from dda.response.smeared import SmearedField
 from dda.response.surface_points import cover_surface
@@ -62,7 +62,7 @@ program marks the points as unknown there is no verdict.
         heights = [h for h, _ in HEIGHTS]
         points = np.concatenate([directions(300) * (diameter / 2 + h * spacing) for h in heights])
         true = e2(exact.fields(points)[0])
-        best = refined([fields_at(s, points, particle=particle) for s in solved])
+        best = refined_field([fields_at(s, points, particle=particle) for s in solved])
         ended = " + ".join(
             f"{s.products}" + ("" if s.status == "converged" else f" ({s.status})") for s in solved
         )
@@ -194,7 +194,7 @@ spacings together and its error bar. Allowed: nine tenths of the points within t
             numbers = field_numbers(shell.points, found.e2, shell.areas, percentages=(99,))
             compared = ["-", "-", "-"]
             if 0 < i < len(across) - 1:
-                best = refined(fields[i - 1 : i + 1])
+                best = refined_field(fields[i - 1 : i + 1])
                 off = np.abs(best.e2 - finest) / best.e2_error
                 compared = [
                     f"{100 * np.sqrt(np.mean((best.e2 / finest - 1) ** 2)):.1f}",

@@ -132,6 +132,14 @@ def emitter_rates(
     ------
     InputError
         If the dipole is within two spacings of the particle's cells.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> cells = shapes.voxelize(shapes.sphere(diameter=40, material="gold"), cells=12)
+    >>> rates = emitter_rates(dda.system(cells, wavelength=550), (0, 0, 32))
+    >>> rates.total > rates.radiative > 1
+    True
     """
     light = point_dipole(position, moment)
     cells = system.cells
@@ -150,7 +158,15 @@ def emitter_rates(
 def averaged_rates(
     system: System, position, *, tolerance: float = 1e-4, limit: int = 2000
 ) -> DecayRates:
-    """Decay rates averaged over all directions of the dipole; three solves."""
+    """Decay rates averaged over all directions of the dipole; three solves.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> cells = shapes.voxelize(shapes.sphere(diameter=40, material="gold"), cells=10)
+    >>> averaged_rates(dda.system(cells, wavelength=550), (0, 0, 36)).quantum_yield() < 0.5
+    True
+    """
     found = [
         emitter_rates(system, position, axis, tolerance=tolerance, limit=limit)
         for axis in np.eye(3)

@@ -112,6 +112,16 @@ def power_density(field: NearField, polarization: Polarization, intensity: float
     -----
     ``intensity k Im(eps) |E|^2``, eps relative to the host and E over the incident amplitude.
     Lasers can blind and burn: the numbers are for planning, local safety rules decide.
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> cells = shapes.voxelize(shapes.sphere(diameter=40, material="gold"), cells=12)
+    >>> solved = dda.solve(dda.system(cells, wavelength=530), dda.plane_wave())
+    >>> found = dda.fields_at(solved, np.array([[0.0, 0, 0], [0, 0, 40]]))
+    >>> inside, outside = power_density(found, solved, intensity=1e9)
+    >>> bool(inside > 1e16 > outside)
+    True
     """
     return density_per_e2(polarization.system, intensity)[field.material] * field.e2
 

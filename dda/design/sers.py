@@ -120,6 +120,19 @@ def sers_on_surface(
     Returns
     -------
     Sers
+
+    Examples
+    --------
+    >>> import dda, shapes
+    >>> sphere = shapes.sphere(diameter=40, material="gold")
+    >>> cells, shell = shapes.voxelize(sphere, cells=12), dda.cover_surface(sphere, 4, height=5)
+    >>> solved = [
+    ...     dda.solve(dda.system(cells, wavelength=w, host="water"), dda.plane_wave())
+    ...     for w in (532, stokes_wavelength(532, 1000))
+    ... ]
+    >>> found = sers_on_surface(*solved, shell.points, shell.areas, particle=sphere)
+    >>> found.maximum > found.mean > 10
+    True
     """
     at_laser = fields_at(laser, points, particle=particle)
     at_stokes = fields_at(stokes, points, particle=particle)

@@ -38,7 +38,7 @@ class RefinedField:
     trusted: np.ndarray
 
 
-def refined(fields: Sequence[NearField]) -> RefinedField:
+def refined_field(fields: Sequence[NearField]) -> RefinedField:
     """Compare fields at the same points from different spacings.
 
     Parameters
@@ -74,7 +74,7 @@ def refined(fields: Sequence[NearField]) -> RefinedField:
     ...     system = dda.system(shapes.voxelize(sphere, cells=n), wavelength=530)
     ...     solved = dda.solve(system, dda.plane_wave())
     ...     fields.append(fields_at(solved, np.array([[40.0, 0, 0]]), particle=sphere))
-    >>> best = refined(fields)
+    >>> best = refined_field(fields)
     >>> bool(best.trusted[0] and best.e2_error[0] < 0.02 * best.e2[0])
     True
     """

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from dda.response.near_error import RefinedField, refined
+from dda.response.near_error import RefinedField, refined_field
 from dda.response.near_field import NearField
 from dda.response.near_points import Region
 from dda.response.surface_points import SurfacePoints
@@ -147,7 +147,7 @@ class NearRun:
         coarse, first, worst_first = levels.fields(wavelength, pair[0], sets)
         fine, second, worst_second = levels.fields(wavelength, pair[1], sets, self.table.magnetic)
         sampled = [
-            Sampled(region, tuple(b), refined([_together(a), _together(b)]))
+            Sampled(region, tuple(b), refined_field([_together(a), _together(b)]))
             for region, a, b in zip(regions, coarse, fine, strict=True)
         ]
         heat = None
