@@ -7,6 +7,7 @@ import logging
 import threading
 from collections import deque
 from collections.abc import Iterator, Sequence
+from concurrent.futures import CancelledError
 from typing import Any
 
 from dda.errors import ComputationError, InputError
@@ -106,8 +107,8 @@ class Cluster:
                     left -= 1
                     outcome, worker = _result(future, task)
                     yield Done(task, outcome, worker)
-        except OSError as error:
-            raise ComputationError(f"{_GONE} ({error})") from None
+        except (OSError, CancelledError):  # all futures are cancelled when a scheduler is lost
+            raise ComputationError(_GONE) from None
         finally:
             self._close(list(tasks))
 
@@ -172,12 +173,10 @@ def _nothing(message: str, part: float) -> None:
 
 
 def _result(future: Any, task: Task) -> tuple[Outcome, str]:
-    from distributed import CancelledError
-
     try:
         return future.result()
     except CancelledError:
-        raise ComputationError(_GONE) from None
+        raise
     except Exception as error:  # KilledWorker, or whatever the cluster brings up
         reason = f"lost on the cluster: {type(error).__name__}: {error}"
         row = Row(task.point.wavelength, varied=task.point.varied, message=reason)
