@@ -111,6 +111,8 @@ def test_answers_in_advance_are_told_apart(tmp_path):
         ledger.record("coarse 0", answer(entries[0]))
     status = read_status(tmp_path)
     assert (status.previews, status.done) == ((6, 1), 0)
+    with Ledger(tmp_path) as ledger:
+        assert [there for *_, there in ledger.sets()] == [1, 0]
     assert "coarse answers in advance: 1 of 6" in status_text(status)
 
 
@@ -211,7 +213,10 @@ def test_tallies_add_up(tmp_path):
         ledger.record(entries[1].identity, Answered(Row(520.0, status="failed", seconds=7.0)))
         assert ledger.counts() == {"converged": 1, "failed": 1, "waiting": 4}
         assert ledger.work() == (2.0, 9.0, 6.0)
-        assert ledger.sets() == [({"particle.edge": 40.0}, 3, 2), ({"particle.edge": 50.0}, 3, 0)]
+        assert ledger.sets() == [
+            ({"particle.edge": 40.0}, 3, 2, 2),
+            ({"particle.edge": 50.0}, 3, 0, 0),
+        ]
         assert [n for n, _ in ledger.rows({"particle.edge": 40.0})] == [0, 1]
         assert list(ledger.rows({"particle.edge": 50.0})) == []
         assert ledger.entry(3) == ledger.entry(entries[3].identity) == entries[3]

@@ -18,7 +18,7 @@ from urllib.parse import parse_qs, urlsplit
 
 from dda.errors import InputError
 from dda.report.status import Status, kind_of, read_status, set_text
-from dda.report.status_text import headline, holder_text, next_text, place
+from dda.report.status_text import headline, holder_text, next_text, place, previews_text
 from dda.study.ledger import LEDGER, Ledger
 from dda.study.rows import Row
 
@@ -93,7 +93,7 @@ class LiveServer(ThreadingHTTPServer):
         self.folder = folder
         self._lock = threading.Lock()
         self._seen: tuple | None = None
-        self._sets: list[tuple[dict[str, Any], int, int]] = []
+        self._sets: list[tuple[dict[str, Any], int, int, int]] = []
         self.title = read_status(folder, 0).study  # so that a folder without a run is told now
         try:
             super().__init__((HOST, port), _Handler)
@@ -137,7 +137,7 @@ class LiveServer(ThreadingHTTPServer):
             return {"error": str(error)}
         return {"curves": found}
 
-    def _sets_now(self) -> list[tuple[dict[str, Any], int, int]]:
+    def _sets_now(self) -> list[tuple[dict[str, Any], int, int, int]]:
         """The sets of varied values, read again when the ledger has changed."""
         with self._lock:
             if (now := _signature(self.folder)) != self._seen:
@@ -199,7 +199,7 @@ def _asset(name: str, title: str) -> bytes:
     return text.replace("{{title}}", html.escape(title)).encode()
 
 
-def _state(status: Status, sets: list[tuple[dict[str, Any], int, int]]) -> dict[str, Any]:
+def _state(status: Status, sets: list[tuple[dict[str, Any], int, int, int]]) -> dict[str, Any]:
     return {
         "title": status.study,
         "folder": status.folder,
@@ -207,7 +207,7 @@ def _state(status: Status, sets: list[tuple[dict[str, Any], int, int]]) -> dict[
         "done": status.done,
         "counts": status.counts,
         "headline": headline(status),
-        "holder": holder_text(status.holder),
+        "holder": "; ".join(filter(None, (holder_text(status.holder), previews_text(status)))),
         "held": status.holder is not None,
         "next": f"{next_text(status)}: {status.next}",
         "tasks": [
@@ -216,8 +216,8 @@ def _state(status: Status, sets: list[tuple[dict[str, Any], int, int]]) -> dict[
         "doubtful": status.doubtful,
         "doubts": [{**asdict(d), "place": place(d.varied, d.wavelength_nm)} for d in status.doubts],
         "sets": [
-            {"name": set_text(varied), "total": total, "done": done}
-            for varied, total, done in sets[:MOST_SETS]
+            {"name": set_text(varied), "total": total, "done": done, "there": there}
+            for varied, total, done, there in sets[:MOST_SETS]
         ],
         "more_sets": max(0, len(sets) - MOST_SETS),
         "now": time.strftime("%H:%M:%S"),

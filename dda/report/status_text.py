@@ -21,9 +21,8 @@ def status_text(status: Status) -> str:
         for kind, count in status.counts.items()
         if count or kind in ("converged", "failed", "waiting")
     ]
-    asked, there = status.previews
-    if there < asked and status.done < status.total:
-        lines.append(f"  coarse answers in advance: {there} of {asked}")
+    if text := previews_text(status):
+        lines.append(f"  {text}")
     lines += ["", holder_text(status.holder)]
     lines += [
         f"  {place(task.varied, task.wavelength_nm)}  for {duration_text(task.seconds)}"
@@ -52,11 +51,19 @@ def headline(status: Status) -> str:
     """Return how much is done and how much time is left, in a line."""
     text = f"{status.done} of {status.total} points done"
     if status.done == status.total:
-        return text
+        return text if status.holder is None else f"{text}; tables and near fields may be left"
     if status.seconds_left is None:
         return f"{text}; no pace is known yet"
     left = duration_text(status.seconds_left)
     return f"{text}; about {left} left" + ("" if status.holder is not None else " once it goes on")
+
+
+def previews_text(status: Status) -> str:
+    """Return how many coarse answers there are in advance; empty once they do not matter."""
+    asked, there = status.previews
+    if not asked or status.done == status.total:
+        return ""
+    return f"coarse answers in advance: {there} of {asked}"
 
 
 def holder_text(holder: Mapping[str, Any] | None) -> str:

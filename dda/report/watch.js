@@ -125,7 +125,7 @@ function showDoubts() {
 // Until the reader chooses: sets that have points, evenly spread over the sweep.
 function choose() {
   if (!touched) {
-    const there = state.sets.flatMap((set, number) => (set.done ? [number] : []));
+    const there = state.sets.flatMap((set, number) => (set.there ? [number] : []));
     const from = there.length ? there : state.sets.map((_, number) => number);
     const count = Math.min(MOST, from.length);
     const places = Array.from({ length: count }, (_, i) =>

@@ -86,7 +86,7 @@ function draw() {
   svg.append(axes(box, sx, sy, [x0, x1], [low, top], width, height));
   drawn = found.map((line) => ({ ...line,
     places: line.points.map((p) => (p.y === null ? null : [sx(p.x), sy(p.y)])) }));
-  for (const line of drawn) svg.append(band(line, sx, sy));
+  for (const line of drawn) svg.append(band(line, sx, (y) => sy(Math.min(top, Math.max(low, y)))));
   for (const line of drawn) svg.append(curve(line));
   svg.append(make("g", { id: "cross" }));
   place.replaceChildren(svg);
@@ -127,8 +127,7 @@ function band(line, sx, sy) {
   for (const piece of pieces(line)) {
     const edge = (sign) => (i) => {
       const { x, y, error } = line.points[i];
-      const reach = Math.min(error ?? 0, 2 * Math.abs(y));
-      return `${sx(x).toFixed(1)} ${sy(y + sign * reach).toFixed(1)}`;
+      return `${sx(x).toFixed(1)} ${sy(y + sign * (error ?? 0)).toFixed(1)}`;
     };
     const there = [...piece.map(edge(1)), ...[...piece].reverse().map(edge(-1))];
     group.append(make("path", { d: `M${there.join("L")}z` }));

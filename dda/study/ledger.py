@@ -325,12 +325,17 @@ class Ledger:
             WHERE preview IS NOT NULL"""
         return self._base.execute(query).fetchone()
 
-    def sets(self) -> list[tuple[dict[str, Any], int, int]]:
-        """Return the sets of varied values in order: values, points, points with an answer."""
+    def sets(self) -> list[tuple[dict[str, Any], int, int, int]]:
+        """Return the sets of varied values in order.
+
+        Each with its number of points, of those with an answer, and of those with an answer or a
+        coarse one.
+        """
         query = """
-            SELECT varied, COUNT(*), COUNT(answers.identity)
-            FROM points LEFT JOIN answers USING (identity) GROUP BY varied ORDER BY MIN(number)"""
-        return [(json.loads(row[0]), row[1], row[2]) for row in self._base.execute(query)]
+            SELECT varied, COUNT(*), COUNT(a.identity), COUNT(COALESCE(a.identity, b.identity))
+            FROM points LEFT JOIN answers a USING (identity)
+            LEFT JOIN answers b ON b.identity = preview GROUP BY varied ORDER BY MIN(number)"""
+        return [(json.loads(row[0]), *row[1:]) for row in self._base.execute(query)]
 
     def doubtful(self, most: int = 50, failed: bool | None = None) -> list[tuple[Entry, str, str]]:
         """Return points that are done but not well: the entry, its status and its message.
