@@ -5,6 +5,7 @@ from __future__ import annotations
 import textwrap
 
 from dda.report.progress import duration_text
+from dda.study.estimate import POINT_BYTES
 from dda.study.geometry import Geometry
 from dda.study.lights import beam_text
 from dda.study.memory import bytes_text
@@ -42,6 +43,7 @@ def plan_text(plan: Plan) -> str:
             ),
         ]
     )
+    lines += _aligned([("disk", bytes_text(len(prepared.points) * POINT_BYTES) + " at least")])
     if plan.near is not None:
         lines += _aligned([("near field", _near_text(plan, plan.near))])
     lines += ["", "validity"]
@@ -80,13 +82,31 @@ def study_lines(prepared: Prepared) -> list[str]:
             [
                 ("particle", extent_text(prepared.geometry)),
                 *sources,
-                ("wavelengths", f"{len(points)}, {span}"),
+                *_points(prepared, span),
                 *_light(prepared),
                 *[("note", note) for note in notes_of(prepared.geometry.particle)],
                 ("cells", _cells(prepared)),
             ]
         ),
     ]
+
+
+def _points(prepared: Prepared, span: str) -> list[tuple[str, str]]:
+    """Return the wavelengths, and what else varies, in words."""
+    vary, total = prepared.study.vary, len(prepared.points)
+    if not vary.axes:
+        return [("wavelengths", f"{total}, {span}")]
+    axes = [f"{axis.name} ({len(axis.values)})" for axis in vary.axes]
+    joined = " beside ".join(axes) if vary.zipped else " x ".join(axes)
+    lines = [
+        ("varied", f"{joined}: {len(vary)} combinations"),
+        ("points", f"{total}, {span}"),
+    ]
+    if prepared.checked < len(vary):
+        lines.append(
+            ("note", f"{prepared.checked} combinations were checked; the others as they come")
+        )
+    return lines
 
 
 def extent_text(geometry: Geometry) -> str:

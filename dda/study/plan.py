@@ -11,14 +11,11 @@ from dda.lattice.workers import Workers
 from dda.study.column_cost import measure_columns
 from dda.study.estimate import Cost, measure_step
 from dda.study.geometry import WINDOW
-from dda.study.levels import tolerance_of
-from dda.study.lights import light_count, lights_of
+from dda.study.lights import lights_of
 from dda.study.memory import available_memory
 from dda.study.near_plan import NearPlan, near_plan
-from dda.study.points import Point
-from dda.study.prepare import Prepared, prepare, steps_at
+from dda.study.prepare import Prepared, prepare
 from dda.study.reader import Study
-from dda.study.scattering import partner_count
 
 #: |m| k d up to which the cells resolve the wave inside the particle well, and at all
 #: (Draine & Flatau 1994 ask for 1, and for less where the accuracy matters).
@@ -159,18 +156,12 @@ def _cost(prepared: Prepared) -> Cost:
             workers=Workers(point.solver.threads),
         )
         setup = time.perf_counter() - started
-    solves = 0.0
+    columns = 1.0
     if point.averaged:
         measured = measure_columns(matrix)
-        step, solves = measured.step_seconds, measured.columns
+        step, columns = measured.step_seconds, measured.columns
     else:
         step = measure_step(matrix, lights_of(point, prepared.geometry, matrix.k)[0])
-    steps = tuple(_steps(prepared, point, solves) for point in prepared.points)
+    counted = prepared.geometry.count(prepared.spacing)
+    steps = tuple(columns * weight / counted for weight in prepared.weights)
     return Cost(setup * len(prepared.levels), step, steps)
-
-
-def _steps(prepared: Prepared, point: Point, columns: float) -> float:
-    """Return the expected steps at all spacings, in units of steps at the finest one."""
-    indices = prepared.media.relative_index(point.wavelength).values()
-    solves = columns if point.averaged else light_count(point) + partner_count(point)
-    return solves * steps_at(indices, prepared.levels, tolerance_of(point))

@@ -16,15 +16,18 @@ from dda.study.lights import check_beam, light_count
 from dda.study.media import Media, check_media, media_of
 from dda.study.mistakes import Mistake
 from dda.study.near_region import check_near
-from dda.study.order import chains
+from dda.study.order import chains, coarse_first
 from dda.study.points import Point, points_of
 from dda.study.reader import Study
 from dda.study.recycling import MOST_BYTES
-from dda.study.scattering import check_scattering
+from dda.study.scattering import check_scattering, partner_count
 
 #: Combinations of varied keys are checked for this long before a run begins, seconds; those left
 #: are checked when their turn comes.
 PATIENCE = 10.0
+# Products that a wavelength between or beyond solved ones still takes, and setting up a lattice in
+# steps of the solver.
+_BETWEEN, _BEYOND, _SETUP = 0.55, 0.6, 20.0
 # Bytes of a solution: three complex numbers a cell.
 _SOLUTION = 48
 
@@ -43,7 +46,8 @@ class Prepared:
     identities : tuple of str
         Fingerprint of each point.
     weights : tuple of float
-        Expected cost of each point: steps of the solver times cells, all spacings together.
+        Expected cost of each point: steps of the solver times cells, all spacings together and
+        what neighbouring wavelengths save taken off.
     chains : tuple of tuple of int
         The numbers of the points in the order in which they are computed.
     memory : int
@@ -168,13 +172,17 @@ class _Survey:
         except Mistake as mistake:
             raise self._study.located(mistake, point.varied) from None
         levels = levels_of(point, self._geometry)
+        finest = levels[-1]
         spacing = self._geometry.size / levels[-1]
         self.memory = max(self.memory, self._geometry.memory(spacing))
         cells = self._geometry.count(spacing)
         solutions = light_count(point) * len(points) * _SOLUTION * 1.5 * cells
-        self.many += [solutions < min(MOST_BYTES, 0.1 * usable_memory(point))] * len(points)
-        for one in points:
-            self.weights.append(cells * self._steps_of(one, media, levels))
+        many = solutions < min(MOST_BYTES, 0.1 * usable_memory(point))
+        self.many += [many] * len(points)
+        setup = _SETUP * sum((across / finest) ** 3 for across in levels)
+        shares = recycled_shares(len(points), many and not point.averaged)
+        for one, share in zip(points, shares, strict=True):
+            self.weights.append(cells * (setup + share * self._steps_of(one, media, levels)))
 
     def _geometry_of(self, point: Point) -> Geometry:
         key = point.geometry_key
@@ -199,7 +207,19 @@ class _Survey:
         if key not in self._steps:
             indices = media.relative_index(point.wavelength).values()
             self._steps[key] = steps_at(indices, levels, tolerance)
-        return light_count(point) * self._steps[key]
+        return (light_count(point) + partner_count(point)) * self._steps[key]
+
+
+def recycled_shares(count: int, many: bool) -> list[float]:
+    """Return which share of its products each wavelength of a chain takes, in their order.
+
+    Measured on a spectrum of 60 wavelengths of a gold cube: those between known solutions take
+    0.55 of the products, those beyond one 0.6.
+    """
+    if not many:
+        return [1.0 if number == 0 else _BEYOND for number in range(count)]
+    first = set(coarse_first(count)[: -(-count // 4)])
+    return [1.0 if number in first else _BETWEEN for number in range(count)]
 
 
 def steps_at(indices, levels: tuple[float, ...], tolerance: float) -> float:
