@@ -233,6 +233,11 @@ def test_a_near_field_that_ends_early_leaves_nothing(work, monkeypatch, capsys):
         ("", "heat = {power_mw = 1}", "only a focused beam has a power"),
         ("", "heat = {}", "one of the two"),
         (
+            "beam = {position = [0, 0, 60], moment = [0, 0, 1]}",
+            'region = "line"\nstart = [0, 0, 30]\nend = [0, 0, 70]\nstep = 5',
+            "where the field is infinite",
+        ),
+        (
             "beam = {waist_nm = 400}",
             'sers = {laser_nm = 530, shift_per_cm = 1000, orientation = "average"}',
             "leave out light.beam",
@@ -248,6 +253,16 @@ def test_mistakes_are_told_with_their_line_before_anything_is_solved(
     assert "gold.toml, line " in said
     assert words in said
     assert not Path("out").exists()
+
+
+def test_the_dipole_that_lights_the_particle_is_no_hot_spot(work):
+    beam = "beam = {position = [0, 0, 45], moment = [0, 0, 1]}"
+    assert work(beam, 'region = "plane"\nnormal = "y"\nsize = 140\nstep = 4\n')[0] == 0
+    rows = _read(Path("out/near_field_numbers.csv"))
+    (top,) = [r for r in rows if (r["where"], r["quantity"]) == ("plane", "|E|^2, maximum")]
+    # between the dipole and the sphere, some nm from the dipole
+    assert 20 < float(top["z_nm"]) < 38
+    assert abs(float(top["x_nm"])) <= 8
 
 
 def test_near_fields_of_anisotropic_materials_are_refused_first(work, capsys, monkeypatch):

@@ -102,10 +102,14 @@ class NearFolder:
     def _draw(self, answer: NearAnswer) -> None:
         region, stem = answer.region, f"{answer.wavelength:g}.png"
         title = f"{self.title}, {answer.wavelength:g} nm"
+        e2, beside = region.best.e2, region.by_source
+        if beside.any() and not beside.all():
+            # the source itself would take all of the colours
+            e2 = np.where(beside, np.minimum(e2, e2[~beside].max()), e2)
         draw_field_map(
             self._file(f"near_field_{stem}"),
             region.region,
-            region.best.e2,
+            e2,
             particle=self.particle,
             trusted=region.best.trusted,
             title=title,

@@ -130,6 +130,20 @@ def check_clear(
         )
 
 
+def by_source(point: Point, places: np.ndarray, geometry: Geometry) -> np.ndarray:
+    """Which places (n, 3), from the particle's centre in nm, are beside a dipole that lights it.
+
+    Those closer to it than half its distance from the particle: there its field is stronger than
+    all that the particle makes of it.
+    """
+    beam = point.tables.light.beam
+    if beam is None or beam.gaussian:
+        return np.zeros(len(places), bool)
+    cells = geometry.cells.positions - centre_of(geometry)
+    away = np.linalg.norm(cells - beam.position, axis=1).min()
+    return np.linalg.norm(places - np.asarray(beam.position), axis=1) < away / 2
+
+
 def centre_of(geometry: Geometry) -> np.ndarray:
     """Return the centre of the particle's bounds, where places of a study start, (3,) nm."""
     return np.add(*geometry.particle.bounds) / 2

@@ -13,6 +13,7 @@ from dda.response.near_points import Region
 from dda.response.surface_points import SurfacePoints
 from dda.study.geometry import Geometries
 from dda.study.levels import Watch, worst
+from dda.study.lights import by_source
 from dda.study.near_emitters import EmitterAnswer, emitter_answers
 from dda.study.near_heat import HeatAnswer, heat_answer
 from dda.study.near_levels import NearLevels
@@ -34,11 +35,14 @@ class Sampled:
         On the finer lattice, one for each incident wave: two where the light is unpolarized.
     best : RefinedField
         ``|E|^2``, averaged over the waves, with its error.
+    by_source : ndarray of bool, shape (n,)
+        Points so near a dipole that lights the particle that its own field is most of theirs.
     """
 
     region: Region
     fields: tuple[NearField, ...]
     best: RefinedField
+    by_source: np.ndarray
 
     @property
     def material(self) -> np.ndarray:
@@ -147,7 +151,12 @@ class NearRun:
         coarse, first, worst_first = levels.fields(wavelength, pair[0], sets)
         fine, second, worst_second = levels.fields(wavelength, pair[1], sets, self.table.magnetic)
         sampled = [
-            Sampled(region, tuple(b), refined_field([_together(a), _together(b)]))
+            Sampled(
+                region,
+                tuple(b),
+                refined_field([_together(a), _together(b)]),
+                by_source(levels.point, region.points, pair[1]),
+            )
             for region, a, b in zip(regions, coarse, fine, strict=True)
         ]
         heat = None

@@ -129,15 +129,16 @@ def chosen_points(sampled: Sampled) -> np.ndarray:
 
     All of a surface, or its edges, where the field is strongest, would be missing. Elsewhere those
     in the host whose error is known: molecules are in the host. Where there are none, those of
-    known error; else all.
+    known error; else all. Those beside a dipole that lights the particle are left out.
     """
     trusted, outside = sampled.best.trusted, sampled.material < 0
+    lit = ~sampled.by_source if not sampled.by_source.all() else np.ones(len(trusted), bool)
     if sampled.region.kind == "surface":
-        return np.ones(len(trusted), bool)
-    for chosen in (trusted & outside, trusted):
+        return lit
+    for chosen in (trusted & outside & lit, trusted & lit):
         if chosen.any():
             return chosen
-    return np.ones(len(trusted), bool)
+    return lit
 
 
 def _describe(

@@ -66,7 +66,7 @@ def check_near(point: Point, media: Media, geometry: Geometry) -> None:
                 f"use {geometry.size / _EVER:.2g} to {geometry.size / 4:.2g} nm",
             )
     else:
-        region_of(table, point.folder)
+        _check_source(point, region_of(table, point.folder))
     numbers = [float(w) for w in table.wavelengths if w != "peak"]
     _check_media(media, numbers, ("near_field", "wavelengths"))
     check_beam(point, media, geometry, numbers)
@@ -88,6 +88,19 @@ def check_near(point: Point, media: Media, geometry: Geometry) -> None:
             "intensity_w_per_cm2 instead of power_mw",
         )
     _check_emitters(point, table, media, geometry)
+
+
+def _check_source(point: Point, region: Region) -> None:
+    beam = point.tables.light.beam
+    if beam is None or beam.gaussian:
+        return
+    away = np.linalg.norm(region.points - np.asarray(beam.position), axis=1)
+    if float(away.min()) < 1e-6:
+        raise Mistake(
+            ("near_field", "points" if region.kind == "points" else "region"),
+            f"one of the points is at light.beam.position {list(beam.position or ())}, where the "
+            "field is infinite; move the region by a part of its step, or leave the point out",
+        )
 
 
 def _check_emitters(point: Point, table: NearFieldTable, media: Media, geometry: Geometry) -> None:
