@@ -165,10 +165,14 @@ class _Survey:
         point = points[0]
         try:
             check_scattering(point.tables)
-            if self._geometry is None or time.monotonic() < self._end:
+            fresh = self._geometry is None or time.monotonic() < self._end
+            if self._geometry is None or fresh:
                 self._geometry = self._geometry_of(point)
                 self.checked += 1
             media = self._media_of(points)
+            if fresh and point.varied:
+                check_near(point, media, self._geometry)
+                check_beam(point, media, self._geometry, [one.wavelength for one in points])
         except Mistake as mistake:
             raise self._study.located(mistake, point.varied) from None
         levels = levels_of(point, self._geometry)
