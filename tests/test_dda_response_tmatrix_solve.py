@@ -147,3 +147,25 @@ def test_the_number_of_columns_is_known_beforehand():
         t_matrix(system, order=2, monitor=lambda done, of, seen=seen: seen.append((done, of)))
         columns = expected_columns(system, order=2)
         assert seen[-1] == (columns, columns)
+
+
+def test_columns_of_another_wavelength_save_products():
+    cells = shapes.voxelize(BODIES["helix"](), cells=10)
+    kept = {}
+
+    class Memory:
+        def nearest(self, column):
+            return kept.get(column, [])
+
+        def keep(self, column, dipoles):
+            kept.setdefault(column, []).append(dipoles)
+
+    system = dda.system(cells, 560.0, HOST)
+    alone, first = (t_matrix(system, order=2, memory=m) for m in (None, Memory()))
+    assert np.array_equal(alone.matrix, first.matrix)  # there was nothing to start from
+    assert len(kept) == expected_columns(system, order=2)
+    next_system = dda.system(cells, 570.0, HOST)
+    fresh, helped = (t_matrix(next_system, order=2, memory=m) for m in (None, Memory()))
+    assert helped.products < 0.7 * fresh.products
+    # each may be off by the tolerance of 1e-3
+    assert np.allclose(sections(helped), sections(fresh), rtol=2e-3)

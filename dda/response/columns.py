@@ -81,6 +81,7 @@ def solve_columns(
     enough: Callable[[int, complex, float], bool] | None = None,
     limit: int = 2000,
     known: Sequence[Solved] = (),
+    guesses: Sequence[Sequence[np.ndarray]] = (),
     monitor: Callable[[int], None] | None = None,
 ) -> tuple[list[Solved], float]:
     """Solve columns with conjugate gradients (COCG), sector by sector.
@@ -106,6 +107,9 @@ def solve_columns(
         Most steps for a column.
     known : sequence of Solved
         Columns solved earlier, to start from.
+    guesses : sequence of sequences of ndarray, shape (c, 3)
+        For each column dipoles that are nearly its own, such as those at another wavelength: to
+        start from as well, at the price of a product each.
     monitor : callable, optional
         Called with the number of columns finished whenever one is.
 
@@ -129,7 +133,9 @@ def solve_columns(
 
     def start(sector: int) -> None:
         j = waiting[sector].pop(0)
-        earlier = [s for s in (*known, *solved.values()) if s.sector == sector]
+        earlier = [(s.dipoles, s.image) for s in (*known, *solved.values()) if s.sector == sector]
+        for guess in guesses[j] if guesses else ():
+            earlier.append((guess, work.products([guess], [sector])[0]))
         runs.append(_Run(j, columns[j], work, earlier, (tolerance, limit, enough)))
 
     for sector in waiting:
@@ -209,9 +215,8 @@ class _Run:
             self.status = "converged"
 
     def _project(self, known) -> None:
-        """Best start in the span of known solutions x, A x = their incident field - remainder."""
-        x = np.stack([s.dipoles for s in known])
-        image = np.stack([s.image for s in known])
+        """Best start in the span of known dipoles x with their fields A x."""
+        x, image = (np.stack(parts) for parts in zip(*known, strict=True))
         flat = x.reshape(len(known), -1)
         y = np.linalg.lstsq(flat @ image.reshape(len(known), -1).T, flat @ self.r.ravel())[0]
         self.x += np.tensordot(y, x, 1).astype(self.x.dtype)

@@ -9,7 +9,7 @@ from ..lattice.linear_system import System
 from .averages import OrientationAverage, orientation_average
 from .directions import quadrature_average
 from .tmatrix import TMatrix
-from .tmatrix_solve import t_matrix
+from .tmatrix_solve import ColumnMemory, t_matrix
 
 WAYS = ("t-matrix", "quadrature")
 
@@ -36,6 +36,7 @@ def tumbling(
     tolerance: float = 1e-3,
     order: int | None = None,
     limit: int = 3000,
+    memory: ColumnMemory | None = None,
     monitor=None,
 ) -> Tumbling:
     """Orientation average of a system.
@@ -51,6 +52,8 @@ def tumbling(
         Highest multipole order, or least degree of the rule of directions.
     limit : int
         Most iterations of a solve.
+    memory : ColumnMemory, optional
+        Of the T-matrix, see `dda.response.tmatrix_solve.t_matrix`.
     monitor : callable, optional
         ``monitor(done, of)`` as columns are solved; `of` grows if more orders turn out to be
         needed. For quadrature ``monitor(directions)``.
@@ -79,5 +82,7 @@ def tumbling(
             system, tolerance=tolerance, degree=order, limit=limit, monitor=monitor
         )
         return Tumbling(average, None)
-    t = t_matrix(system, order=order, tolerance=tolerance, limit=limit, monitor=monitor)
+    t = t_matrix(
+        system, order=order, tolerance=tolerance, limit=limit, memory=memory, monitor=monitor
+    )
     return Tumbling(orientation_average(t), t)

@@ -227,3 +227,18 @@ def _gather(whole, signs, flips, images, out):  # pragma: no cover - compiled
                 value = whole[cell, a] * (flips[g, a] * share)
                 for s in range(len(out)):
                     out[s, i, a] += value * signs[s, g]
+
+
+def cosets(group: np.ndarray) -> np.ndarray:
+    """One symmetry of every exchange of axes; the others differ by sign changes."""
+    _, first = np.unique(abs(group).reshape(len(group), -1), axis=0, return_index=True)
+    return group[np.sort(first)]
+
+
+def cell_images(system: System, turn: np.ndarray) -> np.ndarray:
+    """Cell that a symmetry takes every cell to."""
+    low, high = system.index.min(axis=0), system.index.max(axis=0)
+    row = np.full(high - low + 1, -1, np.int64)
+    row[tuple((system.index - low).T)] = np.arange(system.n)
+    twice = (2 * system.index - (low + high)) @ turn.T + (low + high)
+    return row[tuple((twice // 2 - low).T)]

@@ -8,7 +8,9 @@ cells. Waves that symmetries of the cells turn into each other are solved once.
 
 from __future__ import annotations
 
+from collections.abc import Hashable, Sequence
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 
@@ -16,7 +18,7 @@ from ..errors import InputError
 from ..lattice.linear_system import System
 from .averages import LEAST_ABSORPTION
 from .columns import Column, Solved, solve_columns
-from .symmetry import Sectors, find_sectors
+from .symmetry import Sectors, cell_images, cosets, find_sectors
 from .tmatrix import TMatrix
 from .vector_waves import (
     fields_of,
@@ -42,6 +44,7 @@ def t_matrix(
     residual: float | None = None,
     symmetry: bool = True,
     limit: int = 2000,
+    memory: ColumnMemory | None = None,
     monitor=None,
 ) -> TMatrix:
     """T-matrix of a particle from its dipole system.
@@ -64,6 +67,9 @@ def t_matrix(
         Whether to use the symmetries of the cells.
     limit : int
         Most steps for a column.
+    memory : ColumnMemory, optional
+        Where columns of neighbouring wavelengths are found and these are left: they halve the
+        products of a spectrum.
     monitor : callable, optional
         ``monitor(finished, columns)`` after every column.
 
@@ -94,6 +100,7 @@ def t_matrix(
     if order is not None and not 1 <= order <= LARGEST_ORDER:
         raise InputError(f"multipole order {order} is not from 1 to {LARGEST_ORDER}")
     work = _Work(system, find_sectors(system, symmetry), tolerance, residual, limit, monitor)
+    work.memory = memory
     present = order or work.first_order
     work.extend(present)
     while order is None and work.tail > tolerance * work.scale and present < LARGEST_ORDER:
@@ -115,6 +122,16 @@ def expected_columns(system: System, order: int | None = None) -> int:
     work = _Work(system, find_sectors(system), 0.0, None, 0, None)
     work.order = order or work.first_order
     return len(work.chosen(1))
+
+
+class ColumnMemory(Protocol):
+    """Keeps columns from one wavelength to the next; those of other cells are not its own."""
+
+    def nearest(self, column: Hashable) -> Sequence[np.ndarray]:
+        """Dipoles of that column at other wavelengths, the best first; few, as each costs."""
+
+    def keep(self, column: Hashable, dipoles: np.ndarray) -> None:
+        """Take the dipoles of a column."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -142,7 +159,8 @@ class _Work:
         self.products = 0.0
         self.order = 0
         self.values: dict[int, complex] = {}
-        self.turns = _cosets(sectors.group)
+        self.turns = cosets(sectors.group)
+        self.memory: ColumnMemory | None = None
 
     def extend(self, order: int) -> None:
         """Solve the columns of all orders up to this one that are not there yet."""
@@ -167,8 +185,12 @@ class _Work:
             enough=None if self.residual is not None else self._enough(before),
             limit=self.limit,
             known=self.solved,
+            guesses=[self.memory.nearest(self._name(w)) for w in new] if self.memory else (),
             monitor=finished,
         )
+        if self.memory is not None:
+            for wave, column in zip(new, solved, strict=True):
+                self.memory.keep(self._name(wave), column.dipoles)
         self.solved += solved
         self.products += products
         for j, column in enumerate(self.solved):
@@ -271,6 +293,12 @@ class _Work:
             load[sector] += 1
             self.waves[j] = _Wave(best, sector, wave.order, wave.count)
 
+    def _name(self, wave: _Wave) -> Hashable:
+        """The same for the same wave at another wavelength."""
+        own = wave_labels(self.order)[:, 1] == wave.order
+        parts = np.round(self._padded(wave.coefficients)[own], 6) + 0.0
+        return wave.order, wave.sector, parts.tobytes()
+
     def _sector_of(self, coefficients: np.ndarray) -> int:
         """Sector of a wave, or -1 if it has parts in several."""
         known = wave_labels(self.order + 1)[:, 1] <= self.order
@@ -318,7 +346,7 @@ class _Work:
         products = np.zeros((len(self.turns), count, count), complex)
         whole = np.empty((system.n, 3), system.dtype)
         for g, (turn, rotation) in enumerate(zip(self.turns, self.rotations, strict=True)):
-            image = _cell_images(system, turn)
+            image = cell_images(system, turn)
             for i, wave in enumerate(self.waves):
                 sector = self._sector_of(rotation @ self._padded(wave.coefficients))
                 same = np.flatnonzero(homes == sector)
@@ -359,12 +387,6 @@ def _span(span: np.ndarray, vectors: np.ndarray) -> np.ndarray:
     return np.concatenate([span, u[:, s > 1e-8]], axis=1)
 
 
-def _cosets(group: np.ndarray) -> np.ndarray:
-    """One symmetry of every exchange of axes; the others differ by sign changes."""
-    _, first = np.unique(abs(group).reshape(len(group), -1), axis=0, return_index=True)
-    return group[np.sort(first)]
-
-
 def _wave_sectors(order: int, sectors: Sectors) -> np.ndarray:
     """Sector of every real wave."""
     signs = np.stack(
@@ -372,15 +394,6 @@ def _wave_sectors(order: int, sectors: Sectors) -> np.ndarray:
     )
     same = np.round(signs)[:, None, :] == sectors.characters
     return np.argmax(same.all(axis=2), axis=1)
-
-
-def _cell_images(system: System, turn: np.ndarray) -> np.ndarray:
-    """Cell that a symmetry takes every cell to."""
-    low, high = system.index.min(axis=0), system.index.max(axis=0)
-    row = np.full(high - low + 1, -1, np.int64)
-    row[tuple((system.index - low).T)] = np.arange(system.n)
-    twice = (2 * system.index - (low + high)) @ turn.T + (low + high)
-    return row[tuple((twice // 2 - low).T)]
 
 
 def _radius(system: System, centre: np.ndarray) -> float:

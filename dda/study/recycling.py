@@ -9,6 +9,8 @@ import numpy as np
 
 # The next solution is sought in the span of this many nearest ones.
 _SOUGHT = 5
+# Columns are cheaper to solve than a plane wave, so that fewer guesses pay (measured: two).
+_COLUMNS_SOUGHT = 2
 #: All together take at most this many bytes.
 MOST_BYTES = 256 * 2**20
 
@@ -51,3 +53,29 @@ class Recycled:
 
     def _bytes(self) -> int:
         return sum(p.nbytes for found in self._found.values() for _, p in found)
+
+
+@dataclass(frozen=True)
+class RecycledColumns:
+    """The columns of T-matrices on one lattice, for `dda.response.tmatrix_solve.t_matrix`.
+
+    Attributes
+    ----------
+    solutions : Recycled
+    lattice : Hashable
+    wavelength : float
+        Of the T-matrix being solved, nm.
+    """
+
+    solutions: Recycled
+    lattice: Hashable
+    wavelength: float
+
+    def nearest(self, column: Hashable) -> list[np.ndarray]:
+        """Return dipoles of the column at the nearest wavelengths, nearest first."""
+        found = self.solutions.nearest((self.lattice, column), self.wavelength)
+        return found[:_COLUMNS_SOUGHT]
+
+    def keep(self, column: Hashable, dipoles: np.ndarray) -> None:
+        """Keep the dipoles of a column."""
+        self.solutions.keep((self.lattice, column), self.wavelength, dipoles)
