@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -12,6 +12,8 @@ from ..errors import InputError
 from ..lattice.linear_system import System
 from ..lattice.solution import Polarization, solve
 from ..response.far_field import quadrature_order, scattering_amplitude, sphere_quadrature
+
+Solver = Callable[[System, object], Polarization]
 
 #: Closer than this many spacings to the particle, the lattice is too coarse for the dipole's field.
 CLOSEST = 2.0
@@ -38,11 +40,14 @@ class DecayRates:
         Radiated, from the far field of emitter and particle.
     absorbed : float
         Taken up by the particle, summed over its cells.
+    status : str
+        Of the solver; the worst of several.
     """
 
     total: float
     radiative: float
     absorbed: float
+    status: str = "converged"
 
     @property
     def balance(self) -> float:
@@ -120,13 +125,22 @@ def decay_rates(polarization: Polarization) -> DecayRates:
     total = 1 + float(np.sum(back * p).imag) / unit
     own = system.alpha_inverse.astype(np.complex128).apply(p, np.empty_like(p))
     lost = float(np.sum((p * own.conj()).imag) - 2 / 3 * k**3 * np.sum(np.abs(p) ** 2))
-    return DecayRates(total, _radiated(polarization, light), lost / unit)
+    return DecayRates(total, _radiated(polarization, light), lost / unit, polarization.status)
 
 
 def emitter_rates(
-    system: System, position, moment=(0, 0, 1), *, tolerance: float = 1e-4, limit: int = 2000
+    system: System,
+    position,
+    moment=(0, 0, 1),
+    *,
+    tolerance: float = 1e-4,
+    limit: int = 2000,
+    solver: Solver | None = None,
 ) -> DecayRates:
     """Solve for a dipole at `position` (nm) along `moment` and return its decay rates.
+
+    A `solver` gives the `Polarization` for a system and a light, instead of `dda.solve` with the
+    tolerance and the limit.
 
     Raises
     ------
@@ -152,11 +166,18 @@ def emitter_rates(
             f"cell of the particle; with cells of {cells.spacing:.3g} nm its decay can be told "
             f"from {least:.3g} nm on: move it away or use a smaller spacing"
         )
+    if solver is not None:
+        return decay_rates(solver(system, light))
     return decay_rates(solve(system, light, tolerance=tolerance, limit=limit))
 
 
 def averaged_rates(
-    system: System, position, *, tolerance: float = 1e-4, limit: int = 2000
+    system: System,
+    position,
+    *,
+    tolerance: float = 1e-4,
+    limit: int = 2000,
+    solver: Solver | None = None,
 ) -> DecayRates:
     """Decay rates averaged over all directions of the dipole; three solves.
 
@@ -168,13 +189,14 @@ def averaged_rates(
     True
     """
     found = [
-        emitter_rates(system, position, axis, tolerance=tolerance, limit=limit)
+        emitter_rates(system, position, axis, tolerance=tolerance, limit=limit, solver=solver)
         for axis in np.eye(3)
     ]
     return DecayRates(
         float(np.mean([r.total for r in found])),
         float(np.mean([r.radiative for r in found])),
         float(np.mean([r.absorbed for r in found])),
+        _worst(found),
     )
 
 
@@ -207,7 +229,8 @@ def refined_rates(
     d = np.asarray(spacings, float)
     if len(rates) != len(d) or len(np.unique(d)) < 2:
         raise InputError("an error of decay rates needs them at two or more different spacings")
-    best, error = [], []
+    best: list[float] = []
+    error: list[float] = []
     for power, values in zip(
         _POWERS, ([r.radiative for r in rates], [r.absorbed for r in rates]), strict=True
     ):
@@ -216,7 +239,15 @@ def refined_rates(
         steady = np.ptp(values) <= _STEADY * abs(fine)
         best.append(at_zero if steady else fine)
         error.append(max(_WIDER * abs(at_zero - fine), _LEAST * abs(fine)))
-    return DecayRates(sum(best), *best), DecayRates(sum(error), *error)
+    status = _worst(rates)
+    return (
+        DecayRates(sum(best), best[0], best[1], status),
+        DecayRates(sum(error), error[0], error[1], status),
+    )
+
+
+def _worst(rates: Sequence[DecayRates]) -> str:
+    return next((r.status for r in rates if r.status != "converged"), "converged")
 
 
 def _radiated(polarization: Polarization, light: PointDipole) -> float:

@@ -69,6 +69,7 @@ def run_near(
             for emitter in run.emitters():
                 near.numbers += numbers_of_emitter(emitter)
                 print("\n" + emitter_text(emitter), flush=True)
+                good &= _warn(emitter.rates.status, emitter.wavelength)
         near.finish()
     finally:
         near.discard()

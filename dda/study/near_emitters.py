@@ -57,11 +57,11 @@ def _answer(
     pair, found = levels.at(wavelength), []
     for level in pair:
         system = levels.system(wavelength, level)
-        levels.watch(f"emitter {number} at {wavelength:g} nm", 0.5)
+        levels.doing, levels.part = f"emitter {number} at {wavelength:g} nm", 0.5
         if emitter.orientation == "average":
-            found.append(averaged_rates(system, place))
+            found.append(averaged_rates(system, place, solver=levels.solve))
         else:
-            found.append(emitter_rates(system, place, emitter.orientation))
+            found.append(emitter_rates(system, place, emitter.orientation, solver=levels.solve))
         levels.advance()
     rates, error = refined_rates(found, [level.spacing for level in pair])
     own = emitter.quantum_yield

@@ -7,8 +7,8 @@ from collections.abc import Callable, Sequence
 import numpy as np
 
 from dda.errors import ComputationError
-from dda.lattice import System
-from dda.response import Settled
+from dda.lattice import Polarization, System
+from dda.response import Settled, settle
 from dda.response.near_field import NearField, fields_at
 from dda.response.smeared import SmearedField
 from dda.study.geometry import Geometries, Geometry
@@ -55,6 +55,8 @@ class NearLevels:
         self.memory = Memory(geometries)
         self.particle = self.geometry.particle
         self.centre = centre_of(self.geometry)
+        # What `solve` tells the watch.
+        self.doing, self.part = "", 0.0
 
     def wavelength(self, wanted: float | str) -> float:
         """Return a wavelength that the study gives as a number or as "peak", nm."""
@@ -104,6 +106,22 @@ class NearLevels:
                 )
         self.advance()
         return found, solved, worst(each.polarization.status for each in solved)
+
+    def solve(self, system: System, light: object) -> Polarization:
+        """Solve for any light until what it loses to the particle has settled."""
+        solver = self._point(self.point.wavelength).solver
+        found = settle(
+            system,
+            light,
+            tolerance=solver.tolerance,
+            method=solver.method,
+            monitor=self._monitor,
+        )
+        return found.polarization
+
+    def _monitor(self, step: int, _: np.ndarray, residual: float) -> bool:
+        self.watch(f"{self.doing}: step {step}, residual {residual:.1e}", self.part)
+        return False
 
     def tell(self, what: str) -> Callable[[int, int], None]:
         """Return what tells the watch how many points are done."""

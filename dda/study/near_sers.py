@@ -8,7 +8,6 @@ import numpy as np
 
 from dda.design.sers import Sers, sers_averaged, sers_factor, summed_up, turned_mean
 from dda.lattice import Polarization, System
-from dda.response import settle
 from dda.response.surface_points import SurfacePoints, cover_surface
 from dda.study.geometry import Geometry
 from dda.study.levels import worst
@@ -104,16 +103,17 @@ def _averaged(
     statuses: list[str],
 ) -> Sers:
     """Factors of the particle in every orientation."""
-    solver = levels.point.solver
 
     def solved(system: System, light: object) -> Polarization:
-        found = settle(system, light, tolerance=solver.tolerance, method=solver.method)
-        statuses.append(found.polarization.status)
-        return found.polarization
+        found = levels.solve(system, light)
+        statuses.append(found.status)
+        return found
 
     def progress(done: int, of: int) -> None:
-        levels.watch(f"SERS, all orientations: {done} of {of} incident fields", done / of)
+        levels.doing = f"SERS, all orientations: {done} of {of} incident fields"
+        levels.part = done / of
 
+    progress(0, 1)
     found = sers_averaged(
         levels.system(wavelengths[0], level),
         levels.system(wavelengths[1], level),
