@@ -30,7 +30,7 @@ def sweep_text(rows: Sequence[Row]) -> str:
     wide = [max(len(line[i]) for line in table) + 2 for i in range(len(table[0]))]
     lines = ["".join(f"{cell:>{w}}" for cell, w in zip(line, wide, strict=True)) for line in table]
     if step > 1:
-        lines.append(f"(every {step}th of {len(combinations)} combinations; the table has all)")
+        lines.append(f"({len(shown)} of {len(combinations)} combinations; the table has all)")
     return "\n".join(lines)
 
 

@@ -17,8 +17,9 @@ from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Any
 
-from dda.errors import ComputationError, InputError
+from dda.errors import InputError
 from dda.study.rows import Row, as_preview
+from dda.study.sqlite_errors import is_the_disk, unwritable
 
 LEDGER = "ledger.sqlite"
 #: Raised when the tables below change.
@@ -126,8 +127,8 @@ class Ledger:
             self._check_format()
         except sqlite3.DatabaseError as error:
             self.close()
-            if _is_the_disk(error):
-                raise self._unwritable(error) from None
+            if is_the_disk(error):
+                raise unwritable(self.path, error) from None
             raise InputError(
                 f"{self.path}: damaged, or no ledger ({error}); move it away and run the study "
                 "again to begin anew, or bring a copy back"
@@ -415,12 +416,8 @@ class Ledger:
             if self._base.in_transaction:
                 self._base.execute("ROLLBACK")
             if isinstance(error, sqlite3.OperationalError):
-                raise self._unwritable(error) from None
+                raise unwritable(self.path, error) from None
             raise
-
-    def _unwritable(self, error: sqlite3.Error) -> ComputationError:
-        reason = "the disk is full" if _code(error) == sqlite3.SQLITE_FULL else str(error)
-        return ComputationError(f"{self.path}: cannot be written: {reason}")
 
 
 def _connect(path: Path, how: str = "") -> sqlite3.Connection:
@@ -434,15 +431,6 @@ def _connect(path: Path, how: str = "") -> sqlite3.Connection:
     except sqlite3.OperationalError as error:
         raise InputError(f"{path}: cannot be opened: {error}") from None
     return base
-
-
-def _is_the_disk(error: sqlite3.Error) -> bool:
-    """Whether the disk is full or fails; the ledger itself may be whole."""
-    return _code(error) in (sqlite3.SQLITE_FULL, sqlite3.SQLITE_IOERR)
-
-
-def _code(error: sqlite3.Error) -> int:
-    return getattr(error, "sqlite_errorcode", 0) & 0xFF  # Python's own complaints have none
 
 
 def _columns(answered: Answered) -> tuple[Any, ...]:

@@ -11,6 +11,7 @@ import time
 from pathlib import Path
 
 from dda.errors import InputError
+from dda.study.sqlite_errors import is_the_disk, unwritable
 
 LOCK, HOLDER = "lock.sqlite", "holder.json"
 
@@ -27,6 +28,8 @@ class Lock:
     ------
     InputError
         Another process holds it; the message says which.
+    ComputationError
+        The disk is full or fails.
 
     Notes
     -----
@@ -41,6 +44,8 @@ class Lock:
         except sqlite3.DatabaseError as error:
             if "locked" in str(error):
                 raise InputError(f"{folder}: {_sentence(folder)}") from None
+            if is_the_disk(error):
+                raise unwritable(folder / LOCK, error) from None
             raise InputError(f"{folder / LOCK}: cannot be written: {error}") from None
         holder = {"process": os.getpid(), "machine": platform.node(), "since": time.time()}
         with contextlib.suppress(OSError):  # a full disk; the lock holds without its name
