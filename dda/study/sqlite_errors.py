@@ -2,10 +2,14 @@
 
 from __future__ import annotations
 
+import shutil
 import sqlite3
 from pathlib import Path
 
 from dda.errors import ComputationError
+
+# Bytes of the index of a write-ahead log, and of the pages it is written in.
+_INDEX = 2**16
 
 
 def is_the_disk(error: sqlite3.Error) -> bool:
@@ -15,7 +19,10 @@ def is_the_disk(error: sqlite3.Error) -> bool:
 
 def unwritable(path: Path, error: sqlite3.Error) -> ComputationError:
     """Return what to raise when a file cannot be written."""
-    reason = "the disk is full" if _code(error) == sqlite3.SQLITE_FULL else str(error)
+    full = _code(error) == sqlite3.SQLITE_FULL
+    # SQLite's index of the log is mapped memory: without room for it, it says "disk I/O error"
+    full = full or (is_the_disk(error) and shutil.disk_usage(path.parent).free < _INDEX)
+    reason = "the disk is full" if full else str(error)
     return ComputationError(f"{path}: cannot be written: {reason}")
 
 
