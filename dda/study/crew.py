@@ -16,8 +16,10 @@ from multiprocessing.connection import Connection, wait
 from multiprocessing.process import BaseProcess
 
 from dda.study.engines import Begun, Done, Task
-from dda.study.geometry import Geometries
+from dda.study.geometry import PROCESS_BYTES, Geometries
 from dda.study.levels import Memory, Watch
+from dda.study.memory import USABLE_SHARE, available_memory
+from dda.study.points import Point
 from dda.study.rows import Row
 from dda.study.runner import Budget, Outcome, compute
 
@@ -86,7 +88,7 @@ class Crew:
                         begun(worker.task, worker.name)
                         seconds = budget.share(left)
                         with contextlib.suppress(OSError):  # it is found lost below
-                            worker.pipe.send((worker.task.point, seconds))
+                            worker.pipe.send((self._shared(worker.task.point), seconds))
                 ready = wait([worker.pipe for worker in crew], timeout=_LOOK)
                 for number, worker in enumerate(list(crew)):
                     if worker.pipe not in ready:
@@ -109,15 +111,26 @@ class Crew:
         finally:
             _dismiss(crew)
 
+    def _shared(self, point: Point) -> Point:
+        """Return a point that takes no more than a worker's share of the machine."""
+        if point.limits.memory_gib is None:
+            whole = int(USABLE_SHARE * available_memory())
+        else:
+            whole = int(point.limits.memory_gib * 2**30) - PROCESS_BYTES  # of this process
+        gib = whole / self.workers / 2**30
+        return point.at(
+            point.wavelength,
+            solver=point.solver.model_copy(update={"threads": self.threads}),
+            limits=point.limits.model_copy(update={"memory_gib": gib}),
+        )
+
     def _hire(self, chain: deque[Task] | None = None) -> _Worker:
         context = multiprocessing.get_context("spawn")
         ours, theirs = context.Pipe()
         before = {name: os.environ.get(name) for name in _THREADS}
         os.environ.update(dict.fromkeys(_THREADS, str(self.threads)))
         try:
-            process = context.Process(
-                target=_work, args=(theirs, self.threads, os.getpid()), daemon=True
-            )
+            process = context.Process(target=_work, args=(theirs, os.getpid()), daemon=True)
             with _deaf():
                 process.start()
         finally:
@@ -191,7 +204,7 @@ def _dismiss(crew: Sequence[_Worker]) -> None:
         worker.pipe.close()
 
 
-def _work(pipe: Connection, threads: int, parent: int) -> None:
+def _work(pipe: Connection, parent: int) -> None:
     """What a worker does: points in, outcomes out, until the pipe ends."""
     # Ctrl-C reaches all processes of a terminal; the parent decides what comes of it.
     signal.signal(signal.SIGINT, signal.SIG_IGN)
@@ -208,8 +221,7 @@ def _work(pipe: Connection, threads: int, parent: int) -> None:
     with contextlib.suppress(EOFError, BrokenPipeError, ConnectionError):
         while True:
             point, seconds = pipe.recv()
-            solver = point.solver.model_copy(update={"threads": threads})
-            pipe.send(compute(point.at(point.wavelength, solver=solver), memory, watch, seconds))
+            pipe.send(compute(point, memory, watch, seconds))
 
 
 def _leave_with(parent: int) -> None:

@@ -10,18 +10,18 @@ from typing import Protocol
 from dda.lattice import system
 from dda.lattice.workers import Workers, available_threads
 from dda.study.estimate import measure_step
-from dda.study.geometry import Geometries, usable_memory
+from dda.study.geometry import PROCESS_BYTES, Geometries, usable_memory
 from dda.study.levels import Memory, Watch
 from dda.study.lights import lights_of
 from dda.study.points import Point
 from dda.study.prepare import Prepared
 from dda.study.runner import Budget, Outcome, compute
 
-#: Bytes that a worker process takes before it solves anything (measured: 230 to 270 MiB).
-PROCESS = 300 * 2**20
 # Seconds of computing that pay for starting processes, and what a cell and step of the solver,
 # and a point besides, take on a machine of today: a guess that only decides whether to measure.
 _WORTH, _NOMINAL, _POINT = 15.0, 1e-7, 0.05
+# Cells across up to which refinement to a target should not want for memory.
+_LIKELY = 64
 # Processes must promise this much more than threads.
 _GAIN = 1.1
 
@@ -116,7 +116,7 @@ def choose(prepared: Prepared, chains: Sequence[Sequence[Task]]) -> Engine:
         if processes == 1:
             return Here(prepared.geometries)
         return Crew(processes, threads or max(1, cores // processes))
-    fit = usable_memory(point) // (prepared.memory + PROCESS)
+    fit = usable_memory(point) // (_need(prepared) + PROCESS_BYTES)
     processes = min(cores // (threads or 1), fit, len(tasks))
     left = sum(prepared.weights[task.number % len(prepared.weights)] for task in tasks)
     guess = left * _NOMINAL + len(tasks) * _POINT
@@ -127,6 +127,14 @@ def choose(prepared: Prepared, chains: Sequence[Sequence[Task]]) -> Engine:
         if processes / one < _GAIN / all_:
             return Here(prepared.geometries)
     return Crew(int(processes), threads or max(1, cores // int(processes)))
+
+
+def _need(prepared: Prepared) -> int:
+    """Bytes of a solve; of one that refinement may well come to where a target is asked for."""
+    if prepared.points[0].accuracy.target is None:
+        return prepared.memory
+    geometry = prepared.geometry
+    return max(prepared.memory, geometry.memory(geometry.size / _LIKELY))
 
 
 def _step(prepared: Prepared, threads: int) -> float:

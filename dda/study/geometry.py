@@ -15,7 +15,14 @@ from dda.study.memory import USABLE_SHARE, available_memory, bytes_text, finest_
 from dda.study.mistakes import Mistake
 from dda.study.particle import build_particle
 from dda.study.points import Point
+from dda.study.recycling import MOST_BYTES
 
+#: Bytes that a process takes before it solves anything (measured: 230 to 270 MiB).
+PROCESS_BYTES = 300 * 2**20
+# Share of the memory for kept solutions.
+_KEPT_SHARE = 0.05
+# Bytes a cell of the vectors by which kept solutions help a solve.
+_RECYCLED = 480
 # Lattices of one particle whose cells are kept for the next wavelength.
 _LEVELS_KEPT = 8
 #: Width in cells of the window that shares out surface cells; thinner features are smeared.
@@ -77,7 +84,8 @@ class Geometry:
     def memory(self, spacing: float | None = None) -> int:
         """Return the bytes that a solve is expected to take, without making the cells."""
         d = self.spacing if spacing is None else spacing
-        return memory_estimate(self._box(d), self.count(d), self.precision)
+        count = self.count(d)
+        return memory_estimate(self._box(d), count, self.precision) + _RECYCLED * count
 
     def count(self, spacing: float) -> int:
         """Return about how many cells there are, without making them."""
@@ -159,10 +167,23 @@ def accuracy_key(point: Point) -> str:
 
 
 def usable_memory(point: Point) -> int:
-    """Return the bytes that a solve of this point may take."""
+    """Return the bytes that a solve of this point may take.
+
+    ``[limits] memory_gib`` is for everything: the program itself and the solutions that are kept
+    are taken off.
+    """
     usable = int(USABLE_SHARE * available_memory())
     gib = point.limits.memory_gib
-    return usable if gib is None else min(usable, int(gib * 2**30))
+    if gib is not None:
+        usable = min(usable, int(gib * 2**30) - PROCESS_BYTES)
+    return max(0, usable - kept_memory(point))
+
+
+def kept_memory(point: Point) -> int:
+    """Return the bytes that solutions of neighbouring wavelengths may take."""
+    gib = point.limits.memory_gib
+    whole = available_memory() if gib is None else gib * 2**30
+    return min(MOST_BYTES, int(_KEPT_SHARE * whole))
 
 
 def check_cells(geometry: Geometry, point: Point) -> shapes.Cells:
@@ -209,6 +230,11 @@ def _check_gap(geometry: Geometry, largest: float) -> None:
 
 def _check_memory(geometry: Geometry, key: str, largest: float, usable: int) -> None:
     need = geometry.memory()
+    if usable <= 0:
+        raise Mistake(
+            ("limits", "memory_gib"),
+            f"the program itself takes {bytes_text(PROCESS_BYTES)}; nothing is left to solve with",
+        )
     if need > usable:
         fits = finest_spacing(geometry.memory, usable, geometry.spacing)
         raise Mistake(

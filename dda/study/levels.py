@@ -16,12 +16,12 @@ from dda.response import Settled, settle
 from dda.response.averages import OrientationAverage
 from dda.response.orientation import Tumbling, tumbling
 from dda.study.estimate import expected_steps
-from dda.study.geometry import Geometries, Geometry, usable_memory
+from dda.study.geometry import Geometries, Geometry, kept_memory, usable_memory
 from dda.study.lights import light_count, lights_of
 from dda.study.media import Media, media_of
 from dda.study.more import NOTHING_MORE, More
 from dda.study.points import Point
-from dda.study.recycling import Recycled
+from dda.study.recycling import Recycled, RecycledColumns
 from dda.study.scattering import Scattered, of_average, of_direction, over_levels, partner
 
 #: Called with a message and the part of the current point that is done, 0 to 1.
@@ -81,6 +81,7 @@ def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf
     """
     geometry = memory.geometries.of(point)
     memory.solutions.only_for(point.geometry_key)
+    memory.solutions.most_bytes = kept_memory(point)
     finest: list[tuple[float, float]] = []
     scattered: list[Scattered | None] = []
 
@@ -88,7 +89,7 @@ def answer(point: Point, memory: Memory, watch: Watch, seconds: float = math.inf
         started = time.perf_counter()
         level = memory.geometries.level(geometry, across)
         if point.averaged:
-            tumbled = _average(point, level, watch)
+            tumbled = _average(point, level, memory, watch)
             average = tumbled.average
             assert tumbled.t_matrix is not None
             scattered.append(of_average(point, average, tumbled.t_matrix))
@@ -185,14 +186,16 @@ def _matrix(point: Point, geometry: Geometry, watch: Watch) -> tuple[System, Med
     return matrix, media
 
 
-def _average(point: Point, geometry: Geometry, watch: Watch) -> Tumbling:
+def _average(point: Point, geometry: Geometry, memory: Memory, watch: Watch) -> Tumbling:
     matrix, _ = _matrix(point, geometry, watch)
     label = _label(point, geometry)
 
     def columns(done: int, of: int) -> None:
         watch(f"{label}: multipole {done} of {of}", done / max(of, 1))
 
-    return tumbling(matrix, tolerance=tolerance_of(point), monitor=columns)
+    lattice = (round(geometry.spacing, 9), matrix.n)
+    known = RecycledColumns(memory.solutions, lattice, point.wavelength)
+    return tumbling(matrix, tolerance=tolerance_of(point), memory=known, monitor=columns)
 
 
 def _averaged_level(geometry: Geometry, average: OrientationAverage, seconds: float) -> Level:

@@ -9,7 +9,7 @@ from itertools import groupby
 
 import shapes
 from dda.study.estimate import expected_steps
-from dda.study.geometry import Geometries, Geometry, check_cells, geometry_of, usable_memory
+from dda.study.geometry import Geometries, Geometry, check_cells, geometry_of, kept_memory
 from dda.study.identity import fingerprints
 from dda.study.levels import tolerance_of
 from dda.study.lights import check_beam, light_count
@@ -19,7 +19,6 @@ from dda.study.near_region import check_near
 from dda.study.order import chains, coarse_first
 from dda.study.points import Point, points_of
 from dda.study.reader import Study
-from dda.study.recycling import MOST_BYTES
 from dda.study.scattering import check_scattering, partner_count
 
 #: Combinations of varied keys are checked for this long before a run begins, seconds; those left
@@ -181,7 +180,7 @@ class _Survey:
         self.memory = max(self.memory, self._geometry.memory(spacing))
         cells = self._geometry.count(spacing)
         solutions = light_count(point) * len(points) * _SOLUTION * 1.5 * cells
-        many = solutions < min(MOST_BYTES, 0.1 * usable_memory(point))
+        many = solutions < kept_memory(point)
         self.many += [many] * len(points)
         setup = _SETUP * sum((across / finest) ** 3 for across in levels)
         shares = recycled_shares(len(points), many and not point.averaged)
