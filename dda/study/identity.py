@@ -103,6 +103,8 @@ def near_fingerprint(point: Point, rows: Sequence[Row]) -> str:
 
 def _of_tables(point: Point, digests: dict[Path, str]) -> str:
     tables = point.tables.model_dump(exclude=_ASIDE, exclude_none=True, exclude_defaults=True)
+    if not tables.get("solver", True):
+        del tables["solver"]  # it held nothing but what is set aside
     files = {}
     for name in sorted(_files(tables["particle"])):
         path = point.folder / name
