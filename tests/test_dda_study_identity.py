@@ -54,7 +54,7 @@ def _of(text=STUDY, *changes, folder=Path()):
         ("cells = 6", "cells = 6\n[materials.film]\nindex = 2.0"),
         (
             "cells = 6",
-            'cells = 6\n[near_field]\nregion = "line"\nstart = [0, 0, 20]\nend = [0, 0, 40]\nstep = 5\nwavelengths = [520]',
+            'cells = 6\n[near_field]\nregion = "surface"\nwavelengths = [520]',
         ),
     ],
 )
@@ -154,7 +154,7 @@ def test_files_of_a_study_are_known_by_their_content(tmp_path):
 def test_a_near_field_depends_on_its_table_and_on_the_spectrum():
     near = (
         "cells = 6",
-        'cells = 6\n[near_field]\nregion = "line"\nstart = [0, 0, 20]\nend = [0, 0, 40]\nstep = 5\nwavelengths = ["peak"]',
+        'cells = 6\n[near_field]\nregion = "surface"\nwavelengths = ["peak"]',
     )
 
     def of(*changes, c_ext=1.0):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 import secrets
 from pathlib import Path
@@ -35,4 +36,5 @@ def write_aside(path: Path, content: bytes) -> None:
     except OSError as error:
         raise write_error(path, error) from error
     finally:
-        aside.unlink(missing_ok=True)
+        with contextlib.suppress(OSError):  # it was renamed, or never there
+            aside.unlink()

@@ -118,6 +118,8 @@ class Ledger:
         self._aside: tempfile.TemporaryDirectory | None = None
         self._base = _connect(self.path) if write else self._reader()
         try:
+            if write:
+                self._base.execute("PRAGMA synchronous = FULL")  # nothing is undone by a power cut
             # a process that was killed at once may leave a file with nothing in it
             empty = not self._base.execute("SELECT COUNT(*) FROM sqlite_master").fetchone()[0]
             if empty and not write:
@@ -426,8 +428,6 @@ def _connect(path: Path, how: str = "") -> sqlite3.Connection:
         base = sqlite3.connect(
             f"{path.absolute().as_uri()}?{how}", timeout=30, isolation_level=None, uri=True
         )
-        if not how:
-            base.execute("PRAGMA synchronous = FULL")  # a power cut must not undo an answer
     except sqlite3.OperationalError as error:
         raise InputError(f"{path}: cannot be opened: {error}") from None
     return base

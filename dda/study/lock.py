@@ -92,9 +92,11 @@ def holder_of(folder: Path) -> dict[str, object] | None:
 
 def _holder(folder: Path) -> dict[str, object] | None:
     try:
-        return json.loads((folder / HOLDER).read_text(encoding="utf-8"))
+        found = json.loads((folder / HOLDER).read_text(encoding="utf-8"))
     except (OSError, ValueError):
         return None
+    whole = isinstance(found, dict) and found.keys() >= {"process", "machine", "since"}
+    return found if whole else None
 
 
 def _sentence(folder: Path) -> str:

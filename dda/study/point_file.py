@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import hashlib
 import io
 import json
@@ -107,7 +108,8 @@ def _write(folder: Path, identity: str, content: bytes) -> str:
     except OSError as error:
         raise ComputationError(str(write_error(path, error))) from error
     finally:
-        aside.unlink(missing_ok=True)
+        with contextlib.suppress(OSError):  # it was renamed, or never there
+            aside.unlink()
     return name
 
 
