@@ -107,13 +107,13 @@ class NearLevels:
         self.advance()
         return found, solved, worst(each.polarization.status for each in solved)
 
-    def solve(self, system: System, light: object) -> Polarization:
+    def solve(self, system: System, light: object, tolerance: float | None = None) -> Polarization:
         """Solve for any light until what it loses to the particle has settled."""
         solver = self._point(self.point.wavelength).solver
         found = settle(
             system,
             light,
-            tolerance=solver.tolerance,
+            tolerance=tolerance or solver.tolerance,
             method=solver.method,
             monitor=self._monitor,
         )
