@@ -181,8 +181,15 @@ def _solve(
     from dda.report.progress import ProgressBar
 
     chains = folder.store.chains
-    total = sum(len(chain) for chain in chains)
-    with ProgressBar(total) as bar:
+    count = len(prepared.points)
+    weights = {  # a coarse answer takes an eighth or less of a whole one
+        task.number: prepared.weights[task.number % count] / (1 if task.number < count else 8)
+        for chain in chains
+        for task in chain
+    }
+    mean = sum(weights.values()) / max(1, len(weights))
+    shares = {number: weight / mean for number, weight in weights.items()}
+    with ProgressBar(len(weights)) as bar:
 
         def watch(message: str, part: float) -> None:
             check()
@@ -191,7 +198,7 @@ def _solve(
         with _closing(engine.run(chains, folder.begin, watch)) as outcomes:
             for done in outcomes:
                 folder.keep(done)
-                bar.advance()
+                bar.advance(shares[done.task.number])
                 check()
 
 

@@ -30,6 +30,7 @@ class ProgressBar:
         self.total = total
         self.shown = sys.stderr.isatty() if shown is None else shown
         self.done = 0
+        self._completed = 0.0
         self._started = self._told = time.monotonic()
         self._bar: Any = None
         self._task: Any = None
@@ -54,13 +55,15 @@ class ProgressBar:
         self._told = now
         if self._bar is None:
             self._bar, self._task = _begin(self.total)
-        self._bar.update(self._task, completed=self.done + part, doing=message, points=self.done)
+        completed = self._completed + part
+        self._bar.update(self._task, completed=completed, doing=message, points=self.done)
 
-    def advance(self) -> None:
-        """Count one more point as done."""
+    def advance(self, share: float = 1.0) -> None:
+        """Count one more point as done; ``share`` is its cost over that of a mean point."""
         self.done += 1
+        self._completed += share
         if self._bar is not None:
-            self._bar.update(self._task, completed=self.done, points=self.done)
+            self._bar.update(self._task, completed=self._completed, points=self.done)
 
 
 def duration_text(seconds: float) -> str:
