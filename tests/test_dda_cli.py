@@ -259,7 +259,7 @@ def test_a_target_is_reached_and_stated(study, capsys):
 
 
 @pytest.mark.parametrize(
-    ("limit", "said"), [("minutes = 1e-6", "in the time"), ("memory_gib = 0.004", "in the memory")]
+    ("limit", "said"), [("minutes = 1e-6", "in the time"), ("memory_gib = 0.314", "in the memory")]
 )
 def test_limits_stop_refinement_and_say_so(study, capsys, limit, said):
     name = study(("cells = 8", f"target = 0.0005\n[limits]\n{limit}"))
