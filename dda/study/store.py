@@ -264,6 +264,10 @@ def _changes(before: Any, now: Any, key: tuple[str | int, ...] = ()) -> list[str
     >>> _changes({"particle": {"edge": 60}}, {"particle": {"edge": 62}})
     ['particle.edge: 60 -> 62']
     """
+    if before is None and isinstance(now, Mapping) and now:
+        before = {}
+    if now is None and isinstance(before, Mapping) and before:
+        now = {}
     if isinstance(before, Mapping) and isinstance(now, Mapping):
         words = dict.fromkeys([*before, *now])
         return [
