@@ -6,11 +6,12 @@ import pytest
 from dda.lattice.settling import Settling
 
 
-def run(sequence, allowed, most=400, after_step=None, residual=lambda n: 0.1):
+def run(sequence, allowed, most=400, after_step=None, residual=lambda n: 0.1, second=False):
     """Steps until the watch stops a made-up iteration whose quantities are ``sequence(step)``."""
     watch = Settling(
         lambda x: np.array([x[0].real]), lambda values: np.array([allowed]), after_step
     )
+    watch.by_residual = second
     for step in range(1, most + 1):
         if watch(step, np.array([sequence(step)], complex), residual(step)):
             break
@@ -86,3 +87,40 @@ def test_a_large_residual_widens_the_estimate():
     slow, watch = run(lambda n: sequence[n], 1e-3, residual=lambda n: 1.0)
     assert slow > quick
     assert watch.spread[0] > 5 * np.ptp([v[0] for v in watch.values[-5:]])
+
+
+@pytest.mark.parametrize("rate", [0.9, 0.97])
+def test_second_order_errors_settle_sooner_and_within_what_is_allowed(rate):
+    """Errors that fall as the square of the residual, here with a ripple on them."""
+
+    def residual(n):
+        return rate**n * (1.5 + np.sin(1.7 * n))
+
+    def sequence(n):
+        return 1 + residual(n) ** 2 * np.cos(0.9 * n)
+
+    plain, _ = run(sequence, 1e-3, residual=residual)
+    step, watch = run(sequence, 1e-3, residual=residual, second=True)
+    assert step < plain
+    assert abs(watch.values[-1][0] - 1) <= watch.spread[0] <= 1e-3
+
+
+def test_iterates_with_large_residuals_are_not_looked_at():
+    """Every third iterate is a wild one, and says so by its residual."""
+
+    def sequence(n):
+        return 1 + 0.9**n + (5.0 if n % 3 == 0 else 0.0)
+
+    def residual(n):
+        return 0.95**n * (10 if n % 3 == 0 else 1)
+
+    step, watch = run(sequence, 1e-3, residual=residual, second=True)
+    assert step < 400
+    assert not any(step % 3 == 0 for step in watch.steps[1:])
+    assert abs(watch.values[-1][0] - 1) <= watch.spread[0] <= 1e-3
+
+
+def test_a_residual_that_does_not_fall_is_no_ground_for_scaling():
+    step, watch = run(lambda n: np.log(n), 1e-3, residual=lambda n: 0.1, second=True)
+    assert step == 400
+    assert watch.spread[0] > 0.2

@@ -80,13 +80,14 @@ def _run(system: System, method: str, preconditioned: bool) -> _Run:
         if np.linalg.norm(b) < 1e-9 * np.linalg.norm(incident):
             continue
         watch = goal.watch(sector, incident, None)
+        watch.by_residual = method == "cocg"
         result = METHODS[method](
             sector,
             b,
             sector.precondition if preconditioned else None,
             Iteration(tolerance=1e-6, limit=_LIMIT, monitor=watch),
         )
-        watch.look(result.iterations, result.x)
+        watch.look(result.iterations, result.x, result.residual)
         goal.add(watch)
         products += result.products
         c_ext += _extinction(sector, incident, result.x)

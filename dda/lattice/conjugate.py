@@ -90,7 +90,7 @@ def cocg(
     history: list[float] = []
     status = "converged" if residual <= rules.tolerance else "limit"
     step = 0
-    best, best_residual, largest = x.copy(), residual, residual
+    best, best_residual, best_step, largest = x.copy(), residual, 0, residual
     while status == "limit" and step < rules.limit:
         step += 1
         q = operator.matvec(p)
@@ -113,7 +113,7 @@ def cocg(
             status = "stalled"
             break
         if residual < best_residual and step % _KEEP == 0:
-            best[:], best_residual = x, residual
+            best[:], best_residual, best_step = x, residual, step
         if residual <= rules.tolerance:
             status = "converged"
         elif rules.monitor is not None and rules.monitor(step, x, residual):
@@ -124,7 +124,8 @@ def cocg(
                 subspace.remove(z)
             _extend(p, z, p.dtype.type(fresh / rho))
             rho = fresh
-    if status == "stalled" and not residual <= best_residual:
+    fall_back = status == "stalled" or (status == "limit" and 2 * best_step > step)
+    if fall_back and not residual <= best_residual:
         x, residual = best, best_residual
     return KrylovResult(x, residual, step, products, status, np.array(history))
 

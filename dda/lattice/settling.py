@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Protocol
 
 import numpy as np
@@ -16,10 +16,21 @@ _WINDOW = 0.3
 _LEAST_LOOKS = 6
 _UNSETTLED = 5.0
 
+# Where the error is of second order in the residual, only iterates are looked at whose residual is
+# at most so many times the lowest of the last half of the steps: conjugate gradients throw in
+# iterates that are off by far, and tell by their residual. What a value was off by when the
+# residual was larger says what it is off by now; the factor makes up for what the rule of thumb
+# leaves out. Chosen on 134 mirror sectors of spheres, cubes and dimers of silver and gold: of four
+# tolerances, no error was above 0.7 of what was allowed, with a quarter fewer products at 1e-3
+# than the plain spread took.
+_GOOD = 1.5
+_WINDOW_SCALED = 0.8
+_MARGIN = 8.0
+
 # After a start from neighbouring solutions the values hardly move at first, right or wrong: they
 # are watched for longer, and the estimate is never below this part of what is allowed.
 _WINDOW_KNOWN = 0.5
-_LEAST_LOOKS_KNOWN = 12
+_LEAST_LOOKS_KNOWN = 8
 _LEAST_PART = 1 / 3
 
 
@@ -34,6 +45,14 @@ class Settling:
         ``allowed(values)`` gives how far each may still move, shape (q,).
     after_step : callable, optional
         Called as ``after_step(step, x, residual)`` for progress; True stops the iteration.
+    orders : float or (q,)
+        Orders in the residual of the quantities' errors under conjugate gradients.
+
+    Attributes
+    ----------
+    by_residual : bool
+        Whether errors are judged by the residuals and `orders`, as conjugate gradients allow; set
+        before the first step.
 
     Notes
     -----
@@ -41,7 +60,8 @@ class Settling:
     no answer sees, so the residual says little. The estimate of the error of a quantity is the
     spread of its values over the last third of the steps, widened while the residual is large:
     a mode that has not shown yet may still come (one run in thirty on silver otherwise left an
-    error four times its estimate).
+    error four times its estimate). With `by_residual` it is the largest distance of an earlier
+    value from the last, over most of the steps, scaled with that power of the residuals' ratio.
     """
 
     def __init__(
@@ -49,21 +69,26 @@ class Settling:
         quantities: Callable[[np.ndarray], np.ndarray],
         allowed: Callable[[np.ndarray], np.ndarray],
         after_step: Callable[[int, np.ndarray, float], bool] | None = None,
+        orders: float | Sequence[float] = 2,
     ):
+        self._orders = orders
         self._quantities = quantities
         self._allowed = allowed
         self._after_step = after_step
-        self._residual = 0.0
         self._window, self._least_looks, self._least_part = _WINDOW, _LEAST_LOOKS, 0.0
+        self._history: list[float] = []
+        self.by_residual = False
         self.steps: list[int] = []
         self.values: list[np.ndarray] = []
+        self.residuals: list[float] = []
 
     def __call__(self, step: int, x: np.ndarray, residual: float) -> bool:
         """Whether to stop."""
-        self._residual = 0.0 if np.isnan(residual) else residual
+        residual = 0.0 if np.isnan(residual) else residual
+        self._history.append(residual)
         stop = bool(self._after_step and self._after_step(step, x, residual))
-        if step % (_STRIDE if step > _EARLY else _STRIDE // 2) == 0:
-            self.look(step, x)
+        if step % (_STRIDE if step > _EARLY else _STRIDE // 2) == 0 and self._worth(residual):
+            self.look(step, x, residual)
             stop = stop or self.settled
         return stop
 
@@ -72,10 +97,11 @@ class Settling:
         self._window, self._least_looks = _WINDOW_KNOWN, _LEAST_LOOKS_KNOWN
         self._least_part = _LEAST_PART
 
-    def look(self, step: int, x: np.ndarray) -> None:
+    def look(self, step: int, x: np.ndarray, residual: float) -> None:
         """Record the quantities of an iterate."""
         self.steps.append(step)
         self.values.append(np.asarray(self._quantities(x), float))
+        self.residuals.append(residual)
 
     @property
     def settled(self) -> bool:
@@ -89,15 +115,27 @@ class Settling:
         """Error estimate of each quantity, shape (q,); infinite before there is one."""
         if len(self.values) < self._least_looks:
             return np.full(len(self.values[-1]) if self.values else 1, np.inf)
-        first = self.steps[-1] * (1 - self._window)
+        window = _WINDOW_SCALED if self.by_residual else self._window
+        first = self.steps[-1] * (1 - window)
         looks = max(self._least_looks - 1, sum(s >= first for s in self.steps))
-        widened = 1 + _UNSETTLED * min(self._residual, 1.0)
-        spread = widened * np.ptp(np.array(self.values[-looks:]), axis=0)
+        values, last = np.array(self.values[-looks:]), self.residuals[-1]
+        if self.by_residual:
+            ratio = last / np.maximum(self.residuals[-looks:], 1e-300)
+            shrunk = np.minimum(1, _MARGIN * ratio[:, None] ** np.asarray(self._orders))
+            spread = (shrunk * abs(values - values[-1])).max(axis=0)
+        else:
+            spread = np.ptp(values, axis=0)
+        spread = (1 + _UNSETTLED * min(last, 1.0)) * spread
         if self._least_part:
             allowed = np.asarray(self._allowed(self.values[-1]), float)
             least = self._least_part * np.where(np.isfinite(allowed), allowed, allowed.min())
             spread = np.maximum(spread, least)
         return spread
+
+    def _worth(self, residual: float) -> bool:
+        """Whether an iterate is worth looking at."""
+        recent = self._history[len(self._history) // 2 :]
+        return not self.by_residual or residual <= _GOOD * min(recent)
 
 
 class Goal(Protocol):

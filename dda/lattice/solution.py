@@ -121,12 +121,14 @@ def solve(
                 known = Subspace.of(sector, [sector.fold(v) for v in previous])
                 extra += len(known.vectors) if known else 0
             watch = goal.watch(home, field_, monitor) if goal else None
-            if watch and known:
-                watch.start_is_known()
+            if watch:
+                watch.by_residual = method == "cocg" and guess is None
+                if known:
+                    watch.start_is_known()
             rules = Iteration(tolerance, limit, guess, known, watch or monitor, sector.exact)
             result = iterate(method, sector, b, sector.precondition, rules)
             if goal and watch:
-                watch.look(result.iterations, result.x)
+                watch.look(result.iterations, result.x, result.residual)
                 goal.add(watch)
             p += home.unfold(result.x)
             results.append((result, share))

@@ -122,7 +122,8 @@ class SectionsGoal:
             c_abs = max(whole[1], 1e-3 * whole[0])
             return self._tolerance * np.array([whole[0], c_abs, np.inf])
 
-        return Settling(quantities, allowed, after_step)
+        # scattering alone is not stationary at the solution
+        return Settling(quantities, allowed, after_step, orders=(2, 2, 1))
 
     def add(self, watch: Settling) -> None:
         """See `dda.lattice.settling.Goal`."""
