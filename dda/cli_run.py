@@ -155,7 +155,7 @@ def _print_some(lines: Iterator[str], file: Any = None) -> None:
 
 
 def _engine(prepared: Prepared, folder: RunFolder, scheduler: str | None) -> Engine:
-    from dda.study.engines import choose
+    from dda.study.engines import choose, worth_measuring
     from dda.study.estimate import POINT_BYTES
     from dda.study.store import space_for
 
@@ -169,9 +169,25 @@ def _engine(prepared: Prepared, folder: RunFolder, scheduler: str | None) -> Eng
 
         return Cluster(scheduler)
     engine = choose(prepared, chains)
-    if engine.workers > 1:
-        print(f"{engine.workers} processes compute {left} points", flush=True)
+    if worth_measuring(prepared, chains):
+        print(_foretold(engine, prepared, chains, folder), flush=True)
     return engine
+
+
+def _foretold(engine: Engine, prepared: Prepared, chains: Any, folder: RunFolder) -> str:
+    """Say who computes what is left and how long that may take, measured now."""
+    from dda.report.progress import duration_text
+    from dda.study.plan import cost_of
+
+    cost, numbers = cost_of(prepared), [task.number for chain in chains for task in chain]
+    part = sum(prepared.weights[n] for n in numbers if n < len(prepared.points))
+    share = part / sum(prepared.weights) / engine.workers
+    low, high = (duration_text(share * seconds) for seconds in cost.seconds_between)
+    who = f"{engine.workers} processes" if engine.workers > 1 else "this process"
+    return (
+        f"\n{len(numbers)} points, computed by {who}: between {low} and {high}; "
+        f"`dda status {folder.path}` knows better after a minute"
+    )
 
 
 def _solve(

@@ -118,15 +118,20 @@ def choose(prepared: Prepared, chains: Sequence[Sequence[Task]]) -> Engine:
         return Crew(processes, threads or max(1, cores // processes))
     fit = usable_memory(point) // (_need(prepared) + PROCESS_BYTES)
     processes = min(cores // (threads or 1), fit, len(tasks))
-    left = sum(prepared.weights[task.number % len(prepared.weights)] for task in tasks)
-    guess = left * _NOMINAL + len(tasks) * _POINT
-    if processes < 2 or guess < _WORTH or prepared.cells.n > 10**6:
+    if processes < 2 or not worth_measuring(prepared, chains) or prepared.cells.n > 10**6:
         return Here(prepared.geometries)
     if threads is None:
         one, all_ = (_step(prepared, n) for n in (1, cores))
         if processes / one < _GAIN / all_:
             return Here(prepared.geometries)
     return Crew(int(processes), threads or max(1, cores // int(processes)))
+
+
+def worth_measuring(prepared: Prepared, chains: Sequence[Sequence[Task]]) -> bool:
+    """Whether so much is left that a second of measuring does not matter."""
+    tasks = [task for chain in chains for task in chain]
+    left = sum(prepared.weights[task.number % len(prepared.weights)] for task in tasks)
+    return left * _NOMINAL + len(tasks) * _POINT > _WORTH
 
 
 def _need(prepared: Prepared) -> int:

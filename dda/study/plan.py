@@ -75,7 +75,7 @@ def make_plan(study: Study) -> Plan:
     prepared = prepare(study)
     finest = prepared.geometries.level(prepared.geometry, prepared.levels[-1])
     near = near_plan(prepared.points[len(prepared.points) // 2], finest, prepared.media)
-    cost, figures = _cost(prepared), validity(prepared)
+    cost, figures = cost_of(prepared), validity(prepared)
     return Plan(prepared, prepared.memory, available_memory(), cost, figures, near)
 
 
@@ -140,7 +140,7 @@ def _alike_figures(prepared: Prepared) -> list[Figure]:
     ]
 
 
-def _cost(prepared: Prepared) -> Cost:
+def cost_of(prepared: Prepared) -> Cost:
     """Return the cost, measured at the finest spacing that is sure to be solved."""
     point = prepared.points[len(prepared.points) // 2]
     finest = prepared.levels[-1]
