@@ -136,7 +136,7 @@ def read_vary(table: Mapping[str, Any]) -> Vary:
 def _axes(table: Mapping[str, Any], written: tuple[str, ...]) -> Iterator[Axis]:
     for word, value in table.items():
         here = (*written, word)
-        if isinstance(value, Mapping) and not (value and set(value) <= _RANGE):
+        if isinstance(value, Mapping) and not _RANGE & set(value):
             yield from _axes(value, here)
             continue
         key = _split(".".join(here))
@@ -180,6 +180,11 @@ def _values(value: Any, key: Key) -> Sequence[Any]:
 
 def _range(value: Mapping[str, Any], key: Key) -> list[float]:
     numbers = []
+    for word in value:
+        if word not in _RANGE:
+            raise Mistake(
+                key, f'"{word}" is not known; a range is {{from = 40, to = 80, step = 10}}'
+            )
     for word in ("from", "to", "step"):
         number = value.get(word)
         if not isinstance(number, int | float) or isinstance(number, bool):
