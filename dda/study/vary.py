@@ -182,9 +182,7 @@ def _range(value: Mapping[str, Any], key: Key) -> list[float]:
     numbers = []
     for word in value:
         if word not in _RANGE:
-            raise Mistake(
-                key, f'"{word}" is not known; a range is {{from = 40, to = 80, step = 10}}'
-            )
+            raise Mistake(key, f'"{word}" is not known; write {{from = 40, to = 80, step = 10}}')
     for word in ("from", "to", "step"):
         number = value.get(word)
         if not isinstance(number, int | float) or isinstance(number, bool):
