@@ -13,6 +13,7 @@ from .iteration import (
     identity,
     nothing_to_do,
 )
+from .subspace import add, dots
 
 
 def bicgstab(
@@ -153,7 +154,7 @@ def idr(
     x, r, products = first_iterate(operator, b, rules)
     r = solve(r)  # preconditioned from the left, so that the residual is the one `cocg` reports
     n, s = len(b), min(rules.shadow, len(b))
-    shadow = _shadow_space(n, s).astype(b.dtype)
+    shadow = _shadow_space(n, s).astype(b.dtype)  # conjugated already
     images = np.zeros((s, n), b.dtype)
     steps = np.zeros((s, n), b.dtype)
     m = np.eye(s, dtype=complex)
@@ -179,18 +180,21 @@ def idr(
             status = "over"
 
     while status == "limit" and len(history) < rules.limit:
-        f = shadow.conj() @ r
+        f = dots(shadow, r)
         for k in range(s):
             c = _solve_lower(m[k:, k:], f[k:])
-            v = r - c.astype(b.dtype) @ images[k:]
-            steps[k] = c.astype(b.dtype) @ steps[k:] + b.dtype.type(omega) * v
+            v = r.copy()
+            add(images[k:], -c.astype(b.dtype), v)
+            v *= b.dtype.type(omega)
+            add(steps[k:], c.astype(b.dtype), v)
+            steps[k] = v
             images[k] = solve(operator.matvec(steps[k]))
             products += 1
             for i in range(k):
-                a = b.dtype.type(np.vdot(shadow[i], images[k]) / m[i, i])
+                a = b.dtype.type(np.dot(shadow[i], images[k]) / m[i, i])
                 images[k] -= a * images[i]
                 steps[k] -= a * steps[i]
-            m[k:, k] = shadow[k:].conj() @ images[k]
+            m[k:, k] = dots(shadow[k:], images[k])
             if m[k, k] == 0 or not np.isfinite(m[k, k]):
                 status = "stalled"
                 break

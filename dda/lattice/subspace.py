@@ -40,18 +40,19 @@ class Subspace:
 
     def start(self, x: np.ndarray, r: np.ndarray) -> None:
         """Add to x the vector of the span that makes ``v . r = 0`` for all v, and renew r."""
-        weights = self.inverse @ _products(self.vectors, r)
-        _add(self.vectors, weights.astype(x.dtype), x)
-        _add(self.images, -weights.astype(r.dtype), r)
+        weights = self.inverse @ dots(self.vectors, r)
+        add(self.vectors, weights.astype(x.dtype), x)
+        add(self.images, -weights.astype(r.dtype), r)
 
     def remove(self, z: np.ndarray) -> None:
         """Take from z its part in the span, in the sense of ``u . A v``."""
-        weights = self.inverse @ _products(self.images, z)
-        _add(self.vectors, -weights.astype(z.dtype), z)
+        weights = self.inverse @ dots(self.images, z)
+        add(self.vectors, -weights.astype(z.dtype), z)
 
 
 @njit(nogil=True, cache=True)
-def _products(rows, x):  # pragma: no cover - compiled
+def dots(rows, x):  # pragma: no cover - compiled
+    """Sums of every row (k, n) times x, without a conjugate, in double precision."""
     out = np.zeros(len(rows), np.complex128)
     for k in range(len(rows)):
         for i in range(len(x)):
@@ -60,7 +61,8 @@ def _products(rows, x):  # pragma: no cover - compiled
 
 
 @njit(nogil=True, cache=True)
-def _add(rows, weights, x):  # pragma: no cover - compiled
+def add(rows, weights, x):  # pragma: no cover - compiled
+    """Add the weighted rows (k, n) to x."""
     for k in range(len(rows)):
         for i in range(len(x)):
             x[i] += weights[k] * rows[k, i]
