@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Any
+import math
+from typing import Annotated, Any, ClassVar
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, model_validator
 
 #: Numbers are strict: "60" and true are not lengths.
 Finite = Annotated[float, Field(strict=True, allow_inf_nan=False)]
@@ -24,3 +25,30 @@ class Table(BaseModel):
     """A table of the study file: frozen, and strict about its keys."""
 
     model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True)
+
+
+class Range(Table):
+    """``{from = 450, to = 850, step = 10}``: evenly spaced numbers, both ends included.
+
+    A class of its own for each kind of number states how many there may be, and their name.
+    """
+
+    most: ClassVar[int] = 1_000_000
+    things: ClassVar[str] = "values"
+
+    start: Finite = Field(alias="from")
+    stop: Finite = Field(alias="to")
+    step: Positive
+
+    @model_validator(mode="after")
+    def _ordered(self) -> Range:
+        if self.stop < self.start:
+            raise ValueError(f"from = {self.start:g} is above to = {self.stop:g}")
+        if (self.stop - self.start) / self.step >= self.most:
+            raise ValueError(f"step = {self.step:g} makes more than {self.most} {self.things}")
+        return self
+
+    def values(self) -> tuple[float, ...]:
+        """Return the numbers; the end belongs to them when the steps reach it."""
+        count = math.floor((self.stop - self.start) / self.step + 1e-9) + 1
+        return tuple(round(self.start + i * self.step, 9) for i in range(count))

@@ -34,6 +34,7 @@ _PLAIN = {
     "dict_type": "should be a table",
     "model_type": "should be a table",
     "finite_number": "should be finite",
+    "bool_type": "should be true or false",
 }
 
 

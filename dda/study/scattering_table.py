@@ -7,7 +7,7 @@ from typing import Annotated, Any
 
 from pydantic import BeforeValidator, Field, model_validator
 
-from dda.study.fields import Finite, Positive, Table
+from dda.study.fields import Range, Table
 
 #: More scattering angles than this are taken for a slip of the pen.
 MOST_ANGLES = 2000
@@ -15,29 +15,18 @@ MOST_ANGLES = 2000
 MULTIPOLES = ("dipole", "quadrupole", "octupole", "hexadecapole")
 
 
-class AngleRange(Table):
+class AngleRange(Range):
     """``{from = 0, to = 180, step = 5}``, degrees, both ends included."""
 
-    start: Finite = Field(alias="from")
-    stop: Finite = Field(alias="to")
-    step: Positive
-
-    @model_validator(mode="after")
-    def _ordered(self) -> AngleRange:
-        if self.stop < self.start:
-            raise ValueError(f"from = {self.start:g} is above to = {self.stop:g}")
-        if (self.stop - self.start) / self.step >= MOST_ANGLES:
-            raise ValueError(f"step = {self.step:g} makes more than {MOST_ANGLES} angles")
-        return self
+    most = MOST_ANGLES
+    things = "angles"
 
 
 def _angles(value: Any) -> Any:
     if isinstance(value, dict):
         if set(value) != {"from", "to", "step"}:
             raise ValueError(f"takes from, to and step, not {', '.join(value) or 'nothing'}")
-        table = AngleRange.model_validate(value)
-        count = math.floor((table.stop - table.start) / table.step + 1e-9) + 1
-        value = tuple(round(table.start + i * table.step, 9) for i in range(count))
+        value = AngleRange.model_validate(value).values()
     found = _numbers(value, "a list of angles in degrees or {from = 0, to = 180, step = 5}")
     outside = [angle for angle in found if not 0 <= angle <= 180]
     if outside:

@@ -21,7 +21,7 @@ from pydantic import (
 )
 
 from dda.study.beam_table import BeamTable
-from dda.study.fields import Positive, Table, Vector
+from dda.study.fields import Positive, Range, Table, Vector
 from dda.study.near_table import NearFieldTable
 from dda.study.parts_table import PartTable
 from dda.study.scattering_table import ScatteringTable
@@ -110,25 +110,14 @@ class HostTable(Table):
         return self
 
 
-class WavelengthRange(Table):
+class WavelengthRange(Range):
     """``{from = 450, to = 850, step = 10}``, vacuum wavelengths in nm, both ends included."""
+
+    most = MOST_WAVELENGTHS
+    things = "wavelengths"
 
     start: Positive = Field(alias="from")
     stop: Positive = Field(alias="to")
-    step: Positive
-
-    @model_validator(mode="after")
-    def _ordered(self) -> WavelengthRange:
-        if self.stop < self.start:
-            raise ValueError(f"from = {self.start:g} is above to = {self.stop:g}")
-        if (self.stop - self.start) / self.step >= MOST_WAVELENGTHS:
-            raise ValueError(f"step = {self.step:g} makes more than {MOST_WAVELENGTHS} wavelengths")
-        return self
-
-    def values(self) -> tuple[float, ...]:
-        """Return the wavelengths, nm; the end belongs to them when the steps reach it."""
-        count = math.floor((self.stop - self.start) / self.step + 1e-9) + 1
-        return tuple(round(self.start + i * self.step, 9) for i in range(count))
 
 
 def _listed(values: tuple[float, ...]) -> tuple[float, ...]:
