@@ -33,7 +33,7 @@ HARD: list[Hard] = [
     ),
     *_family(
         "two silver spheres 20 nm, gap 1 nm",
-        lambda: shapes.dimer(shapes.sphere(20, "silver"), 1.0, material="silver"), 62, (380, 420),
+        lambda: shapes.dimer(shapes.sphere(20, "silver"), 1.0, material="silver"), 42, (380, 420),
     ),
     *_family("gold sphere 80 nm", lambda: shapes.sphere(80, "gold"), 20, (700, 850, 1000)),
     *_family(
@@ -43,7 +43,7 @@ HARD: list[Hard] = [
     *_family("gold star (mesh)", lambda: shapes.from_mesh(STAR, material="gold"), 24, (700, 850)),
     *_family(
         "two gold spheres 20 nm, gap 1 nm, light along the axis",
-        lambda: shapes.dimer(shapes.sphere(20, "gold"), 1.0), 62, (600, 800),
+        lambda: shapes.dimer(shapes.sphere(20, "gold"), 1.0), 42, (600, 800),
     ),
 ]  # fmt: skip
 
