@@ -13,7 +13,7 @@ from dda.lattice import System, relative_system
 from dda.lattice.krylov import METHODS, Iteration, Subspace
 from dda.lattice.sectors import sectors
 from dda.response.settled import SectionsGoal
-from validation.compare import permittivity
+from validation.compare import percent, permittivity
 from validation.preconditioners import (
     block_cocg,
     circulant,
@@ -51,6 +51,7 @@ case: two polarizations in a block and alone, to a residual of {BLOCK_RESIDUAL:g
             relative_system(cells, w, 1.33, [permittivity(material, w) / 1.33**2])
             for w in (wavelength, wavelength + APART)
         )
+        first = 0.0
         ways: tuple[tuple[str, Callable[[System], Callable | None], int], ...] = (
             ("block diagonal", lambda s: s.precondition, 0),
             ("none", lambda s: None, 0),
@@ -62,21 +63,27 @@ case: two polarizations in a block and alone, to a residual of {BLOCK_RESIDUAL:g
             preconditioner = build(system)
             setup = f"{time.perf_counter() - begin:.1f} s, {products}"
             for method in METHODS:
-                rows.append([case, method, name, setup, *_solved(system, method, preconditioner)])
+                found, c_ext = _solved(system, method, preconditioner)
+                first = first or c_ext
+                rows.append([case, method, name, setup, *found, percent(c_ext / first - 1)])
         b = dda.plane_wave().field(near.positions, near.k).ravel().astype(complex)
         for count in MODES:
             begin = time.perf_counter()
             space = deflation(system, slow_modes(near, b, count))
             setup = f"{time.perf_counter() - begin:.1f} s, {count}"
-            found = _solved(system, "cocg", system.precondition, space)
-            rows.append([case, "cocg", f"block diagonal, {count} slow modes", setup, *found])
-        rows += [[case, *row] for row in _blocks(system)]
-    columns = ("case", "method", "preconditioner", "setting up", "status", "products", "time, s")
+            found, c_ext = _solved(system, "cocg", system.precondition, space)
+            name = f"block diagonal, {count} slow modes"
+            rows.append([case, "cocg", name, setup, *found, percent(c_ext / first - 1)])
+        rows += [[case, *row, "-"] for row in _blocks(system)]
+    columns = (
+        "case", "method", "preconditioner", "setting up", "status", "products", "time, s",
+        "C_ext against the first, %",
+    )  # fmt: skip
     return Table("Preconditioners compared", text, columns, rows)
 
 
 def _solved(system: System, method: str, preconditioner, space: Subspace | None = None):
-    """Status, products and time until the cross sections have settled."""
+    """Status, products and time until the cross sections have settled, and C_ext in nm^2."""
     light = dda.plane_wave()
     incident = light.field(system.positions, system.k)
     (whole,) = sectors(system, (False, False, False))
@@ -87,7 +94,9 @@ def _solved(system: System, method: str, preconditioner, space: Subspace | None 
     found = METHODS[method](system, whole.fold(incident), preconditioner, rules)
     seconds = time.perf_counter() - begin
     reached = found.status in ("converged", "stopped")
-    return ["settled" if reached else found.status, f"{found.products}", f"{seconds:.1f}"]
+    watch.look(found.iterations, found.x, found.residual)
+    status = "settled" if reached else found.status
+    return [status, f"{found.products}", f"{seconds:.1f}"], float(watch.values[-1][0])
 
 
 def _blocks(system: System) -> list[list[str]]:
