@@ -14,6 +14,7 @@ import signal
 import subprocess
 import sys
 import time
+import tomllib
 import traceback
 from collections.abc import Callable, Sequence
 from pathlib import Path
@@ -21,6 +22,20 @@ from types import TracebackType
 
 ROOT = Path(__file__).parents[1]
 _PATCH = "WARM_PATCH"
+# Libraries whose threads do not survive a fork are kept from having any.
+_FORKS = {
+    "OPENBLAS_NUM_THREADS": "1",
+    "NUMBA_NUM_THREADS": "1",
+    "NUMBA_THREADING_LAYER": "workqueue",
+}
+# Not solved: solving starts threads, and a process with threads must not fork.
+_STUDY = """
+name = "warm"
+particle = {shape = "sphere", diameter = 20.0, material = "gold"}
+host = {index = 1.33}
+light = {wavelengths = [530]}
+accuracy = {cells = 6}
+"""
 
 
 class Warm:
@@ -40,7 +55,7 @@ class Warm:
             stdin=subprocess.PIPE,
             stdout=subprocess.PIPE,
             text=True,
-            env={**os.environ, "OPENBLAS_NUM_THREADS": "1"},
+            env={**os.environ, **_FORKS},
         )
 
     def __enter__(self) -> Warm:
@@ -146,7 +161,10 @@ def _serve(patch: str) -> None:
     import dda.cli
     import dda.report.folder
     import dda.study.prepare
+    from dda.study.reader import study_from_tables
 
+    tables = tomllib.loads(_STUDY)
+    dda.study.prepare.prepare(study_from_tables(tables, Path("warm.toml")))  # loads kernels
     for line in sys.stdin:
         asked = json.loads(line)
         if "wait" in asked:
