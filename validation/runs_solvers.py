@@ -92,10 +92,8 @@ def _run(system: System, method: str, preconditioned: bool) -> _Run:
         products += result.products
         c_ext += _extinction(sector, incident, result.x)
         statuses.append(result.status)
-    reached = all(status in ("converged", "stopped") for status in statuses)
-    return _Run(
-        products, time.perf_counter() - begin, c_ext, "settled" if reached else max(statuses)
-    )
+    missed = [status for status in statuses if status not in ("converged", "stopped")]
+    return _Run(products, time.perf_counter() - begin, c_ext, max(missed) if missed else "settled")
 
 
 def _extinction(sector: Sector, incident: np.ndarray, x: np.ndarray) -> float:
