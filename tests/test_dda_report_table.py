@@ -6,7 +6,7 @@ import math
 import pytest
 
 from dda.errors import InputError
-from dda.report.files import write_aside
+from dda.files import write_aside
 from dda.report.table import peak_sentence, spectrum_text, write_csv
 from dda.study.rows import Row
 from dda.study.spectrum import Peak

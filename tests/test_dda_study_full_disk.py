@@ -8,7 +8,7 @@ import pytest
 
 from dda.cli import main
 from dda.errors import ComputationError
-from dda.report.files import write_aside
+from dda.files import write_aside
 from dda.study.ledger import Ledger
 from dda.study.lock import Lock
 from dda.study.point_file import write_point

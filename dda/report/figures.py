@@ -8,7 +8,7 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
-from dda.report.files import write_aside
+from dda.files import write_aside
 from dda.study.rows import Row
 from dda.study.spectrum import find_peak
 

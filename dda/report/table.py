@@ -8,7 +8,7 @@ import math
 from collections.abc import Sequence
 from pathlib import Path
 
-from dda.report.files import write_aside
+from dda.files import write_aside
 from dda.study.rows import COLUMNS, Row
 from dda.study.spectrum import Peak, find_peak
 

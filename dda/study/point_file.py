@@ -2,12 +2,9 @@
 
 from __future__ import annotations
 
-import contextlib
 import hashlib
 import io
 import json
-import os
-import secrets
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
@@ -15,7 +12,8 @@ from typing import Any
 import numpy as np
 
 from dda.accuracy import Level
-from dda.errors import ComputationError, write_error
+from dda.errors import ComputationError, InputError, write_error
+from dda.files import write_aside
 from dda.study.more import Array
 
 FOLDER = "points"
@@ -97,19 +95,12 @@ def copy_point(source: Path, folder: Path, identity: str) -> str:
 def _write(folder: Path, identity: str, content: bytes) -> str:
     name = place_of(identity)
     path = folder / name
-    aside = path.with_name(f".{path.name}.{secrets.token_hex(4)}.part")
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
-        with aside.open("wb") as file:
-            file.write(content)
-            file.flush()
-            os.fsync(file.fileno())
-        os.replace(aside, path)
-    except OSError as error:
-        raise ComputationError(str(write_error(path, error))) from error
-    finally:
-        with contextlib.suppress(OSError):  # it was renamed, or never there
-            aside.unlink()
+        write_aside(path, content)
+    except (OSError, InputError) as error:
+        said = str(write_error(path, error) if isinstance(error, OSError) else error)
+        raise ComputationError(said) from error
     return name
 
 
