@@ -2,7 +2,8 @@
 
 import hashlib
 
-from dda.study.ledger import Answered, Entry, Ledger
+from dda.study.ledger import Ledger
+from dda.study.ledger_records import Answered, Entry
 from dda.study.point_file import write_point
 from dda.study.rows import Row
 

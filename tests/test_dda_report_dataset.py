@@ -12,7 +12,7 @@ from dda.accuracy import Level
 from dda.errors import InputError
 from dda.report.columns import attributes_of, plain_name
 from dda.report.key_units import unit_of
-from dda.study.ledger import Answered, Entry
+from dda.study.ledger_records import Answered, Entry
 from dda.study.more import Array
 from dda.study.rows import Row
 from tests.runs import EDGES, WAVELENGTHS, answer, begin, finished, grid, section, with_file

@@ -11,7 +11,8 @@ from dda.cli import main
 from dda.errors import InputError
 from dda.report.status import read_status
 from dda.report.status_text import status_text
-from dda.study.ledger import Answered, Ledger
+from dda.study.ledger import Ledger
+from dda.study.ledger_records import Answered
 from dda.study.lock import HOLDER, Lock, holder_of
 from dda.study.rows import Row
 from tests.runs import WAVELENGTHS, answer, begin, finished, grid

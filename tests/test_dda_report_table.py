@@ -5,7 +5,7 @@ import math
 
 import pytest
 
-from dda.errors import InputError
+from dda.errors import ComputationError
 from dda.files import write_aside
 from dda.report.table import peak_sentence, spectrum_text, write_csv
 from dda.study.rows import Row
@@ -63,7 +63,7 @@ def test_a_file_that_cannot_be_written_leaves_the_old_one(tmp_path, monkeypatch)
         raise OSError(28, "No space left on device")
 
     monkeypatch.setattr("os.fsync", full)
-    with pytest.raises(InputError, match="No space left"):
+    with pytest.raises(ComputationError, match="the disk is full"):
         write_aside(path, b"new")
     assert path.read_text() == "old"
     assert [p.name for p in tmp_path.iterdir()] == ["spectrum.csv"]

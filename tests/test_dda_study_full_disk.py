@@ -1,5 +1,6 @@
 """A disk that fills up ends a run with a sentence; what was finished before stays."""
 
+import errno
 import os
 import subprocess
 import sys
@@ -119,3 +120,31 @@ def test_a_folder_is_held_on_a_full_disk_too(disk):
     _fill(disk, leave=8192)
     with Lock(disk), pytest.raises(ValueError, match="is running a study in it"):
         Lock(disk)
+
+
+@pytest.mark.parametrize("code", [errno.ENOSPC, errno.EDQUOT])
+@pytest.mark.parametrize("written", [0, 1, 2, 3, 5])
+def test_a_disk_that_refuses_after_some_files_ends_the_run(
+    tmp_path, capsys, monkeypatch, written, code
+):
+    study = sweep(tmp_path / "study.toml", 3)
+    left = written
+    fsync = os.fsync
+
+    def refuse(file):
+        nonlocal left
+        left -= 1
+        if left < 0:
+            raise OSError(code, os.strerror(code))
+        fsync(file)
+
+    monkeypatch.setattr(os, "fsync", refuse)
+    out = tmp_path / "out"
+    assert main(["run", str(study), "--out", str(out)]) == 1
+    said = capsys.readouterr().err
+    assert "cannot be written: the disk is full" in said
+    assert f"{len(finished(out))} of 3 points are kept; the same command goes on" in said
+    assert not [*out.glob("**/*.part")]
+    monkeypatch.undo()
+    assert main(["run", str(study), "--out", str(out)]) == 0
+    assert len(table(out)) == 3

@@ -6,7 +6,8 @@ import sqlite3
 import pytest
 
 from dda.errors import ComputationError, InputError
-from dda.study.ledger import FORMAT, LEDGER, Answered, Entry, Ledger
+from dda.study.ledger import FORMAT, LEDGER, Ledger
+from dda.study.ledger_records import Answered, Entry
 from dda.study.rows import Row
 from tests.runs import answer, begin, grid
 

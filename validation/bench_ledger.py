@@ -11,7 +11,8 @@ from pathlib import Path
 
 from dda.report.dataset import open_run
 from dda.report.live import LiveServer
-from dda.study.ledger import Answered, Entry, Ledger
+from dda.study.ledger import Ledger
+from dda.study.ledger_records import Answered, Entry
 from dda.study.rows import Row
 from validation.measure import Figure, bench, medians
 

@@ -15,7 +15,8 @@ import numpy as np
 from dda.errors import InputError
 from dda.report.columns import CONVENTIONS, attributes_of, plain_name
 from dda.report.key_units import unit_of
-from dda.study.ledger import WAITING, Entry, Ledger
+from dda.study.ledger import WAITING, Ledger
+from dda.study.ledger_records import Entry
 from dda.study.point_file import damaged
 from dda.study.rows import COLUMNS, Row
 
@@ -55,7 +56,8 @@ def open_run(path: str | Path) -> xarray.Dataset:
     Examples
     --------
     >>> import tempfile
-    >>> from dda.study.ledger import Answered, Entry, Ledger
+    >>> from dda.study.ledger import Ledger
+    >>> from dda.study.ledger_records import Answered, Entry
     >>> from dda.study.rows import Row
     >>> folder = tempfile.TemporaryDirectory()
     >>> with Ledger(Path(folder.name), write=True) as ledger:  # what `dda run` does

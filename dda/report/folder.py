@@ -15,8 +15,8 @@ from pathlib import Path
 from typing import Any
 
 from dda.errors import InputError, write_error
-from dda.report.figures import draw_spectrum
 from dda.files import write_aside
+from dda.report.figures import draw_spectrum
 from dda.report.scattering import draw_scattering, scattering_table
 from dda.report.sweep_figure import draw_sweep
 from dda.report.table import write_csv

@@ -9,7 +9,8 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from dda.study.ledger import RUNNING, WAITING, Entry, Ledger
+from dda.study.ledger import RUNNING, WAITING, Ledger
+from dda.study.ledger_records import Entry
 from dda.study.lock import holder_of
 
 #: Kinds of points in the order in which they are told, and what each means.

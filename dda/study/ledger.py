@@ -11,13 +11,13 @@ import shutil
 import sqlite3
 import tempfile
 import time
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager
-from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Any
 
 from dda.errors import InputError
+from dda.study.ledger_records import Answered, Entry, columns_of, entry_of, row_of
 from dda.study.rows import Row, as_preview
 from dda.study.sqlite_errors import is_the_disk, unwritable
 
@@ -39,60 +39,6 @@ CREATE TABLE answers (identity TEXT PRIMARY KEY, status TEXT NOT NULL, numbers T
     worker TEXT NOT NULL, file TEXT, checksum TEXT);
 CREATE TABLE running (identity TEXT PRIMARY KEY, worker TEXT NOT NULL, begun REAL NOT NULL);
 """
-
-
-@dataclass(frozen=True)
-class Entry:
-    """A point of the study as the ledger lists it.
-
-    Attributes
-    ----------
-    number : int
-        Its place in the study and in the table of results, from 0.
-    identity : str
-        Fingerprint of all that determines its answer.
-    preview : str or None
-        Fingerprint of its coarse answer, if one is asked for.
-    wavelength_nm : float
-    varied : mapping
-        Values of the varied keys by dotted name.
-    weight : float
-        Expected cost, in any unit.
-    """
-
-    number: int
-    identity: str
-    preview: str | None
-    wavelength_nm: float
-    varied: Mapping[str, Any]
-    weight: float
-
-
-@dataclass(frozen=True)
-class Answered:
-    """A finished answer.
-
-    Attributes
-    ----------
-    row : Row
-    tries : int
-        How often it was computed; 2 after another solver was tried.
-    worker : str
-        Who computed it.
-    file : str or None
-        Its arrays, a path relative to the run folder.
-    checksum : str or None
-        SHA-256 of that file.
-    finished : float
-        Seconds since 1970.
-    """
-
-    row: Row
-    tries: int = 1
-    worker: str = ""
-    file: str | None = None
-    checksum: str | None = None
-    finished: float = 0.0
 
 
 class Ledger:
@@ -209,7 +155,7 @@ class Ledger:
             for identity, answered in answers:
                 base.execute(
                     "INSERT OR REPLACE INTO answers VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
-                    (identity, *_columns(answered)),
+                    (identity, *columns_of(answered)),
                 )
                 base.execute("DELETE FROM running WHERE identity = ?", (identity,))
 
@@ -241,7 +187,7 @@ class Ledger:
     def entries(self) -> Iterator[Entry]:
         """Yield the points of the study in their order."""
         for row in self._base.execute("SELECT * FROM points ORDER BY number"):
-            yield _entry(row)
+            yield entry_of(row)
 
     def entry(self, point: int | str) -> Entry | None:
         """Return a point by its number or its identity."""
@@ -249,7 +195,7 @@ class Ledger:
         row = self._base.execute(
             f"SELECT * FROM points WHERE {column} = ? ORDER BY number", (point,)
         ).fetchone()
-        return None if row is None else _entry(row)
+        return None if row is None else entry_of(row)
 
     def known(self) -> dict[str, str]:
         """Return the status of every answer by its identity."""
@@ -270,7 +216,7 @@ class Ledger:
         ).fetchone()
         if found is None:
             return None
-        return Answered(_row(found[:4], {}), *found[4:])
+        return Answered(row_of(found[:4], {}), *found[4:])
 
     def rows(self, varied: Mapping[str, Any] | None = None) -> Iterator[tuple[int, Row]]:
         """Yield number and row of the points that have an answer, in order.
@@ -293,9 +239,9 @@ class Ledger:
             WHERE (a.status IS NOT NULL OR b.status IS NOT NULL) {only} ORDER BY number"""
         for number, text, *both in self._base.execute(query, values):
             if both[0] is not None:
-                yield number, _row(both[:4], json.loads(text))
+                yield number, row_of(both[:4], json.loads(text))
             else:
-                yield number, as_preview(_row(both[4:], json.loads(text)))
+                yield number, as_preview(row_of(both[4:], json.loads(text)))
 
     def tally(self) -> dict[str, tuple[int, float, float]]:
         """Return number, weight and seconds of the points of each status.
@@ -354,14 +300,14 @@ class Ledger:
             SELECT points.*, status, message FROM points JOIN answers USING (identity)
             WHERE status != 'converged' AND COALESCE((status = 'failed') = ?, 1)
             ORDER BY number LIMIT ?"""
-        return [(_entry(r[:6]), r[6], r[7]) for r in self._base.execute(query, (failed, most))]
+        return [(entry_of(r[:6]), r[6], r[7]) for r in self._base.execute(query, (failed, most))]
 
     def running(self) -> list[tuple[Entry, str, float]]:
         """Return the points being computed: the entry, the worker and when it began."""
         query = """
             SELECT points.*, worker, begun FROM running JOIN points USING (identity)
             GROUP BY points.identity ORDER BY begun"""
-        return [(_entry(r[:6]), r[6], r[7]) for r in self._base.execute(query)]
+        return [(entry_of(r[:6]), r[6], r[7]) for r in self._base.execute(query)]
 
     # -------------------------------------------------------------------------------------------
 
@@ -431,29 +377,3 @@ def _connect(path: Path, how: str = "") -> sqlite3.Connection:
     except sqlite3.OperationalError as error:
         raise InputError(f"{path}: cannot be opened: {error}") from None
     return base
-
-
-def _columns(answered: Answered) -> tuple[Any, ...]:
-    """The columns of an answer after its identity."""
-    row = answered.row
-    numbers = asdict(row)
-    for name in ("status", "message", "seconds", "varied"):
-        numbers.pop(name)
-    told = row.status, json.dumps(numbers), row.message, row.seconds, answered.tries
-    return *told, time.time(), answered.worker, answered.file, answered.checksum
-
-
-def _entry(columns: Sequence[Any]) -> Entry:
-    number, identity, preview, wavelength, varied, weight = columns
-    return Entry(number, identity, preview, wavelength, json.loads(varied), weight)
-
-
-def _row(columns: Sequence[Any], varied: dict[str, Any]) -> Row:
-    status, numbers, message, seconds = columns
-    return Row(
-        **json.loads(numbers),
-        status=status,
-        message=message,
-        seconds=float("nan") if seconds is None else seconds,
-        varied=varied,
-    )

@@ -15,7 +15,8 @@ from dda.accuracy import constants
 from dda.study.engines import Done, Task
 from dda.study.geometry import WINDOW
 from dda.study.identity import ANSWERS, files_of, fingerprints
-from dda.study.ledger import Answered, Entry, Ledger
+from dda.study.ledger import Ledger
+from dda.study.ledger_records import Answered, Entry
 from dda.study.lock import Lock
 from dda.study.mistakes import dotted
 from dda.study.point_file import FOLDER, copy_point, damaged, write_point
