@@ -22,6 +22,8 @@ if TYPE_CHECKING:
 OK, FAILED, INTERRUPTED = 0, 1, 130
 #: Lines of changes and of damaged files that are printed at most.
 MOST_LINES = 12
+# Signals after which a run still writes its tables.
+_ENDING = ("SIGINT", "SIGTERM", "SIGHUP")
 
 
 def add_command(add: Callable[[str, Any, str], argparse.ArgumentParser]) -> None:
@@ -84,7 +86,7 @@ def run(options: argparse.Namespace) -> int:
 
 
 class _Interruption:
-    """Turns Ctrl-C and the system's request to end into a KeyboardInterrupt that is not lost.
+    """Turns Ctrl-C, a request to end and a closed terminal into a KeyboardInterrupt.
 
     An exception raised by a signal can vanish in a callback of a library; the flag stays, and
     `check` raises it again.
@@ -96,8 +98,11 @@ class _Interruption:
 
     def __enter__(self) -> _Interruption:
         if threading.current_thread() is threading.main_thread():
-            for number in (signal.SIGINT, signal.SIGTERM):
-                self._before[number] = signal.signal(number, self._ask)
+            for name in _ENDING:
+                number = getattr(signal, name, None)  # not every system has all of them
+                # one that is ignored stays so: nohup, a job in the background
+                if number is not None and signal.getsignal(number) != signal.SIG_IGN:
+                    self._before[number] = signal.signal(number, self._ask)
         return self
 
     def __exit__(self, *_: object) -> None:
