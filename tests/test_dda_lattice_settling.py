@@ -124,3 +124,12 @@ def test_a_residual_that_does_not_fall_is_no_ground_for_scaling():
     step, watch = run(lambda n: np.log(n), 1e-3, residual=lambda n: 0.1, second=True)
     assert step == 400
     assert watch.spread[0] > 0.2
+
+
+def test_an_unknown_residual_makes_the_estimate_wide():
+    """Methods that do not tell their residual must hold still for longer."""
+    sequence = [1 + 0.9**n for n in range(401)]
+    told, _ = run(lambda n: sequence[n], 1e-3, residual=lambda n: 1e-3)
+    untold, watch = run(lambda n: sequence[n], 1e-3, residual=lambda n: float("nan"))
+    assert untold > told
+    assert watch.settled

@@ -87,7 +87,7 @@ class Settling:
 
     def __call__(self, step: int, x: np.ndarray, residual: float) -> bool:
         """Whether to stop."""
-        residual = 0.0 if np.isnan(residual) else residual
+        residual = 1.0 if np.isnan(residual) else residual  # not known: taken for unsettled
         self._history.append(residual)
         stop = bool(self._after_step and self._after_step(step, x, residual))
         if step % (_STRIDE if step > _EARLY else _STRIDE // 2) == 0 and self._worth(residual):

@@ -39,7 +39,7 @@ def settle(
     *,
     tolerance: float = 1e-3,
     residual: float = 1e-6,
-    limit: int = 4000,
+    limit: int = 6000,
     start: np.ndarray | None = None,
     previous: Sequence[np.ndarray] = (),
     monitor: Callable[[int, np.ndarray, float], bool] | None = None,

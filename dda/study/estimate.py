@@ -14,7 +14,7 @@ from dda.lattice.sectors import Sector, sectors
 from dda.study.lights import Light
 
 #: Most iterations of one solve.
-LIMIT = 4000
+LIMIT = 6000
 #: Bytes that a finished point takes on the disk at least: its file and its lines (measured).
 POINT_BYTES = 14_000
 #: The number of steps is known to about this factor, up and down.
