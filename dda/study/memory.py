@@ -4,7 +4,9 @@ from __future__ import annotations
 
 import math
 import os
+import time
 from collections.abc import Callable
+from functools import lru_cache
 from pathlib import Path
 
 #: Share of the available memory that a run may plan to use; the rest is for what is not counted.
@@ -13,11 +15,16 @@ _CONTROL_GROUP = Path("/sys/fs/cgroup")
 
 
 def available_memory() -> int:
-    """Return the memory that a new process can still take, bytes.
+    """Return the memory that a new process can still take, bytes; looked up once a second.
 
     On Linux the kernel's own estimate, or what the control group has left when that is less;
     elsewhere the physical memory.
     """
+    return _available(int(time.monotonic()))
+
+
+@lru_cache(maxsize=1)
+def _available(_: int) -> int:
     amounts = [_meminfo("MemAvailable"), _group_left()]
     known = [amount for amount in amounts if amount is not None]
     if known:
