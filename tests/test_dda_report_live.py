@@ -218,7 +218,9 @@ def look(browser):
         wish = [{"name": "prefers-color-scheme", "value": scheme}]
         browser.execute_cdp_cmd("Emulation.setEmulatedMedia", {"features": wish})
         browser.get(server.url)
-        _until(browser, "return state !== null && (drawn.length > 0 || state.done === 0)")
+        # a page just navigated to may not have its scripts yet
+        loaded = "typeof state !== 'undefined' && state !== null"
+        _until(browser, f"return {loaded} && (drawn.length > 0 || state.done === 0)")
         return browser
 
     yield open_page

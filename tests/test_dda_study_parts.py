@@ -108,7 +108,7 @@ def test_points_of_different_parts_do_not_share_cells():
         ("[0, 0, 58]", '[0, 0, "58"]', "particle.parts[1].position[2]", "a number"),
         ("angle = 45", "degrees = 45", "particle.parts[1].rotation.degrees", "angle"),
         ("axis = [0, 0, 1]", "axis = [0, 0, 0]", "particle.parts[1].rotation.axis", "zero"),
-        ("subtract = true", 'subtract = "yes"', "particle.parts[2].subtract", "bool"),
+        ("subtract = true", 'subtract = "yes"', "particle.parts[2].subtract", "true or false"),
         (
             "subtract = true",
             'subtract = true\nmaterial = "gold"',
