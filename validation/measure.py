@@ -78,15 +78,29 @@ def all_benches() -> dict[str, Bench]:
     return dict(_benches)
 
 
-def medians(actions: Mapping[str, Callable[[], object]], repeats: int = 9) -> dict[str, float]:
+def medians(
+    actions: Mapping[str, Callable[[], object]], repeats: int = 9, run: int = 0
+) -> dict[str, float]:
     """Median time of each action in seconds, the actions taking turns.
 
     Taking turns exposes all of them to the same neighbours on the machine, so that ratios hold even
     when the times do not. One round before the first is not counted.
+
+    Parameters
+    ----------
+    actions : mapping of callable
+    repeats : int
+        Turns of each.
+    run : int
+        How often an action is called in its turn before the call that is timed: an action that
+        is done many times on end, such as a product, has its data in the caches and its threads
+        awake.
     """
     times: dict[str, list[float]] = {name: [] for name in actions}
     for turn in range(repeats + 1):
         for name, action in actions.items():
+            for _ in range(run):
+                action()
             begin = time.perf_counter()
             action()
             if turn:
