@@ -197,6 +197,22 @@ def test_look_draws_the_hot_spots_of_a_run(near, capsys):
     assert "holds no near field" in capsys.readouterr().err
 
 
+def test_near_fields_of_a_sweep_have_their_folders_and_are_not_computed_twice(near, capsys):
+    vary = 'region = "surface"\n[vary]\nparticle.diameter = [30, 40]\n'
+    assert near(vary)[0] == 0
+    assert Path("out/near/diameter=40/near_field_surface.h5").exists()
+    rows = _read(Path("out/near_field_numbers.csv"))
+    assert {row["particle.diameter"] for row in rows} == {"30", "40"}
+    capsys.readouterr()
+    assert near(vary)[0] == 0
+    assert "near field at" not in capsys.readouterr().out
+    Path("out/near/diameter=40/near_field_numbers.csv").unlink()
+    assert near(vary)[0] == 0
+    assert capsys.readouterr().out.count("near field at") == 1
+    assert main(["look", "out"]) == 2
+    assert "near fields of 2 combinations; give one of them" in capsys.readouterr().err
+
+
 def test_particles_of_every_orientation_have_no_near_field(near, capsys):
     assert near(LINE, ("[530]", '[530]\norientation = "average"'))[0] == 2
     assert 'leave out orientation = "average"' in capsys.readouterr().err

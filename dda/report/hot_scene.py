@@ -46,6 +46,12 @@ def draw_hot_spots(folder: Path, out: Path | None = None) -> list[Path]:
     """
     stored = folder / SURFACE
     if not stored.exists():
+        inside = sorted(path.parent for path in folder.glob(f"near/*/{SURFACE}"))
+        if inside:
+            raise InputError(
+                f"{folder}: holds near fields of {len(inside)} combinations; give one of them, "
+                f'such as "{inside[0]}"'
+            )
         raise InputError(
             f"{folder}: holds no near field ({SURFACE}); run a study with a [near_field] table, "
             "or give a study file to look at its particle"
