@@ -11,6 +11,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cache
 
+import numpy as np
+
 from dda.materials import find
 from shapes import Particle, ellipsoid, sphere
 from validation.coated import coated_sphere
@@ -212,3 +214,36 @@ CASES: tuple[Case, ...] = (
     _ellipsoid("silicon", 60, 60, 30, 550),
     _ellipsoid("silicon", 50, 100, 50, 600),
 )
+
+
+def drawn(count: int, seed: int) -> tuple[Case, ...]:
+    """Cases drawn at random, a third of each family: nobody chose them, nothing was tuned on them.
+
+    Gold, silver, copper, platinum, silica or silicon; 12 to 140 nm; 380 to 850 nm; hosts of index
+    1, 1.33 or 1.5; shells from a tenth to half of the radius, spheroids up to 2.2 times as long as
+    wide or 1.8 times as wide as long.
+    """
+    random = np.random.default_rng(seed)
+    found = []
+    for number in range(count):
+        wavelength = float(random.integers(38, 86) * 10)
+        host = float(random.choice([1.0, 1.33, 1.5]))
+        size = float(np.round(np.exp(random.uniform(np.log(12), np.log(140)))))
+        one, other = (str(name) for name in random.choice(_DRAWN, 2, replace=False))
+        if number % 3 == 0:
+            found.append(_sphere(one, size, wavelength, host))
+        elif number % 3 == 1:
+            core = float(np.round(size * random.uniform(0.5, 0.9)))
+            found.append(_coated(one, core, other, size, wavelength, host))
+        else:
+            axes = [float(np.round(size / random.choice([1.4, 1.8, 2.2])))] * 3
+            if random.random() < 0.35:  # oblate
+                axes = [size] * 3
+                axes[int(random.integers(3))] = float(np.round(size / random.uniform(1.3, 1.8)))
+            else:
+                axes[int(random.integers(3))] = size
+            found.append(_ellipsoid(one, axes[0], axes[1], axes[2], wavelength, host))
+    return tuple(found)
+
+
+_DRAWN = ("gold", "silver", "copper", "platinum", "silica", "silicon")
