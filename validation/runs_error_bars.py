@@ -19,7 +19,7 @@ TOLERANCE = 1e-3
 LIMIT = 1500
 
 #: How many cases are drawn, and the seed.
-DRAWN, SEED = 36, 20261201
+DRAWN, SEED = 60, 20261202
 
 #: An error bar is good when at least this part of the true errors lies within it ...
 LEAST_INSIDE = 0.90
@@ -70,8 +70,9 @@ def drawn_cases(quick: bool) -> Table:
     """Error bars on cases drawn at random, which nothing was tuned on."""
     text = f"""
 {DRAWN} cases drawn at random once (`validation.cases.drawn`, seed {SEED}), refined as those of the
-first table of error bars. No constant of the program was set on them, so this is the better judge;
-the counts are those of the first and only draw.
+first table of error bars. No constant of the program was set on them, so this is the better judge.
+A first draw (36 cases, seed 20261201) had 86 % of the errors inside and the worst at 2.5 bars; the
+bars were then widened by 1.3, and this is the first and only draw that judges them.
 """
 
     def refine(solve: Callable, size: float) -> Refined:

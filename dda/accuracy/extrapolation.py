@@ -115,7 +115,7 @@ def extrapolate(
     )
     step = abs(value - y[-1])
     other = _other_order(d, y, s + floor, typical, value)
-    error = max(_SCATTER * typical, _LEAVE * leave, _STEP * step, other) + floor
+    error = _WIDER * max(_SCATTER * typical, _LEAVE * leave, _STEP * step, other) + floor
     return Estimate(
         value, error, _carried(d, s), y[-1], max(step, typical) + error, _observed_order(d, y)
     )
@@ -123,8 +123,10 @@ def extrapolate(
 
 # All constants of the error bar. They were set on the 72 spheres, coated spheres and spheroids of
 # `validation/cases.py`, on ladders of three to five levels from 12 to 32 cells across, so that both
-# errors of nine cases in ten lie within their bars and none beyond three; the group "error-bars"
-# of the validation tables what they achieve.
+# errors of nine cases in ten lie within their bars and none beyond three. A set flatters what is
+# set on it: of 36 cases drawn at random only 86 % lay within, so all is wider by `_WIDER`. The
+# groups "error-bars" and "error-bars-drawn" (another draw) of the validation table what comes of it.
+_WIDER = 1.3
 _SCATTER = 3.5
 _LEAVE = 2.5
 _STEP = 0.6
@@ -199,4 +201,5 @@ def constants() -> dict[str, float]:
         "leave": _LEAVE,
         "step": _STEP,
         "least": _LEAST,
+        "wider": _WIDER,
     }
