@@ -125,7 +125,7 @@ def extrapolate(
 # `validation/cases.py`, on ladders of three to five levels from 12 to 32 cells across, so that both
 # errors of nine cases in ten lie within their bars and none beyond three. A set flatters what is
 # set on it: of 36 cases drawn at random only 86 % lay within, so all is wider by `_WIDER`. The
-# groups "error-bars" and "error-bars-drawn" (another draw) of the validation table what comes of it.
+# groups "error-bars" and "error-bars-drawn" (another draw) of the validation table the result.
 _WIDER = 1.3
 _SCATTER = 3.5
 _LEAVE = 2.5
