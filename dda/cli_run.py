@@ -103,9 +103,11 @@ class _Interruption:
                 # one that is ignored stays so: nohup, a job in the background
                 if number is not None and signal.getsignal(number) != signal.SIG_IGN:
                     self._before[number] = signal.signal(number, self._ask)
+        self._unraisable, sys.unraisablehook = sys.unraisablehook, self._without_interrupts
         return self
 
     def __exit__(self, *_: object) -> None:
+        sys.unraisablehook = self._unraisable
         for number, handler in self._before.items():
             signal.signal(number, handler)
 
@@ -117,6 +119,11 @@ class _Interruption:
     def _ask(self, *_: object) -> None:
         self.asked = True
         raise KeyboardInterrupt
+
+    def _without_interrupts(self, unraisable: Any) -> None:
+        """Say nothing of an interruption that vanished: `check` raises it again."""
+        if not issubclass(unraisable.exc_type, KeyboardInterrupt):
+            self._unraisable(unraisable)
 
 
 def _study_of(options: argparse.Namespace) -> tuple[Study, Path]:

@@ -1,6 +1,7 @@
 """What ends a run early: signals that are not lost, and those that are ignored."""
 
 import signal
+import sys
 
 import pytest
 
@@ -39,3 +40,25 @@ def test_a_signal_that_is_ignored_stays_so(number):
         signal.raise_signal(number)
         interruption.check()
     assert signal.getsignal(number) is signal.SIG_IGN
+
+
+def test_a_signal_in_a_destructor_is_remembered_and_prints_nothing(monkeypatch):
+    told = []
+    monkeypatch.setattr(sys, "unraisablehook", lambda found: told.append(found.exc_type))
+
+    class Dying:
+        def __del__(self):
+            signal.raise_signal(signal.SIGINT)  # what is raised here, Python can only print
+
+    class Broken:
+        def __del__(self):
+            raise ValueError("a mistake of its own")
+
+    with _Interruption() as interruption:
+        dying = Dying()
+        del dying
+        assert interruption.asked
+        assert told == []
+        broken = Broken()
+        del broken
+    assert told == [ValueError]
