@@ -12,7 +12,7 @@ import numpy as np
 import pytest
 
 from dda.cli import main
-from dda.study.runner import run_points
+from dda.study.engines import Here, Task
 
 STUDY = """\
 name = "small gold sphere"
@@ -326,8 +326,9 @@ def test_the_runner_yields_a_row_at_a_time(study):
 
     prepared = prepare(read_study(study()))
     seen = []
-    rows = run_points(prepared.points, lambda message, part: seen.append((message, part)))
-    first = next(rows)
+    tasks = [Task(n, prepared.identities[n], point) for n, point in enumerate(prepared.points)]
+    done = Here().run([tasks], lambda *_: None, lambda message, part: seen.append((message, part)))
+    first = next(done).outcome.row
     assert first.wavelength_nm == 480
     assert all("480 nm" in message for message, _ in seen)
     assert all(0 <= part <= 1 for _, part in seen)

@@ -13,9 +13,10 @@ from dda.design.sers import stokes_wavelength
 from dda.materials import find
 from dda.report.near_run import run_near
 from dda.response.far_field import sphere_quadrature
+from dda.study.levels import Memory
 from dda.study.prepare import prepare
 from dda.study.reader import read_study
-from dda.study.runner import run_points
+from dda.study.runner import compute
 from validation.dipole_sphere import dipole_near_sphere
 from validation.mie import sphere
 
@@ -184,7 +185,7 @@ def test_one_call_writes_the_near_field_of_any_point_into_its_own_folder(work, t
     (point,) = prepared.points
     smaller = point.particle.model_validate({**point.particle.model_dump(), "diameter": 30.0})
     other = point.at(550.0, particle=smaller)
-    rows = list(run_points([other], geometries=prepared.geometries))
+    rows = [compute(other, Memory(prepared.geometries), lambda *_: None).row]
     assert run_near(other, rows, prepared.geometries, tmp_path / "second", "another")
     with h5py.File(tmp_path / "second/near_field_surface.h5") as file:
         group = file["550_nm"]

@@ -6,19 +6,18 @@ import numpy as np
 from numba import njit
 
 from .iteration import (
+    DIVERGED,
     Iteration,
     KrylovResult,
     Preconditioner,
     first_iterate,
     identity,
+    judged,
     nothing_to_do,
 )
 
-# An iterate is kept every so many steps, to fall back on when the recurrence breaks down; a
-# residual so many times the best one (or the right-hand side) is taken for a breakdown. Healthy
-# runs on silver pass through residuals of 50.
+# An iterate is kept every so many steps, to fall back on when the recurrence breaks down.
 _KEEP = 20
-DIVERGED = 1e4
 
 # With products in single precision the residual is computed anew in double whenever it has fallen
 # to this part of the largest one since the last time.
@@ -167,13 +166,8 @@ def cocr(
         _step(x, z, p, mq, a, a)
         residual = float(np.linalg.norm(z)) / norm_b
         history.append(residual)
-        if residual <= rules.tolerance:
-            status = "converged"
-        elif not residual < DIVERGED:
-            status = "stalled"
-        elif rules.monitor is not None and rules.monitor(len(history), x, residual):
-            status = "stopped"
-        else:
+        status = judged(rules, len(history), x, residual)
+        if status == "limit":
             az = operator.matvec(z)
             products += 1
             fresh = _dot(z, az)

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 import numpy as np
 
-from .conjugate import DIVERGED
 from .iteration import (
     Iteration,
     KrylovResult,
     Preconditioner,
     first_iterate,
     identity,
+    judged,
     nothing_to_do,
 )
 from .subspace import add, dots
@@ -170,13 +170,8 @@ def idr(
         r[:] -= a * image
         residual = float(np.linalg.norm(r)) / norm_b
         history.append(residual)
-        if residual <= rules.tolerance:
-            status = "converged"
-        elif not residual < DIVERGED:
-            status = "stalled"
-        elif rules.monitor is not None and rules.monitor(len(history), x, residual):
-            status = "stopped"
-        elif len(history) >= rules.limit:
+        status = judged(rules, len(history), x, residual)
+        if status == "limit" and len(history) >= rules.limit:
             status = "over"
 
     while status == "limit" and len(history) < rules.limit:

@@ -102,6 +102,22 @@ def first_iterate(operator, b: np.ndarray, rules: Iteration) -> tuple[np.ndarray
     return x, r, products
 
 
+#: A residual so many times that of the right-hand side is taken for a breakdown. Healthy runs on
+#: silver pass through residuals of 50.
+DIVERGED = 1e4
+
+
+def judged(rules: Iteration, step: int, x: np.ndarray, residual: float) -> str:
+    """What a step comes to: "converged", "stalled", "stopped", or "limit" to go on."""
+    if residual <= rules.tolerance:
+        return "converged"
+    if not residual < DIVERGED:
+        return "stalled"
+    if rules.monitor is not None and rules.monitor(step, x, residual):
+        return "stopped"
+    return "limit"
+
+
 def nothing_to_do(b: np.ndarray) -> KrylovResult:
     """The solution for a right-hand side that vanishes."""
     return KrylovResult(np.zeros_like(b), 0.0, 0, 0, "converged", np.empty(0))

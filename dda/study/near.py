@@ -100,7 +100,7 @@ class NearRun:
     geometries : Geometries
         Where cells that are already made may be found.
     watch : callable
-        As for ``dda.study.runner.run_points``.
+        As for `dda.study.runner.compute`.
     advance : callable
         Called after each step that `dda.study.near_plan.near_steps` counts.
     """

@@ -35,7 +35,7 @@ class NearLevels:
         The spectrum of the same point.
     geometries : Geometries
     watch : callable
-        As for ``dda.study.runner.run_points``.
+        As for `dda.study.runner.compute`.
     advance : callable
         Called after each step that `near_steps` counts.
     """

@@ -4,12 +4,10 @@ from __future__ import annotations
 
 import math
 import time
-from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 
 from dda.accuracy import Level, Refined
 from dda.errors import ComputationError, InputError
-from dda.study.geometry import Geometries
 from dda.study.levels import Answer, Memory, Watch, answer, worst
 from dda.study.more import Array
 from dda.study.points import Point
@@ -46,35 +44,6 @@ class Outcome:
     tries: int = 1
 
 
-def run_points(
-    points: Sequence[Point], watch: Watch | None = None, geometries: Geometries | None = None
-) -> Iterator[Row]:
-    """Solve points one after the other.
-
-    Cells and solutions are kept from one point to the next as long as the geometry stays the
-    same. A point that fails gives a row that says so; the others go on.
-
-    Parameters
-    ----------
-    points : sequence of Point
-        Checked ones, see ``dda.study.plan.prepare``.
-    watch : callable, optional
-        Called often, with what is being done and how much of the point is done.
-    geometries : Geometries, optional
-        Where cells that are already made may be found.
-
-    Yields
-    ------
-    Row
-        One a point, in order.
-    """
-    memory = Memory(geometries or Geometries())
-    budget = Budget(points[0].limits.minutes if points else None)
-    for number, point in enumerate(points):
-        seconds = budget.share(len(points) - number)
-        yield compute(point, memory, watch or (lambda message, part: None), seconds).row
-
-
 class Budget:
     """The minutes that a run may take, shared out over the points that are left."""
 
@@ -97,8 +66,11 @@ def compute(point: Point, memory: Memory, watch: Watch, seconds: float = math.in
     Parameters
     ----------
     point : Point
+        A checked one, see `dda.study.prepare.prepare`.
     memory : Memory
+        Cells and solutions of the points before, and what this one leaves for the next.
     watch : callable
+        Called often, with what is being done and how much of the point is done.
     seconds : float
         What refinement to a target may take.
 
